@@ -1,0 +1,216 @@
+"""Products: fares joined with demand to come and booking curves, sorted by itinerary and fare class."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from network.faults import Faults
+from network.model import BookingCurves, FloatArray, IntArray
+from network.reading import TableData
+from network.routes import Paths, positions
+from network.settings import NetworkSettings
+
+__all__ = ["Products", "assemble_curves", "assemble_products"]
+
+
+@dataclass(frozen=True)
+class Products:
+    """Products by position, in the order that `network.model.Network` fixes."""
+
+    fare_classes: tuple[str, ...]
+    itinerary: IntArray
+    fare_class: IntArray
+    fare: FloatArray
+    mean: FloatArray
+    deviation: FloatArray
+    curve: IntArray
+
+
+def assemble_curves(table: TableData | None, faults: Faults) -> BookingCurves:
+    """Booking curves in order of first mention, each by falling days; notes curves that fall or end below 1."""
+    if table is None:
+        nothing = np.zeros(0)
+        return BookingCurves(np.zeros(0, dtype=object), np.zeros(1, dtype=np.int64), nothing, nothing)
+    frame = table.frame
+    names = frame["curve"].dropna().unique().astype(object)
+    names = np.asarray(names, dtype=object)
+    code, _ = positions(frame["curve"], names)
+    days, share = frame["days_before"].to_numpy(), frame["share"].to_numpy()
+    order = np.lexsort((-days, code))
+    order = order[code[order] >= 0]
+    code, days, share = code[order], days[order], share[order]
+    falls = np.flatnonzero((code[1:] == code[:-1]) & (share[1:] < share[:-1])) + 1
+    faults.add_rows(
+        table.file,
+        falls,
+        lambda row: table.line_of(int(order[row])),
+        "share",
+        lambda row: (
+            f"curve {names[code[row]]} falls from {share[row - 1]:.6g} at {days[row - 1]:g} days to "
+            f"{share[row]:.6g} at {days[row]:g}; shares must rise towards departure"
+        ),
+    )
+    start = np.searchsorted(code, np.arange(len(names) + 1))
+    last = start[1:] - 1
+    open_end = np.flatnonzero((days[last] != 0) | (np.abs(share[last] - 1) > 1e-9))
+    faults.add_rows(
+        table.file,
+        open_end,
+        lambda row: table.line_of(int(order[last[row]])),
+        "share",
+        lambda row: f"curve {names[row]} does not end with share 1 at day 0; add that row or correct it",
+    )
+    return BookingCurves(names, start, days, share)
+
+
+def assemble_products(
+    fares: TableData | None,
+    demand: TableData | None,
+    paths: Paths | None,
+    curves: BookingCurves,
+    settings: NetworkSettings | None,
+    faults: Faults,
+) -> Products | None:
+    """Join fares and demand; notes unknown itineraries and curves, and demand without fare."""
+    if fares is None or paths is None:
+        return None
+    classes = _fare_classes(fares, settings, faults)
+    fare_key, itinerary, fare_class = _keys(fares, paths, classes, faults)
+    order = np.argsort(fare_key, kind="stable")
+    order = order[fare_key[order] >= 0]
+    order = order[np.append(True, np.diff(fare_key[order]) > 0)] if len(order) else order
+    key = fare_key[order]
+    amount = fares.frame["fare"].to_numpy()[order]
+    _warn_rising_fares(fares, order, itinerary, fare_class, classes, faults)
+    mean, deviation = np.zeros(len(key)), np.zeros(len(key))
+    curve = np.full(len(key), -1, dtype=np.int32)
+    if demand is not None:
+        known_curve, unknown = positions(demand.frame["curve"], curves.name)
+        faults.add_rows(
+            demand.file,
+            np.flatnonzero(unknown),
+            demand.line_of,
+            "curve",
+            lambda row: (
+                f"{demand.frame['curve'].iloc[row]!r} is not a booking curve; "
+                "add it to booking_curves.csv or leave blank"
+            ),
+        )
+        row = _match_demand(fares, demand, paths, classes, key, order, faults)
+        have = row >= 0
+        mean[have] = demand.frame["mean"].to_numpy()[row[have]]
+        deviation[have] = demand.frame["deviation"].to_numpy()[row[have]]
+        curve[have] = known_curve[row[have]]
+    return Products(
+        classes,
+        itinerary[order].astype(np.int32),
+        fare_class[order].astype(np.int32),
+        amount,
+        mean,
+        deviation,
+        curve,
+    )
+
+
+def _fare_classes(fares: TableData, settings: NetworkSettings | None, faults: Faults) -> tuple[str, ...]:
+    named = tuple(str(name) for name in fares.frame["fare_class"].dropna().unique())
+    if settings is None or not settings.fare_classes:
+        return named
+    for name in named:
+        if name not in settings.fare_classes:
+            faults.add(
+                "network.toml",
+                0,
+                "fare_classes",
+                f"lacks {name!r}, which fares.csv sells; add it in its place",
+            )
+            return named
+    return settings.fare_classes
+
+
+def _keys(
+    table: TableData, paths: Paths, classes: tuple[str, ...], faults: Faults
+) -> tuple[IntArray, IntArray, IntArray]:
+    """Key of every row of a product table (-1 where unknown), and its itinerary and class positions."""
+    itinerary, unknown = positions(table.frame["itinerary"], paths.name)
+    faults.add_rows(
+        table.file,
+        np.flatnonzero(unknown),
+        table.line_of,
+        "itinerary",
+        lambda row: (
+            f"{table.frame['itinerary'].iloc[row]!r} is not an itinerary; add it to itineraries.csv or correct the name"
+        ),
+    )
+    fare_class, _ = positions(table.frame["fare_class"], np.array(classes, dtype=object))
+    key = np.where(
+        (itinerary >= 0) & (fare_class >= 0),
+        itinerary.astype(np.int64) * max(len(classes), 1) + fare_class,
+        -1,
+    )
+    return key, itinerary, fare_class
+
+
+def _match_demand(
+    fares: TableData,
+    demand: TableData,
+    paths: Paths,
+    classes: tuple[str, ...],
+    key: IntArray,
+    order: IntArray,
+    faults: Faults,
+) -> IntArray:
+    """Row of demand for every product, -1 where there is none."""
+    demand_key, itinerary, _ = _keys(demand, paths, classes, faults)
+    complete = demand.frame["fare_class"].notna().to_numpy() & (itinerary >= 0)
+    place = np.searchsorted(key, demand_key)
+    found = np.append(key, -2)[place] == demand_key if len(key) else np.zeros(len(demand_key), dtype=bool)
+    found &= demand_key >= 0
+    faults.add_rows(
+        demand.file,
+        np.flatnonzero(complete & ~found),
+        demand.line_of,
+        "fare_class",
+        lambda row: (
+            f"{demand.frame['itinerary'].iloc[row]} {demand.frame['fare_class'].iloc[row]} has demand but no fare; "
+            "add its fare to fares.csv or remove the row"
+        ),
+    )
+    row = np.full(len(key), -1, dtype=np.int64)
+    rows = np.flatnonzero(found)[::-1]
+    row[place[rows]] = rows
+    faults.add_rows(
+        fares.file,
+        order[row < 0],
+        fares.line_of,
+        "fare_class",
+        lambda at: (
+            f"{fares.frame['itinerary'].iloc[at]} {fares.frame['fare_class'].iloc[at]} has a fare but no demand; "
+            "its demand is taken as none"
+        ),
+        warning=True,
+    )
+    return row
+
+
+def _warn_rising_fares(
+    fares: TableData,
+    order: IntArray,
+    itinerary: IntArray,
+    fare_class: IntArray,
+    classes: tuple[str, ...],
+    faults: Faults,
+) -> None:
+    amount = fares.frame["fare"].to_numpy()
+    above, below = order[:-1], order[1:]
+    rising = np.flatnonzero((itinerary[above] == itinerary[below]) & (amount[below] > amount[above]))
+    faults.add_rows(
+        fares.file,
+        below[rising],
+        fares.line_of,
+        "fare",
+        lambda row: f"class {classes[fare_class[row]]} costs more than the class above it on the same itinerary",
+        warning=True,
+    )

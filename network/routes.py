@@ -1,0 +1,188 @@
+"""Stations, legs and itineraries: from checked tables to arrays, and whether they fit each other."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+import pandas as pd
+
+from network.faults import Faults
+from network.model import IntArray, Legs, NameArray, Stations
+from network.reading import TableData
+from network.settings import NetworkSettings
+
+__all__ = ["Paths", "assemble_legs", "assemble_paths", "assemble_stations", "positions"]
+
+
+@dataclass(frozen=True)
+class Paths:
+    """Itineraries by position: names, and their legs in travel order (see `network.model.Network`)."""
+
+    name: NameArray
+    start: IntArray
+    leg: IntArray
+
+
+def positions(values: pd.Series, names: NameArray) -> tuple[IntArray, np.ndarray]:
+    """Look names up.
+
+    Parameters
+    ----------
+    values
+        Text by category, as read.
+    names
+        Unique names by position.
+
+    Returns
+    -------
+    position, unknown
+        Position of every value, -1 where it is missing or unknown, and True where it is unknown.
+    """
+    codes = values.cat.codes.to_numpy().astype(np.int64)
+    of_category = pd.Index(names).get_indexer(pd.Index(values.cat.categories.to_numpy(dtype=object)))
+    position = np.append(of_category, -1)[codes]
+    return position, (codes >= 0) & (position < 0)
+
+
+def assemble_stations(table: TableData | None, settings: NetworkSettings | None) -> Stations | None:
+    """Stations in file order, blank connection times filled from the settings."""
+    if table is None:
+        return None
+    frame = table.frame
+    default = settings.defaults.minimum_connection if settings else 0.0
+    name = frame["station"].to_numpy(dtype=object)
+    label = frame["name"].to_numpy(dtype=object)
+    return Stations(
+        name=name,
+        label=np.where(pd.isna(label), name, label),
+        latitude=frame["latitude"].to_numpy(copy=True),
+        longitude=frame["longitude"].to_numpy(copy=True),
+        minimum_connection=frame["minimum_connection"].fillna(default).to_numpy(copy=True),
+    )
+
+
+def assemble_legs(table: TableData | None, stations: Stations | None, faults: Faults) -> Legs | None:
+    """Legs in file order; notes unknown stations, loops, arrivals before departure and overselling."""
+    if table is None or stations is None:
+        return None
+    frame = table.frame
+    ends = {}
+    for column in ("origin", "destination"):
+        ends[column], unknown = positions(frame[column], stations.name)
+        _note_unknown_stations(table, column, unknown, faults)
+    loop = (ends["origin"] == ends["destination"]) & (ends["origin"] >= 0)
+    faults.add_rows(
+        table.file,
+        np.flatnonzero(loop),
+        table.line_of,
+        "destination",
+        lambda row: f"the leg ends where it begins ({frame['origin'].iloc[row]}); correct one of the two",
+    )
+    departs, arrives = frame["departs"].to_numpy(), frame["arrives"].to_numpy()
+    faults.add_rows(
+        table.file,
+        np.flatnonzero(arrives <= departs),
+        table.line_of,
+        "arrives",
+        lambda row: "the leg arrives no later than it departs; correct the times or their offsets",
+    )
+    capacity = frame["capacity"].fillna(0).to_numpy(dtype=np.int64, copy=True)
+    sold = frame["sold"].fillna(0).to_numpy(dtype=np.int64, copy=True)
+    faults.add_rows(
+        table.file,
+        np.flatnonzero((sold > capacity) & frame["capacity"].notna().to_numpy()),
+        table.line_of,
+        "sold",
+        lambda row: f"{sold[row]} seats are sold of {capacity[row]}; no seats remain",
+        warning=True,
+    )
+    return Legs(
+        name=frame["leg"].to_numpy(dtype=object),
+        origin=ends["origin"],
+        destination=ends["destination"],
+        departs=departs.astype("datetime64[s]"),
+        arrives=arrives.astype("datetime64[s]"),
+        departs_offset=frame["departs_offset"].to_numpy(copy=True),
+        arrives_offset=frame["arrives_offset"].to_numpy(copy=True),
+        capacity=capacity,
+        sold=sold,
+    )
+
+
+def _note_unknown_stations(table: TableData, column: str, unknown: np.ndarray, faults: Faults) -> None:
+    values = table.frame[column]
+    faults.add_rows(
+        table.file,
+        np.flatnonzero(unknown),
+        table.line_of,
+        column,
+        lambda row: f"{values.iloc[row]!r} is not a station; add it to stations.csv or correct the name",
+    )
+
+
+def assemble_paths(
+    table: TableData | None, legs: Legs | None, stations: Stations | None, faults: Faults
+) -> Paths | None:
+    """Itineraries in file order; notes unknown or repeated legs, and legs that do not connect."""
+    if table is None or legs is None or stations is None:
+        return None
+    text = table.frame["legs"].astype("str").fillna("")
+    split = [value.split() for value in text.tolist()]
+    length = np.array([len(names) for names in split], dtype=np.int64)
+    start = np.concatenate([[0], np.cumsum(length)])
+    flat = pd.Series([name for names in split for name in names], dtype="category")
+    leg, unknown = positions(flat, legs.name)
+    owner = np.repeat(np.arange(len(split)), length)
+    names = flat.to_numpy(dtype=object)
+    faults.add_rows(
+        table.file,
+        np.flatnonzero(unknown),
+        lambda at: table.line_of(int(owner[at])),
+        "legs",
+        lambda at: f"{names[at]!r} is not a leg; add it to legs.csv or correct the name",
+    )
+    _check_connections(table, legs, stations, leg, owner, faults)
+    return Paths(table.frame["itinerary"].to_numpy(dtype=object), start, leg.astype(np.int32))
+
+
+def _check_connections(
+    table: TableData, legs: Legs, stations: Stations, leg: IntArray, owner: IntArray, faults: Faults
+) -> None:
+    """Note consecutive legs of an itinerary that do not meet, or leave too little time to connect."""
+    at = np.flatnonzero(owner[1:] == owner[:-1])
+    at = at[(leg[at] >= 0) & (leg[at + 1] >= 0)]
+    first, second = leg[at], leg[at + 1]
+    meets = legs.destination[first] == legs.origin[second]
+    known = (legs.destination[first] >= 0) & (legs.origin[second] >= 0)
+
+    def line(row: int) -> int:
+        return table.line_of(int(owner[at[row]]))
+
+    def station(position: int) -> str:
+        return str(stations.name[position])
+
+    faults.add_rows(
+        table.file,
+        np.flatnonzero(known & ~meets),
+        line,
+        "legs",
+        lambda row: (
+            f"{legs.name[first[row]]} ends at {station(legs.destination[first[row]])} but {legs.name[second[row]]} "
+            f"begins at {station(legs.origin[second[row]])}; legs must meet, in travel order"
+        ),
+    )
+    minutes = (legs.departs[second] - legs.arrives[first]).astype("timedelta64[s]").astype(np.float64) / 60
+    timed = ~np.isnat(legs.departs[second]) & ~np.isnat(legs.arrives[first])
+    needed = stations.minimum_connection[legs.destination[first]]
+    short = known & meets & timed & (minutes < needed)
+    faults.add_rows(
+        table.file,
+        np.flatnonzero(short),
+        line,
+        "legs",
+        lambda row: (
+            f"{minutes[row]:.0f} minutes between {legs.name[first[row]]} and {legs.name[second[row]]}, but "
+            f"{station(legs.destination[first[row]])} needs {needed[row]:.0f}; drop the itinerary or correct the times"
+        ),
+    )
