@@ -1,0 +1,89 @@
+"""The picture of the comparison: every leg under both controls, and the disagreements by money."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import matplotlib as mpl
+import numpy as np
+from matplotlib.axes import Axes
+from matplotlib.figure import Figure
+
+from legworth.pricing import PricedNetwork
+from legworth.report import largest_disagreements
+from network import SettingError
+
+__all__ = ["draw_comparison"]
+
+NETWORK_SELLS = "#0b6e6e"
+LEG_SELLS = "#c8641e"
+QUIET = "#6b7280"
+
+
+def draw_comparison(priced: PricedNetwork, path: Path, top: int) -> None:
+    """Draw bid price against leg value, one point a leg, and the ``top`` disagreements, into a PNG file.
+
+    Raises
+    ------
+    SettingError
+        If the file cannot be written.
+    """
+    with mpl.rc_context({"font.size": 9, "axes.spines.top": False, "axes.spines.right": False}):
+        figure = Figure(figsize=(13, max(5.5, 1.6 + 0.3 * top)), layout="constrained")
+        legs, money = figure.subplots(1, 2, width_ratios=[1, 1.25])
+        _draw_legs(legs, priced)
+        _draw_disagreements(money, priced, top)
+        figure.suptitle(f"{priced.network.name}: network control against leg-level control", fontweight="bold")
+        try:
+            path.parent.mkdir(parents=True, exist_ok=True)
+            figure.savefig(path, dpi=130, format="png")
+        except OSError as error:
+            raise SettingError(f"cannot write {path} ({error.strerror}); name another file with --picture") from error
+
+
+def _draw_legs(axes: Axes, priced: PricedNetwork) -> None:
+    network, comparison = priced.network, priced.tables["comparison"]
+    bid_price = comparison["bid_price"].to_numpy()
+    leg_value = comparison["leg_seat_value"].to_numpy()
+    size = 12 + 60 * network.remaining / max(int(network.remaining.max(initial=1)), 1)
+    above = bid_price >= leg_value
+    for chosen, colour, label in (
+        (above, LEG_SELLS, "leg control sells the seat too cheaply"),
+        (~above, NETWORK_SELLS, "leg control holds the seat too dear"),
+    ):
+        axes.scatter(
+            leg_value[chosen],
+            bid_price[chosen],
+            s=size[chosen],
+            color=colour,
+            alpha=0.55,
+            linewidths=0,
+            label=f"{label} ({int(chosen.sum()):,} legs)",
+        )
+    end = float(max(bid_price.max(initial=0), leg_value.max(initial=0), 1)) * 1.05
+    axes.plot([0, end], [0, end], color=QUIET, linewidth=1, linestyle="--")
+    axes.set(xlim=(0, end), ylim=(0, end), aspect="equal")
+    axes.set_xlabel(f"value of the last seat by leg-level EMSR-b, {network.currency}")
+    axes.set_ylabel(f"bid price: value of the last seat to the network, {network.currency}")
+    axes.set_title("One point a leg, larger with more seats left", loc="left")
+    axes.legend(loc="upper left", frameon=False)
+
+
+def _draw_disagreements(axes: Axes, priced: PricedNetwork, top: int) -> None:
+    rows = largest_disagreements(priced, top)
+    axes.set_title(f"Where most money hangs on the disagreement, {priced.network.currency}", loc="left")
+    if not rows:
+        axes.text(0.5, 0.5, "no disagreement", ha="center", va="center", transform=axes.transAxes, color=QUIET)
+        axes.set_axis_off()
+        return
+    place = np.arange(len(rows))[::-1]
+    stake = np.array([row["at_stake"] for row in rows])
+    network_sells = np.array([row["disagreement"] == "network_only" for row in rows])
+    for chosen, colour, label in (
+        (network_sells, NETWORK_SELLS, "network sells, leg control refuses"),
+        (~network_sells, LEG_SELLS, "leg control sells, network refuses"),
+    ):
+        axes.barh(place[chosen], stake[chosen], color=colour, height=0.7, label=label)
+    axes.set_yticks(place, [f"{row['route']}  class {row['fare_class']}  {row['itinerary']}" for row in rows])
+    axes.set_xlabel("contribution lost per passenger times passengers expected")
+    axes.legend(loc="lower right", frameon=False)

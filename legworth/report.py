@@ -1,0 +1,200 @@
+"""What the commands print: short tables for people, and the same as JSON."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+from rich.console import Console
+from rich.table import Table
+
+from legworth.pricing import PricedNetwork
+from network import Fault, Network
+
+__all__ = [
+    "CAUTION",
+    "comparison_as_json",
+    "faults_as_json",
+    "print_check",
+    "print_comparison",
+    "print_prices",
+    "sizes",
+]
+
+CAUTION = (
+    "These figures advise. Passenger-rights law, contracts, licensed practice and the carrier's own policy decide "
+    "what is sold or refused, and come first."
+)
+DEAREST = 8
+PIPE_WIDTH = 140
+WORDS = {"network_only": "network sells, leg control refuses", "leg_only": "leg control sells, network refuses"}
+
+
+def faults_as_json(faults: Iterable[Fault]) -> list[dict[str, Any]]:
+    """Faults as plain records."""
+    return [
+        {"file": f.file, "line": f.line, "column": f.column, "problem": f.problem, "warning": f.warning} for f in faults
+    ]
+
+
+def sizes(network: Network, n_components: int) -> dict[str, Any]:
+    """Name and sizes of a network."""
+    return {
+        "network": network.name,
+        "currency": network.currency,
+        "as_of": network.as_of.isoformat(),
+        "stations": len(network.stations),
+        "legs": network.n_legs,
+        "itineraries": network.n_itineraries,
+        "products": network.n_products,
+        "components": n_components,
+        "remaining_seats": int(network.remaining.sum()),
+        "demand_to_come": float(network.demand.expected.sum()),
+    }
+
+
+def print_check(network: Network, warnings: Iterable[Fault], n_components: int) -> None:
+    """Print warnings and sizes of a network without faults."""
+    console = _console()
+    count = 0
+    for count, warning in enumerate(warnings, start=1):  # noqa: B007 - the last number is the count
+        console.print(str(warning), markup=False, highlight=False, soft_wrap=True)
+    _print_heading(console, network, n_components)
+    demand = float(network.demand.expected.sum())
+    console.print(f"{demand:,.0f} passengers expected to ask; {count} warnings, no faults", highlight=False)
+
+
+def print_prices(priced: PricedNetwork, out: Path, table_format: str) -> None:
+    """Print what pricing found and where it was written."""
+    console = _console()
+    network, summary = priced.network, priced.summary
+    for warning in priced.warnings:
+        console.print(str(warning), markup=False, highlight=False, soft_wrap=True)
+    _print_heading(console, network, len(summary["components"]))
+    gap = max(abs(part["certificate"]["gap"]) for part in summary["components"])
+    facts = Table.grid(padding=(0, 2))
+    facts.add_row(f"Optimum of the {summary['method']} program", _money(summary["objective"]), f"gap {gap:.0e}")
+    facts.add_row("Bound on what any control can expect", _money(summary["bounds"]["revenue"]), "deterministic program")
+    facts.add_row(
+        "Legs with a price",
+        f"{summary['legs_with_price']:,} of {network.n_legs:,}",
+        f"{summary['legs_without_seats']:,} without seats",
+    )
+    facts.add_row(
+        "Disagreement with leg-level control",
+        _money(summary["at_stake"]),
+        f"{summary['products_where_controls_disagree']:,} products, {summary['legs_where_controls_disagree']:,} legs",
+    )
+    console.print(facts, highlight=False)
+    console.print(_dearest(priced), highlight=False)
+    names = ", ".join([*(f"{name}.{table_format}" for name in priced.tables), "summary.json"])
+    console.print(f"Written to {out}: {names}", highlight=False, markup=False, soft_wrap=True)
+    console.print(CAUTION, style="dim", highlight=False, soft_wrap=True)
+
+
+def print_comparison(priced: PricedNetwork, top: int, picture: Path) -> None:
+    """Print the disagreements on which most money hangs."""
+    console = _console()
+    network, summary = priced.network, priced.summary
+    _print_heading(console, network, len(summary["components"]))
+    rows = largest_disagreements(priced, top)
+    console.print(
+        f"Both controls agree on {network.n_products - summary['products_where_controls_disagree']:,} of "
+        f"{network.n_products:,} products; on the others hang {_money(summary['at_stake'])} {network.currency}.",
+        highlight=False,
+    )
+    table = Table(title=f"The {len(rows)} disagreements with most at stake ({network.currency})", title_justify="left")
+    table.add_column("Itinerary")
+    table.add_column("Class")
+    table.add_column("Route")
+    for heading in ("Fare", "Displaces", "Contributes", "At stake"):
+        table.add_column(heading, justify="right")
+    table.add_column("What happens")
+    for row in rows:
+        table.add_row(
+            row["itinerary"],
+            row["fare_class"],
+            row["route"],
+            *(_price(row[name]) for name in ("fare", "displacement", "contribution")),
+            _price(row["at_stake"]),
+            WORDS[row["disagreement"]],
+        )
+    console.print(table, highlight=False)
+    console.print(f"Picture: {picture}", highlight=False, markup=False, soft_wrap=True)
+    console.print(CAUTION, style="dim", highlight=False, soft_wrap=True)
+
+
+def comparison_as_json(priced: PricedNetwork, top: int, picture: Path) -> dict[str, Any]:
+    """Disagreements and totals as one document."""
+    summary = priced.summary
+    wanted = ("network", "currency", "as_of", "method", "products_where_controls_disagree", "at_stake")
+    return {
+        **{name: summary[name] for name in wanted},
+        "disagreements": largest_disagreements(priced, top),
+        "picture": str(picture),
+    }
+
+
+def largest_disagreements(priced: PricedNetwork, top: int) -> list[dict[str, Any]]:
+    """Rows of ``connections`` on which the controls disagree, most at stake first, with their routes."""
+    connections = priced.tables["connections"]
+    order = np.argsort(-connections["at_stake"].to_numpy(), kind="stable")[:top]
+    order = order[connections["disagreement"].notna().to_numpy()[order]]
+    records: list[dict[str, Any]] = connections.iloc[order].to_dict(orient="records")
+    itineraries = priced.network.product_itinerary[order]
+    return [{**record, "route": route(priced.network, int(i))} for record, i in zip(records, itineraries, strict=True)]
+
+
+def route(network: Network, itinerary: int) -> str:
+    """Stations of an itinerary in travel order, such as ``ORV-SAL-BRO``."""
+    legs = network.path_leg[network.path_start[itinerary] : network.path_start[itinerary + 1]]
+    stops = [network.legs.origin[legs[0]], *network.legs.destination[legs]]
+    return "-".join(str(network.stations.name[stop]) for stop in stops)
+
+
+def _dearest(priced: PricedNetwork) -> Table:
+    network, solution = priced.network, priced.solution
+    table = Table(title=f"The dearest last seats ({network.currency})", title_justify="left")
+    table.add_column("Leg")
+    table.add_column("Route")
+    table.add_column("Departs")
+    for heading in ("Seats left", "Bid price", "Next seat", "Leg-level value"):
+        table.add_column(heading, justify="right")
+    for leg in np.argsort(-solution.bid_price, kind="stable")[:DEAREST]:
+        legs = network.legs
+        local = legs.departs[leg] + np.timedelta64(int(legs.departs_offset[leg]), "m")
+        table.add_row(
+            str(legs.name[leg]),
+            f"{network.stations.name[legs.origin[leg]]}-{network.stations.name[legs.destination[leg]]}",
+            str(local.astype("datetime64[m]")).replace("T", " "),
+            f"{network.remaining[leg]:,}",
+            _price(solution.bid_price[leg]),
+            _price(solution.next_seat[leg]),
+            _price(priced.controls.plain.seat_value[leg]),
+        )
+    return table
+
+
+def _print_heading(console: Console, network: Network, n_components: int) -> None:
+    instant = network.as_of.strftime("%Y-%m-%d %H:%M %z")
+    console.print(f"[bold]{network.name}[/bold], as of {instant}, in {network.currency}", highlight=False)
+    console.print(
+        f"{network.n_legs:,} legs in {n_components:,} components, {network.n_itineraries:,} itineraries, "
+        f"{network.n_products:,} products; {int(network.remaining.sum()):,} seats to sell",
+        highlight=False,
+    )
+
+
+def _console() -> Console:
+    console = Console()
+    return console if console.is_terminal else Console(width=PIPE_WIDTH)
+
+
+def _money(value: float) -> str:
+    return f"{value:,.0f}"
+
+
+def _price(value: float) -> str:
+    return f"{value:,.2f}"

@@ -1,0 +1,73 @@
+"""Results on disk: all files of a run, or none."""
+
+from __future__ import annotations
+
+import json
+import os
+import shutil
+import tempfile
+from pathlib import Path
+from typing import Any, Literal
+
+import pandas as pd
+import pyarrow as pa
+import pyarrow.csv
+import pyarrow.parquet
+
+from network import SettingError
+
+__all__ = ["TableFormat", "write_results"]
+
+TableFormat = Literal["csv", "parquet"]
+
+
+def write_results(
+    out: Path, tables: dict[str, pd.DataFrame], summary: dict[str, Any], table_format: TableFormat = "csv"
+) -> None:
+    """Write the result tables and ``summary.json``.
+
+    Everything is written into a folder beside ``out`` first and moved into place at the end, so that a run
+    that fails leaves ``out`` as it was. Files of other names in ``out`` are left alone; tables of an earlier
+    run in the other format are removed.
+
+    Raises
+    ------
+    SettingError
+        If ``out`` cannot be written.
+    """
+    try:
+        out.mkdir(parents=True, exist_ok=True)
+        aside = Path(tempfile.mkdtemp(prefix=f".{out.name}-", dir=out.parent))
+    except OSError as error:
+        raise SettingError(f"cannot write to {out} ({error.strerror}); name another folder with --out") from error
+    try:
+        for name, frame in tables.items():
+            _write_table(aside / f"{name}.{table_format}", frame)
+        text = json.dumps(summary, indent=2, ensure_ascii=False, allow_nan=False)
+        (aside / "summary.json").write_text(text + "\n", encoding="utf-8")
+        for path in sorted(aside.iterdir()):
+            os.replace(path, out / path.name)  # noqa: PTH105 - one atomic step, overwriting
+        other = "csv" if table_format == "parquet" else "parquet"
+        for name in tables:
+            (out / f"{name}.{other}").unlink(missing_ok=True)
+    except OSError as error:
+        raise SettingError(f"cannot write to {out} ({error.strerror}); free space or name another folder") from error
+    finally:
+        shutil.rmtree(aside, ignore_errors=True)
+
+
+def _write_table(path: Path, frame: pd.DataFrame) -> None:
+    table = pa.Table.from_pandas(frame, preserve_index=False)
+    if path.suffix == ".parquet":
+        pyarrow.parquet.write_table(table, path, compression="zstd")
+        return
+    plain = pa.table(
+        {
+            name: table[name].cast(pa.string()) if pa.types.is_dictionary(table[name].type) else table[name]
+            for name in table.column_names
+        }
+    )
+    try:
+        pyarrow.csv.write_csv(plain, path, pyarrow.csv.WriteOptions(quoting_style="none"))
+    except pa.ArrowInvalid:  # a name holds a comma or a quote
+        pyarrow.csv.write_csv(plain, path, pyarrow.csv.WriteOptions(quoting_style="needed"))
