@@ -105,30 +105,26 @@ def certify(program: SeatProgram, seats: FloatArray, prices: FloatArray) -> Cert
     if seats.shape != (len(columns),) or prices.shape != program.capacity.shape:
         raise ValueError("seats and prices must fit the columns and legs of the program")
     reduced = columns.value - program.path_price(prices)[columns.itinerary]
-    spare = program.capacity - program.load(seats)
-    primal = float(columns.value @ seats)
-    dual = float(program.capacity @ prices + columns.width @ np.maximum(reduced, 0.0))
     room = columns.width - seats
-    wrong = np.where(room > GREATEST_VIOLATION, reduced, 0.0)
-    wrong = np.maximum(wrong, np.where(seats > GREATEST_VIOLATION, -reduced, 0.0))
+    spare = program.capacity - program.load(seats)
+    unsold_worth = float(np.max(reduced, initial=0.0, where=room > GREATEST_VIOLATION))
+    sold_unworthy = -float(np.min(reduced, initial=0.0, where=seats > GREATEST_VIOLATION))
+    primal = float(columns.value @ seats)
+    dual = float(program.capacity @ prices + columns.width @ np.maximum(reduced, 0.0, out=reduced))
     size = max(abs(dual), 0.01 * program.scale)
     return Certificate(
         primal=primal,
         dual=dual,
         gap=(dual - primal) / size,
-        capacity_violation=_worst(-spare),
-        bound_violation=max(_worst(-seats), _worst(-room)),
-        price_violation=_worst(-prices) / program.scale,
-        reduced_cost_violation=_worst(wrong) / program.scale,
+        capacity_violation=_excess(-spare),
+        bound_violation=max(-float(np.min(seats, initial=0.0)), -float(np.min(room, initial=0.0))),
+        price_violation=_excess(-prices) / program.scale,
+        reduced_cost_violation=max(unsold_worth, sold_unworthy) / program.scale,
         slackness=float(np.abs(np.maximum(spare, 0.0) * prices).sum()) / size,
         columns=len(columns),
     )
 
 
-def _worst(excess: FloatArray) -> float:
-    """Greatest value above zero; NaN if there is one."""
-    return (
-        max(float(excess.max()), 0.0)
-        if len(excess) and not np.isnan(excess).any()
-        else (float("nan") if len(excess) else 0.0)
-    )
+def _excess(values: FloatArray) -> float:
+    """Greatest value above zero, NaN if there is one."""
+    return float(np.max(values, initial=0.0))

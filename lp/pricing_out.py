@@ -109,8 +109,7 @@ def _solve_undecided(
     """
     columns, network = program.columns, program.network
     centre, fence = fences
-    weight = program.running[0]
-    room = program.capacity - program.incidence @ (weight[first] - weight[columns.start[:-1]])
+    room = program.capacity - program.incidence @ program.seats_before(first)
     itinerary = columns.itinerary[undecided]
     length = np.diff(network.path_start)[itinerary]
     legs = network.path_leg[ranges(network.path_start[itinerary], length)]

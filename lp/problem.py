@@ -14,6 +14,9 @@ from network.model import FloatArray, IntArray
 
 __all__ = ["SeatProgram"]
 
+FEW_STEPS = 3
+"""Columns by which an answer may lie beside a near one before it is found by bisection."""
+
 
 @dataclass(frozen=True, eq=False)
 class SeatProgram:
@@ -63,33 +66,68 @@ class SeatProgram:
         return np.asarray(self.incidence @ carried)
 
     @cached_property
-    def running(self) -> tuple[FloatArray, FloatArray, FloatArray]:
-        """Running sums of width, width*value and width*value**2, each (K + 1,), from 0."""
+    def running(self) -> FloatArray:
+        """(K + 1, 3) sums of width, width*value and width*value**2 of the columns before each position."""
         width, value = self.columns.width, self.columns.value
-        sums = [np.concatenate([[0.0], np.cumsum(term)]) for term in (width, width * value, width * value**2)]
-        return sums[0], sums[1], sums[2]
+        sums = np.zeros((len(self.columns) + 1, 3))
+        np.cumsum(np.column_stack([width, width * value, width * value**2]), axis=0, out=sums[1:])
+        return sums
 
-    def count_above(self, threshold: FloatArray) -> IntArray:
+    @cached_property
+    def running_start(self) -> FloatArray:
+        """(I, 3) the rows of ``running`` where the columns of each itinerary begin."""
+        return np.asarray(self.running[self.columns.start[:-1]])
+
+    def seats_before(self, end: IntArray) -> FloatArray:
+        """Seats of the columns of every itinerary before the positions ``end``, (I,)."""
+        return np.asarray(self.running[end, 0] - self.running_start[:, 0])
+
+    def count_above(self, threshold: FloatArray, near: IntArray | None = None) -> IntArray:
         """Return where the columns worth more than a threshold end in every itinerary.
 
         Parameters
         ----------
         threshold
             (I,) currency.
+        near
+            (I,) answers for a threshold close by, which make the search short; bisection if None.
 
         Returns
         -------
         ndarray
             (I,) positions in the columns: those of itinerary i worth more than ``threshold[i]`` are
-            ``columns.start[i]:result[i]``. Found by bisection in all itineraries at once.
+            ``columns.start[i]:result[i]``.
         """
-        low, high = self.columns.start[:-1].copy(), self.columns.start[1:].copy()
-        value = self.columns.value
-        deepest = int((high - low).max()) if len(low) else 0
+        start, end = self.columns.start[:-1], self.columns.start[1:]
+        if near is None:
+            return self._bisected(threshold, start, end)
+        value = self._fenced_value
+        found = near.copy()
+        low = np.flatnonzero((value[found + 1] > threshold) & (found < end))
+        high = np.flatnonzero((value[found] <= threshold) & (found > start))
+        for _ in range(FEW_STEPS):
+            found[low] += 1
+            found[high] -= 1
+            low = low[(value[found[low] + 1] > threshold[low]) & (found[low] < end[low])]
+            high = high[(value[found[high]] <= threshold[high]) & (found[high] > start[high])]
+        far = np.concatenate([low, high])
+        if len(far):
+            found[far] = self._bisected(threshold[far], start[far], end[far])
+        return found
+
+    @cached_property
+    def _fenced_value(self) -> FloatArray:
+        """(K + 2,) the values with one place before and one after them, so that column k stands at k + 1."""
+        return np.concatenate([[0.0], self.columns.value, [0.0]])
+
+    def _bisected(self, threshold: FloatArray, low: IntArray, high: IntArray) -> IntArray:
+        """Bisect between ``low`` and ``high`` in all itineraries at once."""
+        value = self._fenced_value
+        deepest = int((high - low).max(initial=0))
         for _ in range(deepest.bit_length()):
             middle = (low + high) >> 1
             searching = middle < high
-            above = searching & (value[np.minimum(middle, len(value) - 1)] > threshold)
+            above = searching & (value[middle + 1] > threshold)
             low = np.where(above, middle + 1, low)
             high = np.where(searching & ~above, middle, high)
         return low

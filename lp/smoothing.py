@@ -13,13 +13,11 @@ published.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
 import numpy as np
 from scipy.sparse.linalg import LinearOperator, cg
 
 from lp.problem import SeatProgram
-from network.model import FloatArray
+from network.model import FloatArray, IntArray
 
 __all__ = ["WARM_WINDOWS", "WINDOWS", "SmoothedDual", "smoothed_prices"]
 
@@ -29,38 +27,52 @@ WINDOWS = (0.25, 0.06, 0.015, 0.004)
 WARM_WINDOWS = (0.015, 0.004)
 """The same for a start from prices that were good lately."""
 
+WIDER = 4.0
+"""How much wider than the window the curvature is taken over."""
+
 STEPS_PER_WINDOW = 12
 ENOUGH = 1e-3
 """A window is left once the projected gradient is below this share of the seats."""
 
 
-@dataclass(frozen=True, eq=False)
 class SmoothedDual:
-    """The smoothed dual for one window: value, gradient and curvature at any prices."""
+    """The smoothed dual for one window: value, gradient and curvature at any prices.
 
-    program: SeatProgram
-    window: float
+    It remembers where the columns near the last prices stand, since the next prices are mostly close by.
+    """
 
-    def at(self, prices: FloatArray) -> tuple[float, FloatArray, FloatArray]:
-        """Return g(p), its gradient (L,) and the curvature of every itinerary (I,)."""
+    def __init__(self, program: SeatProgram, window: float) -> None:
+        self.program = program
+        self.window = window
+        self._near: dict[float, IntArray] = {}
+
+    def at(self, prices: FloatArray) -> tuple[float, FloatArray]:
+        """Return g(p) and its gradient (L,)."""
         program, h = self.program, self.window
         path = program.path_price(prices)
-        weight, first, second = program.running
-        start = program.columns.start[:-1]
-
-        def sums(threshold: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
-            end = program.count_above(threshold)
-            n = weight[end] - weight[start]
-            s = first[end] - first[start]
-            q = second[end] - second[start]
-            return n, s - threshold * n, 0.5 * (q - 2 * threshold * s + threshold**2 * n)
-
-        n_low, f_low, g_low = sums(path - h)
-        n_high, f_high, g_high = sums(path + h)
+        f_low, g_low = self._sums(path, -h)
+        f_high, g_high = self._sums(path, h)
         value = float(program.capacity @ prices + np.sum(g_low - g_high) / (2 * h))
         sold = (f_low - f_high) / (2 * h)
-        gradient = program.capacity - program.incidence @ sold
-        return value, gradient, (n_low - n_high) / (2 * h)
+        return value, program.capacity - program.incidence @ sold
+
+    def curvature(self, prices: FloatArray) -> FloatArray:
+        """Return the curvature of every itinerary (I,), seen over a window wide enough to hold several columns."""
+        wide = WIDER * self.window
+        path = self.program.path_price(prices)
+        near, far = (self.program.seats_before(self._end(path, offset)) for offset in (-wide, wide))
+        return (near - far) / (2 * wide)
+
+    def _end(self, path: FloatArray, offset: float) -> IntArray:
+        found = self.program.count_above(path + offset, self._near.get(offset))
+        self._near[offset] = found
+        return found
+
+    def _sums(self, path: FloatArray, offset: float) -> tuple[FloatArray, FloatArray]:
+        """F at ``path + offset`` and its integral from there on, (I,) each."""
+        threshold = path + offset
+        seats, worth, square = (self.program.running[self._end(path, offset)] - self.program.running_start).T
+        return worth - threshold * seats, 0.5 * (square - 2 * threshold * worth + threshold**2 * seats)
 
 
 def smoothed_prices(
@@ -94,22 +106,22 @@ def smoothed_prices(
 def _minimise(dual: SmoothedDual, prices: FloatArray) -> FloatArray:
     program = dual.program
     target = ENOUGH * max(float(program.capacity.sum()), 1.0)
-    value, gradient, curvature = dual.at(prices)
+    value, gradient = dual.at(prices)
     for _ in range(STEPS_PER_WINDOW):
         free = (prices > 0) | (gradient < 0)
         if np.abs(gradient[free]).sum() <= target:
             break
-        step = _newton_step(dual, gradient, curvature, free)
+        step = _newton_step(dual, gradient, dual.curvature(prices), free)
         length = 1.0
         for _ in range(20):
             trial = np.maximum(prices + length * step, 0.0)
-            trial_value, trial_gradient, trial_curvature = dual.at(trial)
+            trial_value, trial_gradient = dual.at(trial)
             if trial_value <= value + 1e-4 * float(gradient @ (trial - prices)):
                 break
             length *= 0.5
         else:
             break
-        prices, value, gradient, curvature = trial, trial_value, trial_gradient, trial_curvature
+        prices, value, gradient = trial, trial_value, trial_gradient
     return prices
 
 

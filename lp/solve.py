@@ -20,6 +20,9 @@ from network.model import FloatArray, IntArray
 
 __all__ = ["Optimum", "Phase", "optimise", "solve", "value_of_seats"]
 
+FENCE = 4.0
+"""Distance of the first fences from the approximate prices, in windows of the last smoothing."""
+
 Phase = Callable[[str], None]
 """Called with the name of each phase as it ends: assemble, approach, solve, choose, certify."""
 
@@ -96,7 +99,7 @@ def optimise(
     windows = WINDOWS if start is None else WARM_WINDOWS
     prices, window = smoothed_prices(program, start, windows)
     phase("approach")
-    found = solve_priced_out(program, prices, window, options.solver, whole=options.whole)
+    found = solve_priced_out(program, prices, FENCE * window, options.solver, whole=options.whole)
     phase("solve")
     last_seat, next_seat = canonical_prices(program, found.seats)
     phase("choose")
