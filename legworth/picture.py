@@ -8,6 +8,7 @@ import matplotlib as mpl
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
+from matplotlib.patches import Patch
 
 from legworth.pricing import PricedNetwork
 from legworth.report import largest_disagreements
@@ -33,7 +34,8 @@ def draw_comparison(priced: PricedNetwork, path: Path, top: int) -> None:
         legs, money = figure.subplots(1, 2, width_ratios=[1, 1.25])
         _draw_legs(legs, priced)
         _draw_disagreements(money, priced, top)
-        figure.suptitle(f"{priced.network.name}: network control against leg-level control", fontweight="bold")
+        title = f"{priced.network.name}: {priced.summary['method']} bid prices against leg-level control"
+        figure.suptitle(title, fontweight="bold")
         try:
             path.parent.mkdir(parents=True, exist_ok=True)
             figure.savefig(path, dpi=130, format="png")
@@ -48,8 +50,8 @@ def _draw_legs(axes: Axes, priced: PricedNetwork) -> None:
     size = 12 + 60 * network.remaining / max(int(network.remaining.max(initial=1)), 1)
     above = bid_price >= leg_value
     for chosen, colour, label in (
-        (above, LEG_SELLS, "leg control sells the seat too cheaply"),
-        (~above, NETWORK_SELLS, "leg control holds the seat too dear"),
+        (above, LEG_SELLS, "bid price above the leg's own value"),
+        (~above, NETWORK_SELLS, "bid price below the leg's own value"),
     ):
         axes.scatter(
             leg_value[chosen],
@@ -79,11 +81,11 @@ def _draw_disagreements(axes: Axes, priced: PricedNetwork, top: int) -> None:
     place = np.arange(len(rows))[::-1]
     stake = np.array([row["at_stake"] for row in rows])
     network_sells = np.array([row["disagreement"] == "network_only" for row in rows])
-    for chosen, colour, label in (
-        (network_sells, NETWORK_SELLS, "network sells, leg control refuses"),
-        (~network_sells, LEG_SELLS, "leg control sells, network refuses"),
-    ):
-        axes.barh(place[chosen], stake[chosen], color=colour, height=0.7, label=label)
+    for chosen, colour in ((network_sells, NETWORK_SELLS), (~network_sells, LEG_SELLS)):
+        axes.barh(place[chosen], stake[chosen], color=colour, height=0.7)
     axes.set_yticks(place, [f"{row['route']}  class {row['fare_class']}  {row['itinerary']}" for row in rows])
     axes.set_xlabel("contribution lost per passenger times passengers expected")
-    axes.legend(loc="lower right", frameon=False)
+    handles = [Patch(color=NETWORK_SELLS), Patch(color=LEG_SELLS)]
+    axes.legend(
+        handles, ["network sells, leg control refuses", "leg control sells, network refuses"], loc="lower right"
+    )

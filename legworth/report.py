@@ -29,6 +29,7 @@ CAUTION = (
 )
 DEAREST = 8
 PIPE_WIDTH = 140
+ALONE = {"network_only": "network control", "leg_only": "leg-level control"}
 WORDS = {"network_only": "network sells, leg control refuses", "leg_only": "leg control sells, network refuses"}
 
 
@@ -97,14 +98,18 @@ def print_prices(priced: PricedNetwork, out: Path, table_format: str) -> None:
 def print_comparison(priced: PricedNetwork, top: int, picture: Path) -> None:
     """Print the disagreements on which most money hangs."""
     console = _console()
-    network, summary = priced.network, priced.summary
+    network, summary, connections = priced.network, priced.summary, priced.tables["connections"]
     _print_heading(console, network, len(summary["components"]))
     rows = largest_disagreements(priced, top)
     console.print(
         f"Both controls agree on {network.n_products - summary['products_where_controls_disagree']:,} of "
-        f"{network.n_products:,} products; on the others hang {_money(summary['at_stake'])} {network.currency}.",
+        f"{network.n_products:,} products; on the others hang {_money(summary['at_stake'])} {network.currency}:",
         highlight=False,
     )
+    for word, label in ALONE.items():
+        chosen = connections["disagreement"] == word
+        stake = float(connections["at_stake"][chosen].sum())
+        console.print(f"  {int(chosen.sum()):,} that {label} alone would sell, {_money(stake)}", highlight=False)
     table = Table(title=f"The {len(rows)} disagreements with most at stake ({network.currency})", title_justify="left")
     table.add_column("Itinerary")
     table.add_column("Class")

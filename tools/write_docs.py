@@ -1,0 +1,94 @@
+"""Write ``docs/tables.md`` and ``docs/commands.md`` from schemas, settings and ``--help``.
+
+Run ``python -m tools.write_docs`` after changing any of them; a test holds the files against their sources.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from pathlib import Path
+
+import click
+from pydantic import BaseModel
+
+from legworth.cli import cli
+from legworth.results import result_schemas
+from network.schema import TableSchema, input_schemas
+from network.settings import NetworkSettings
+
+DOCS = Path(__file__).parent.parent / "docs"
+
+
+def documents() -> dict[str, str]:
+    """Text of every generated document by file name."""
+    return {"tables.md": tables_document(), "commands.md": commands_document()}
+
+
+def tables_document() -> str:
+    """Every column of every table, and every setting."""
+    lines = [
+        "# Tables and settings",
+        "",
+        "Written from the table schemas by `python -m tools.write_docs`; do not edit.",
+        "",
+        "Tables are CSV (UTF-8, commas, a header line) or Parquet with the same columns. A blank cell is a missing"
+        " value. Columns marked *optional* may be left out.",
+        "",
+        "## network.toml",
+        "",
+        "| setting | default | meaning |",
+        "| --- | --- | --- |",
+        *_settings(NetworkSettings, ""),
+        "",
+        "# What goes in",
+        "",
+    ]
+    for schema in input_schemas().values():
+        lines += _table(schema)
+    lines += ["# What comes out", ""]
+    for schema in result_schemas().values():
+        lines += _table(schema)
+    return "\n".join(lines).rstrip() + "\n"
+
+
+def commands_document() -> str:
+    """The help text of every command."""
+    lines = ["# Commands", "", "Written from `--help` by `python -m tools.write_docs`; do not edit.", ""]
+    for name, command in [("", cli), *sorted(cli.commands.items())]:
+        title = f"legworth {name}".strip()
+        context = click.Context(command, info_name=title, max_content_width=100, terminal_width=100)
+        lines += [f"## {title}", "", "```text", command.get_help(context), "```", ""]
+    return "\n".join(lines).rstrip() + "\n"
+
+
+def _settings(model: type[BaseModel], prefix: str) -> Iterator[str]:
+    for name, field in model.model_fields.items():
+        nested = field.annotation
+        if isinstance(nested, type) and issubclass(nested, BaseModel):
+            yield from _settings(nested, f"{prefix}{name}.")
+            continue
+        default = "*required*" if field.is_required() else f"`{field.default!r}`" if field.default != () else ""
+        yield f"| `{prefix}{name}` | {default} | {field.description} |"
+
+
+def _table(schema: TableSchema) -> list[str]:
+    lines = [f"## {schema.name}", "", schema.description + (" Optional." if schema.optional else ""), ""]
+    lines += ["| column | type | unit | limits | meaning |", "| --- | --- | --- | --- | --- |"]
+    for column in schema:
+        mark = " *optional*" if column.optional else ""
+        lines.append(
+            f"| `{column.name}` | {column.type}{mark} | {column.unit} | {column.limits} | {column.description} |"
+        )
+    lines += ["", f"Key: {', '.join(f'`{name}`' for name in schema.key)}.", ""]
+    return lines
+
+
+def main() -> None:
+    """Write the documents."""
+    DOCS.mkdir(exist_ok=True)
+    for name, text in documents().items():
+        (DOCS / name).write_text(text, encoding="utf-8")
+
+
+if __name__ == "__main__":
+    main()
