@@ -36,6 +36,13 @@ def test_limits_of_the_fare_ratio() -> None:
     assert littlewood_level(100, 0, Demand.of([30.0], [0.0]))[0] == 30
 
 
+def test_a_seat_worth_just_the_low_fare_is_not_kept() -> None:
+    # Geometric demand of mean 1: P(D >= k) is exactly one half to the k.
+    geometric = Demand.of([1.0], [2**0.5], "negative_binomial")
+    for seats in range(1, 8):
+        assert littlewood_level(100.0, 100 * 0.5**seats, geometric)[0] == seats - 1
+
+
 @given(scale=st.floats(0.001, 1000))
 def test_currency_does_not_matter(scale: float) -> None:
     demand = Demand.of([30.0], [3.0])

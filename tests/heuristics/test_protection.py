@@ -206,6 +206,17 @@ def test_demand_at_no_adjusted_fare_counts_for_nothing(build: Build, seed: int) 
     np.testing.assert_array_equal(alone.booking_limit, found.booking_limit[keep])
 
 
+def test_fares_that_rounding_parts_open_together_at_their_seat_value(build: Build) -> None:
+    # On the first leg 200.3 - 0.2 stands a rounding error above 200.1.
+    network = build([9, 9], [[0], [0, 1]], [[(200.1, 30, 5)], [(200.3, 30, 5)]])
+    products = leg_products(network, [0.0, 0.2])
+    found = leg_protection(products, network.demand, network.remaining)
+    fare = products.adjusted_fare[:2]
+    assert fare[0] > fare[1]
+    assert found.booking_limit[:2].tolist() == [9, 9]
+    assert np.all(fare >= found.seat_value[0])
+
+
 def test_a_leg_that_nobody_wants_is_worth_nothing(build: Build) -> None:
     network = build([5, 7, 4], [[0], [1]], [[(90, 0, 0), (40, 0, 0)], [(80, 3, 2)]])
     found = leg_protection(leg_products(network, np.zeros(3)), network.demand, network.remaining)
