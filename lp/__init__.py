@@ -6,8 +6,9 @@ from lp.columns import SeatColumns, deterministic_columns, probabilistic_columns
 from lp.parts import NetworkSolution, solve_network
 from lp.problem import SeatProgram
 from lp.solution import LpOptions, Method, Solution
-from lp.solve import Optimum, optimise, solve, value_of_seats
+from lp.solve import Optimum, optimise, solve
 from lp.solvers import SOLVERS, SolverOptions, solver_version
+from lp.values import SeatValues
 
 __all__ = [
     "SOLVERS",
@@ -18,6 +19,7 @@ __all__ = [
     "Optimum",
     "SeatColumns",
     "SeatProgram",
+    "SeatValues",
     "Solution",
     "SolverOptions",
     "canonical_prices",
@@ -29,5 +31,4 @@ __all__ = [
     "solve",
     "solve_network",
     "solver_version",
-    "value_of_seats",
 ]

@@ -47,6 +47,8 @@ MONEY = 1000.0
 
 ACTIVE = 1e-9
 TIGHTENING = 12
+IMPLIED = 1e-5
+"""Room left around implied bounds: more than the solver's tolerance, so that only given limits ever hold a price."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -167,8 +169,8 @@ def _tightened(duals: OptimalDuals) -> OptimalDuals:
         implied_low = np.where(free_others, 0.0, duals.low[row_of] - others_high)
         implied_high = duals.high[row_of] - others_low
         before = lower.copy(), upper.copy()
-        np.maximum.at(lower, rows.indices, implied_low - ACTIVE)
-        np.minimum.at(upper, rows.indices, implied_high + ACTIVE)
+        np.maximum.at(lower, rows.indices, implied_low - IMPLIED)
+        np.minimum.at(upper, rows.indices, implied_high + IMPLIED)
         upper = np.maximum(upper, lower)
         if np.array_equal(before[0], lower) and np.array_equal(before[1], upper):
             break

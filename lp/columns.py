@@ -27,6 +27,9 @@ __all__ = ["TAIL", "SeatColumns", "deterministic_columns", "probabilistic_column
 TAIL = 1e-6
 """Seats that demand reaches with a smaller probability than this get no column."""
 
+FEW_STEPS = 3
+"""Columns by which an answer may lie beside a near one before it is found by bisection."""
+
 
 @dataclass(frozen=True, eq=False)
 class SeatColumns:
@@ -55,9 +58,81 @@ class SeatColumns:
         """(K,) position of the itinerary of every column."""
         return np.repeat(np.arange(len(self.start) - 1), np.diff(self.start))
 
+    @cached_property
+    def scale(self) -> float:
+        """The greatest value of a column: the size of money here, 1 if there are no columns."""
+        return float(self.value.max(initial=0.0)) or 1.0
+
     def sales(self, seats: FloatArray, n_products: int) -> FloatArray:
         """Sum seats per column, (K,), over the columns of every product, giving (J,)."""
         return np.bincount(self.product, weights=seats, minlength=n_products).astype(np.float64)
+
+    @cached_property
+    def running(self) -> FloatArray:
+        """(K + 1, 3) sums of width, width*value and width*value**2 of the columns before each position."""
+        width, value = self.width, self.value
+        sums = np.zeros((len(self) + 1, 3))
+        np.cumsum(np.column_stack([width, width * value, width * value**2]), axis=0, out=sums[1:])
+        return sums
+
+    @cached_property
+    def running_start(self) -> FloatArray:
+        """(I, 3) the rows of ``running`` where the columns of each itinerary begin."""
+        return np.asarray(self.running[self.start[:-1]])
+
+    def seats_before(self, end: IntArray) -> FloatArray:
+        """Seats of the columns of every itinerary before the positions ``end``, (I,)."""
+        return np.asarray(self.running[end, 0] - self.running_start[:, 0])
+
+    def count_above(self, threshold: FloatArray, near: IntArray | None = None) -> IntArray:
+        """Return where the columns worth more than a threshold end in every itinerary.
+
+        Parameters
+        ----------
+        threshold
+            (I,) currency.
+        near
+            (I,) answers for a threshold close by, which make the search short; bisection if None.
+
+        Returns
+        -------
+        ndarray
+            (I,) positions in the columns: those of itinerary i worth more than ``threshold[i]`` are
+            ``columns.start[i]:result[i]``.
+        """
+        start, end = self.start[:-1], self.start[1:]
+        if near is None:
+            return self._bisected(threshold, start, end)
+        value = self._fenced_value
+        found = near.copy()
+        low = np.flatnonzero((value[found + 1] > threshold) & (found < end))
+        high = np.flatnonzero((value[found] <= threshold) & (found > start))
+        for _ in range(FEW_STEPS):
+            found[low] += 1
+            found[high] -= 1
+            low = low[(value[found[low] + 1] > threshold[low]) & (found[low] < end[low])]
+            high = high[(value[found[high]] <= threshold[high]) & (found[high] > start[high])]
+        far = np.concatenate([low, high])
+        if len(far):
+            found[far] = self._bisected(threshold[far], start[far], end[far])
+        return found
+
+    @cached_property
+    def _fenced_value(self) -> FloatArray:
+        """(K + 2,) the values with one place before and one after them, so that column k stands at k + 1."""
+        return np.concatenate([[0.0], self.value, [0.0]])
+
+    def _bisected(self, threshold: FloatArray, low: IntArray, high: IntArray) -> IntArray:
+        """Bisect between ``low`` and ``high`` in all itineraries at once."""
+        value = self._fenced_value
+        deepest = int((high - low).max(initial=0))
+        for _ in range(deepest.bit_length()):
+            middle = (low + high) >> 1
+            searching = middle < high
+            above = searching & (value[middle + 1] > threshold)
+            low = np.where(above, middle + 1, low)
+            high = np.where(searching & ~above, middle, high)
+        return low
 
 
 def deterministic_columns(network: Network) -> SeatColumns:
@@ -70,13 +145,16 @@ def sampled_columns(network: Network, demand: FloatArray) -> SeatColumns:
     return _sorted_columns(network, network.fare, demand, np.arange(network.n_products))
 
 
-def probabilistic_columns(network: Network, tail: float = TAIL) -> SeatColumns:
+def probabilistic_columns(network: Network, tail: float = TAIL, *, any_seats: bool = False) -> SeatColumns:
     """One column per product and seat: value f_j S_j(k) for seat k, width 1.
 
     Seats that demand reaches with probability below ``tail`` are left out, and so are seats beyond the
-    first that the path could not carry, which no optimum and no price can depend on.
+    first that the path could not carry, which no optimum and no price can depend on; these are kept with
+    ``any_seats``, so that the columns serve any number of remaining seats.
     """
-    depth = np.minimum(network.demand.seats(tail), network.path_remaining[network.product_itinerary] + 1)
+    depth = network.demand.seats(tail)
+    if not any_seats:
+        depth = np.minimum(depth, network.path_remaining[network.product_itinerary] + 1)
     depth = np.where(network.fare > 0, depth, 0)
     product = np.repeat(np.arange(network.n_products, dtype=np.int32), depth)
     first = np.cumsum(depth) - depth

@@ -83,7 +83,7 @@ def solve_priced_out(
     fence = np.full(size, np.inf if whole or len(program.columns) <= WHOLE else window)
     for rounds in range(1, MOST_ROUNDS + 1):
         path, reach = program.path_price(prices), program.path_price(fence)
-        first, last = program.count_above(path + reach), program.count_above(path - reach)
+        first, last = program.columns.count_above(path + reach), program.columns.count_above(path - reach)
         undecided = ranges(first, last - first)
         sold, fraction, found, pressed = _solve_undecided(program, first, undecided, (prices, fence), options)
         if not pressed.any():
@@ -109,7 +109,7 @@ def _solve_undecided(
     """
     columns, network = program.columns, program.network
     centre, fence = fences
-    room = program.capacity - program.incidence @ program.seats_before(first)
+    room = program.capacity - program.incidence @ columns.seats_before(first)
     itinerary = columns.itinerary[undecided]
     length = np.diff(network.path_start)[itinerary]
     legs = network.path_leg[ranges(network.path_start[itinerary], length)]

@@ -60,18 +60,19 @@ class SmoothedDual:
         """Return the curvature of every itinerary (I,), seen over a window wide enough to hold several columns."""
         wide = WIDER * self.window
         path = self.program.path_price(prices)
-        near, far = (self.program.seats_before(self._end(path, offset)) for offset in (-wide, wide))
+        near, far = (self.program.columns.seats_before(self._end(path, offset)) for offset in (-wide, wide))
         return (near - far) / (2 * wide)
 
     def _end(self, path: FloatArray, offset: float) -> IntArray:
-        found = self.program.count_above(path + offset, self._near.get(offset))
+        found = self.program.columns.count_above(path + offset, self._near.get(offset))
         self._near[offset] = found
         return found
 
     def _sums(self, path: FloatArray, offset: float) -> tuple[FloatArray, FloatArray]:
         """F at ``path + offset`` and its integral from there on, (I,) each."""
         threshold = path + offset
-        seats, worth, square = (self.program.running[self._end(path, offset)] - self.program.running_start).T
+        columns = self.program.columns
+        seats, worth, square = (columns.running[self._end(path, offset)] - columns.running_start).T
         return worth - threshold * seats, 0.5 * (square - 2 * threshold * worth + threshold**2 * seats)
 
 

@@ -8,7 +8,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from lp.canonical import canonical_prices
-from lp.certificate import Certificate, certify
+from lp.certificate import certify
 from lp.columns import SeatColumns, deterministic_columns, probabilistic_columns, sampled_columns
 from lp.pricing_out import solve_priced_out
 from lp.problem import SeatProgram
@@ -16,9 +16,9 @@ from lp.smoothing import WARM_WINDOWS, WINDOWS, smoothed_prices
 from lp.solution import LpOptions, Method, Solution
 from lp.solvers import solver_version
 from network import Network
-from network.model import FloatArray, IntArray
+from network.model import FloatArray
 
-__all__ = ["Optimum", "Phase", "optimise", "solve", "value_of_seats"]
+__all__ = ["Optimum", "Phase", "optimise", "solve"]
 
 FENCE = 4.0
 """Distance of the first fences from the approximate prices, in windows of the last smoothing."""
@@ -104,21 +104,6 @@ def optimise(
     last_seat, next_seat = canonical_prices(program, found.seats)
     phase("choose")
     return Optimum(found.seats, last_seat, next_seat, found.opened, found.rounds)
-
-
-def value_of_seats(
-    network: Network, remaining: IntArray, options: LpOptions | None = None, start: FloatArray | None = None
-) -> Certificate:
-    """Optimal value of a network with other remaining seats, (L,), as a certificate whose ``primal`` it is.
-
-    For n seats on the path a of an itinerary, V(c) - V(c - n a) is their exact displacement; for a leg with
-    other seats, the difference is what the change earns. Starting from the prices of the present optimum
-    makes each such question cheap.
-    """
-    options = options or LpOptions()
-    if options.method is Method.RANDOMISED:
-        raise ValueError("the value of seats is defined for one program, not for samples")
-    return solve(network.with_remaining(remaining), options, start).certificate
 
 
 def _solve_columns(

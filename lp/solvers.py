@@ -72,7 +72,9 @@ def solve_open(program: OpenProgram, options: SolverOptions) -> tuple[FloatArray
     SolverStoppedError
         If it ends without an optimum.
     """
-    scale = VALUE_SCALE / program.value.max()
+    # Fences alone are worth less than nothing: where every column is decided, their size is the scale.
+    greatest = program.value.max(initial=0.0) or np.abs(program.value).max(initial=0.0) or 1.0
+    scale = VALUE_SCALE / greatest
     problem = pulp.LpProblem("seats", pulp.LpMinimize)
     ends = [width if width < np.inf else None for width in program.width.tolist()]
     variables = [pulp.LpVariable(f"x{position}", 0.0, end) for position, end in enumerate(ends)]

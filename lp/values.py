@@ -1,0 +1,142 @@
+"""Exact value of seats: V(c) for any seats c, by solving again from one present optimum.
+
+A bid price is a first-order figure. What a party of n on a path displaces is V(c) - V(c - n a), and what a
+bigger vehicle earns is V(c + n e) - V(c); neither is n times a price. All such questions about one network
+share its columns and start from the prices of its present optimum.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from lp.certificate import Certificate, certify
+from lp.columns import SeatColumns, deterministic_columns, probabilistic_columns
+from lp.pricing_out import solve_priced_out
+from lp.problem import SeatProgram
+from lp.smoothing import smoothed_prices
+from lp.solution import LpOptions, Method
+from lp.solvers import SolverOptions
+from network import Network
+from network.model import FloatArray, IntArray
+
+__all__ = ["SeatValues"]
+
+FENCE = 4.0
+"""Distance of the first fences from the present prices, in windows of the last smoothing."""
+
+
+@dataclass(frozen=True, eq=False)
+class SeatValues:
+    """The optimal value as a function of seats, around the present optimum of a network.
+
+    Make one with `SeatValues.of`, then ask as often as you like.
+
+    Attributes
+    ----------
+    program
+        The program at the present seats; its columns serve any seats.
+    prices, fence
+        (L,) approximate bid prices at the present seats, and the distance of the fences around them, currency.
+    present
+        Certificate of the present optimum; its ``primal`` is V(c).
+    solver
+        The solver.
+    """
+
+    program: SeatProgram
+    prices: FloatArray
+    fence: float
+    present: Certificate
+    solver: SolverOptions
+
+    @classmethod
+    def of(cls, network: Network, options: LpOptions | None = None, start: FloatArray | None = None) -> SeatValues:
+        """Solve the network at its present seats.
+
+        Parameters
+        ----------
+        network
+            The network, best one component of it.
+        options
+            Deterministic or probabilistic program, and the solver.
+        start
+            (L,) prices to start from.
+
+        Raises
+        ------
+        ValueError
+            For the randomised program, whose value is a mean over samples.
+        SolveError
+            If there is no certified optimum.
+        """
+        options = options or LpOptions()
+        program = SeatProgram.of(network, _columns(network, options))
+        prices, window = np.zeros(len(program.capacity)), 1.0
+        if len(program.columns):
+            prices, window = smoothed_prices(program, start)
+        present = _certified_value(program, prices, FENCE * window, options.solver)
+        return cls(program, prices, FENCE * window, present, options.solver)
+
+    def at(self, remaining: IntArray) -> Certificate:
+        """V at other remaining seats, (L,), as a certificate whose ``primal`` it is.
+
+        Raises
+        ------
+        ValueError
+            If there is not one figure per leg, none negative.
+        SolveError
+            If there is no certified optimum.
+        """
+        remaining = np.asarray(remaining)
+        if remaining.shape != self.program.capacity.shape or np.any(remaining < 0):
+            raise ValueError("expected remaining seats, not negative, for every leg")
+        program = self.program.with_capacity(remaining.astype(np.float64))
+        return _certified_value(program, self.prices, self.fence, self.solver)
+
+    def displacement(self, itinerary: int, party: int) -> float:
+        """Exact displacement of a party on the path of an itinerary, V(c) - V(c - n a), currency.
+
+        Raises
+        ------
+        ValueError
+            If the party is below one or a leg of the path has fewer seats.
+        """
+        network = self.program.network
+        path = network.path_leg[network.path_start[itinerary] : network.path_start[itinerary + 1]]
+        remaining = self.program.capacity.copy()
+        if party < 1 or np.any(remaining[path] < party):
+            raise ValueError(f"a party of {party} does not fit into the seats left on the path")
+        remaining[path] -= party
+        return self.present.primal - self.at(remaining).primal
+
+    def change(self, leg: int, seats: int) -> float:
+        """What more seats on one leg earn, or fewer, V(c + n e_l) - V(c), currency.
+
+        Raises
+        ------
+        ValueError
+            If the leg has fewer seats than are taken away.
+        """
+        remaining = self.program.capacity.copy()
+        remaining[leg] += seats
+        return self.at(remaining).primal - self.present.primal
+
+
+def _columns(network: Network, options: LpOptions) -> SeatColumns:
+    if options.method is Method.RANDOMISED:
+        raise ValueError("exact values are defined for one program, not for samples; choose another method")
+    if options.method is Method.DETERMINISTIC:
+        return deterministic_columns(network)
+    return probabilistic_columns(network, options.tail, any_seats=True)
+
+
+def _certified_value(program: SeatProgram, prices: FloatArray, fence: float, solver: SolverOptions) -> Certificate:
+    seats, found = np.zeros(len(program.columns)), np.zeros(len(program.capacity))
+    if len(program.columns):
+        optimum = solve_priced_out(program, prices, fence, solver)
+        seats, found = optimum.seats, optimum.prices
+    certificate = certify(program, seats, found)
+    certificate.require()
+    return certificate
