@@ -57,9 +57,10 @@ class DaySize:
 SIZES = {
     "small": DaySize(hubs=1, spokes=48, banks=2, trunks=0, legs=160, itineraries=1_625),
     "middle": DaySize(hubs=2, spokes=60, banks=3, trunks=3, legs=500, itineraries=8_000),
+    "broad": DaySize(hubs=2, spokes=90, banks=4, trunks=4, legs=1_000, itineraries=26_000),
     "large": DaySize(hubs=2, spokes=120, banks=6, trunks=4, legs=1_826, itineraries=87_120),
 }
-"""The three sizes; with `CLASSES` they give 13,000, 64,000 and 696,960 products."""
+"""The four sizes; with `CLASSES` they give 13,000, 64,000, 208,000 and 696,960 products."""
 
 CLASSES = ("A", "B", "C", "D", "E", "F", "G", "H")
 LADDER = np.array([1.0, 0.84, 0.70, 0.58, 0.48, 0.39, 0.32, 0.26])

@@ -21,14 +21,12 @@ import numpy as np
 
 from network import Network
 from network.model import FloatArray, IntArray
+from network.runs import SortedRuns
 
 __all__ = ["TAIL", "SeatColumns", "deterministic_columns", "probabilistic_columns", "sampled_columns"]
 
 TAIL = 1e-6
 """Seats that demand reaches with a smaller probability than this get no column."""
-
-FEW_STEPS = 3
-"""Columns by which an answer may lie beside a near one before it is found by bisection."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -85,54 +83,16 @@ class SeatColumns:
         return np.asarray(self.running[end, 0] - self.running_start[:, 0])
 
     def count_above(self, threshold: FloatArray, near: IntArray | None = None) -> IntArray:
-        """Return where the columns worth more than a threshold end in every itinerary.
+        """Return where the columns worth more than a threshold, (I,), end in every itinerary.
 
-        Parameters
-        ----------
-        threshold
-            (I,) currency.
-        near
-            (I,) answers for a threshold close by, which make the search short; bisection if None.
-
-        Returns
-        -------
-        ndarray
-            (I,) positions in the columns: those of itinerary i worth more than ``threshold[i]`` are
-            ``columns.start[i]:result[i]``.
+        Those of itinerary i worth more than ``threshold[i]`` are ``start[i]:result[i]``; ``near`` are answers
+        for thresholds close by.
         """
-        start, end = self.start[:-1], self.start[1:]
-        if near is None:
-            return self._bisected(threshold, start, end)
-        value = self._fenced_value
-        found = near.copy()
-        low = np.flatnonzero((value[found + 1] > threshold) & (found < end))
-        high = np.flatnonzero((value[found] <= threshold) & (found > start))
-        for _ in range(FEW_STEPS):
-            found[low] += 1
-            found[high] -= 1
-            low = low[(value[found[low] + 1] > threshold[low]) & (found[low] < end[low])]
-            high = high[(value[found[high]] <= threshold[high]) & (found[high] > start[high])]
-        far = np.concatenate([low, high])
-        if len(far):
-            found[far] = self._bisected(threshold[far], start[far], end[far])
-        return found
+        return self._runs.count_above(threshold, near=near)
 
     @cached_property
-    def _fenced_value(self) -> FloatArray:
-        """(K + 2,) the values with one place before and one after them, so that column k stands at k + 1."""
-        return np.concatenate([[0.0], self.value, [0.0]])
-
-    def _bisected(self, threshold: FloatArray, low: IntArray, high: IntArray) -> IntArray:
-        """Bisect between ``low`` and ``high`` in all itineraries at once."""
-        value = self._fenced_value
-        deepest = int((high - low).max(initial=0))
-        for _ in range(deepest.bit_length()):
-            middle = (low + high) >> 1
-            searching = middle < high
-            above = searching & (value[middle + 1] > threshold)
-            low = np.where(above, middle + 1, low)
-            high = np.where(searching & ~above, middle, high)
-        return low
+    def _runs(self) -> SortedRuns:
+        return SortedRuns(self.value, self.start)
 
 
 def deterministic_columns(network: Network) -> SeatColumns:

@@ -80,7 +80,7 @@ class Law(ABC):
 
 
 # The regularised gamma and beta functions below are P(D >= k) itself. scipy.stats evaluates the same ones
-# behind argument checks that cost two to four times as much on the millions of seat columns of a network.
+# behind argument checks that make it one and a half to four times as slow on the millions of seat columns of a network.
 
 
 class PoissonLaw(Law):

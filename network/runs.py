@@ -1,0 +1,92 @@
+"""`SortedRuns`: figures that fall within each run, and a search in all runs at once."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+import numpy.typing as npt
+
+__all__ = ["SortedRuns"]
+
+FloatArray = npt.NDArray[np.float64]
+IntArray = npt.NDArray[np.integer]
+
+FEW_STEPS = 3
+"""Places by which an answer may lie beside a near one before it is found by bisection."""
+
+
+@dataclass(frozen=True, eq=False)
+class SortedRuns:
+    """Runs of falling figures, one after the other.
+
+    Attributes
+    ----------
+    value
+        (K,) figures.
+    start
+        (R + 1,) run r is ``value[start[r]:start[r + 1]]``, falling; it may be empty.
+    """
+
+    value: FloatArray
+    start: IntArray
+
+    def count_above(self, threshold: FloatArray, run: IntArray | None = None, near: IntArray | None = None) -> IntArray:
+        """Return where the figures above a threshold end.
+
+        Parameters
+        ----------
+        threshold
+            (m,) thresholds.
+        run
+            (m,) run that each belongs to; one threshold for every run if None.
+        near
+            (m,) answers for thresholds close by, which make the search short; bisection if None.
+
+        Returns
+        -------
+        ndarray
+            (m,) positions in ``value``: those of run r above threshold i are ``start[r]:result[i]``.
+
+        Examples
+        --------
+        >>> runs = SortedRuns(np.array([9.0, 5.0, 1.0, 7.0]), np.array([0, 3, 4]))
+        >>> runs.count_above(np.array([4.0, 8.0])).tolist()
+        [2, 3]
+        """
+        start, end = self.start[:-1], self.start[1:]
+        if run is not None:
+            start, end = start[run], end[run]
+        if near is None:
+            return self._bisected(threshold, start, end)
+        value = self._fenced
+        found = near.copy()
+        low = np.flatnonzero((value[found + 1] > threshold) & (found < end))
+        high = np.flatnonzero((value[found] <= threshold) & (found > start))
+        for _ in range(FEW_STEPS):
+            found[low] += 1
+            found[high] -= 1
+            low = low[(value[found[low] + 1] > threshold[low]) & (found[low] < end[low])]
+            high = high[(value[found[high]] <= threshold[high]) & (found[high] > start[high])]
+        far = np.concatenate([low, high])
+        if len(far):
+            found[far] = self._bisected(threshold[far], start[far], end[far])
+        return found
+
+    @cached_property
+    def _fenced(self) -> FloatArray:
+        """(K + 2,) the figures with one place before and one after them, so that figure k stands at k + 1."""
+        return np.concatenate([[0.0], self.value, [0.0]])
+
+    def _bisected(self, threshold: FloatArray, low: IntArray, high: IntArray) -> IntArray:
+        """Bisect between ``low`` and ``high`` everywhere at once."""
+        value = self._fenced
+        deepest = int((high - low).max(initial=0))
+        for _ in range(deepest.bit_length()):
+            middle = (low + high) >> 1
+            searching = middle < high
+            above = searching & (value[middle + 1] > threshold)
+            low = np.where(above, middle + 1, low)
+            high = np.where(searching & ~above, middle, high)
+        return low
