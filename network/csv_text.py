@@ -5,23 +5,34 @@ from __future__ import annotations
 import csv
 import difflib
 import io
-from collections.abc import Callable
-from dataclasses import dataclass
+import re
+from dataclasses import dataclass, field
 from functools import cached_property
 from typing import Any
 
 import numpy as np
+import numpy.typing as npt
 
 from network.faults import Faults
 from network.schema import TableSchema
 
-__all__ = ["LONGEST_LINE", "CsvText", "check_columns", "open_csv"]
+__all__ = ["LONGEST_LINE", "CsvText", "Records", "check_columns", "open_csv"]
 
-LONGEST_LINE = 1_000_000
+LONGEST_LINE = 100_000
 """Bytes that one line may hold; anything longer is taken for a file that is not a table."""
 
 UTF8_MARK = b"\xef\xbb\xbf"
 OTHER_MARKS = {b"\xff\xfe": "UTF-16", b"\xfe\xff": "UTF-16"}
+STRAY_QUOTE = re.compile(rb'(?<=[^,\r\n"])"(?=[^,\r\n"])')
+
+
+@dataclass
+class Records:
+    """Records as text, cut or filled to the number of columns; the line of each, and whether it had to be."""
+
+    values: list[list[str]] = field(default_factory=list)
+    line: list[int] = field(default_factory=list)
+    ragged: list[bool] = field(default_factory=list)
 
 
 @dataclass(frozen=True)
@@ -32,63 +43,66 @@ class CsvText:
     data: bytes
     header: tuple[str, ...]
 
+    def doubtful(self, schema: TableSchema) -> bool:
+        """Tell whether a fast reader may see other values than are written.
+
+        That is so with stray quotes, and with hexadecimal figures, which it takes for whole numbers.
+        """
+        if any(column.type == "integer" for column in schema) and re.search(b"0[xX]", self.data):
+            return True
+        if b'"' not in self.data:
+            return False
+        return self.data.count(b'"') % 2 == 1 or STRAY_QUOTE.search(self.data) is not None
+
     @cached_property
-    def record_lines(self) -> list[int]:
+    def record_lines(self) -> npt.NDArray[np.int64]:
         """Line on which every record after the header begins (blank lines hold no record)."""
-        reader = self._reader()
-        lines = []
-        before = 0
-        for record in reader:
-            if record:
-                lines.append(before + 1)
-            before = reader.line_num
-        return lines[1:]
+        data, ends = np.frombuffer(self.data, dtype=np.uint8), _line_ends(self.data)
+        quoted = np.searchsorted(np.flatnonzero(data == ord('"')), ends) % 2 == 1
+        first, last = np.append(0, ends + 1), np.append(ends, len(data))
+        length = last - first - ((last > first) & (data[last - 1] == ord("\r")))
+        begins = ~np.append(False, quoted) & (length > 0)
+        return np.flatnonzero(begins)[1:] + 1
 
     def line_of(self, row: int) -> int:
         """Line on which the record at position ``row`` begins."""
-        return self.record_lines[row]
+        return int(self.record_lines[row])
 
-    def records(self, faults: Faults) -> tuple[list[list[str]], Callable[[int], int]]:
-        """Read records one by one, noting those with a wrong number of values.
-
-        Returns
-        -------
-        records, line_of
-            The records with the right number of values, and the line of each by position.
-        """
-        reader = self._reader()
-        kept: list[list[str]] = []
-        lines: list[int] = []
-        ragged: list[tuple[int, int]] = []
+    def records(self, faults: Faults) -> Records | None:
+        """Read records one by one, noting those with a wrong number of values; None if that is not possible."""
+        reader = csv_reader(self.data)
+        records = Records()
+        wanted, found = len(self.header), []
         before = 0
         try:
             next(reader)
             before = reader.line_num
             for record in reader:
-                if len(record) == len(self.header):
-                    kept.append(record)
-                    lines.append(before + 1)
-                elif record:
-                    ragged.append((before + 1, len(record)))
+                if record:
+                    records.values.append((record + [""] * wanted)[:wanted])
+                    records.line.append(before + 1)
+                    records.ragged.append(len(record) != wanted)
+                    found.append(len(record))
                 before = reader.line_num
         except csv.Error as error:
             faults.add(self.file, before + 1, "", f"cannot be read as CSV ({error}); look for a stray quote")
-        wanted = len(self.header)
+            return None
         faults.add_rows(
             self.file,
-            range(len(ragged)),
-            lambda row: ragged[row][0],
+            [row for row, ragged in enumerate(records.ragged) if ragged],
+            records.line.__getitem__,
             "",
             lambda row: (
-                f"holds {ragged[row][1]} values where the header names {wanted} columns; "
+                f"holds {found[row]} values where the header names {wanted} columns; "
                 "add or remove values, and put a value that holds a comma in double quotes"
             ),
         )
-        return kept, lines.__getitem__
+        return records
 
-    def _reader(self) -> Any:
-        text = self.data.decode("utf-8")
-        return csv.reader(io.StringIO(text, newline=""))
+
+def csv_reader(data: bytes) -> Any:
+    """Reader of CSV text in UTF-8 that refuses quotes which do not close."""
+    return csv.reader(io.TextIOWrapper(io.BytesIO(data), encoding="utf-8", newline=""), strict=True)
 
 
 def open_csv(file: str, data: bytes, schema: TableSchema, faults: Faults) -> CsvText | None:
@@ -111,8 +125,7 @@ def open_csv(file: str, data: bytes, schema: TableSchema, faults: Faults) -> Csv
         line = _line_at(data, error.start)
         faults.add(file, line, "", f"holds the byte 0x{data[error.start]:02x}, not UTF-8; save it as UTF-8")
         return None
-    ends = np.flatnonzero(np.frombuffer(data, dtype=np.uint8) == ord("\n"))
-    edges = np.concatenate([[-1], ends, [len(data)]])
+    edges = np.concatenate([[-1], _line_ends(data), [len(data)]])
     longest = int(np.argmax(np.diff(edges)))
     if edges[longest + 1] - edges[longest] > LONGEST_LINE:
         faults.add(
@@ -123,9 +136,12 @@ def open_csv(file: str, data: bytes, schema: TableSchema, faults: Faults) -> Csv
         )
         return None
     try:
-        header = tuple(name.strip() for name in next(csv.reader(io.StringIO(data.decode("utf-8"), newline=""))))
+        header = tuple(name.strip() for name in next(csv_reader(data)))
     except csv.Error as error:
-        faults.add(file, 1, "", f"cannot be read as CSV ({error})")
+        faults.add(file, 1, "", f"cannot be read as CSV ({error}); look for a stray quote")
+        return None
+    if not header:
+        faults.add(file, 1, "", f"is blank; put the header {','.join(schema.names)} there")
         return None
     if not check_columns(file, 1, header, schema, faults):
         return None
@@ -152,4 +168,13 @@ def check_columns(file: str, line: int, header: tuple[str, ...], schema: TableSc
 
 
 def _line_at(data: bytes, position: int) -> int:
-    return data.count(b"\n", 0, position) + 1
+    return int(np.searchsorted(_line_ends(data), position)) + 1
+
+
+def _line_ends(data: bytes) -> npt.NDArray[np.int64]:
+    """Positions at which lines end: LF, or CR that no LF follows."""
+    codes = np.frombuffer(data, dtype=np.uint8)
+    feed = codes == ord("\n")
+    if b"\r" in data:
+        feed |= (codes == ord("\r")) & ~np.append(feed[1:], False)
+    return np.flatnonzero(feed)

@@ -29,6 +29,8 @@ class Fault:
         What is wrong, and what would mend it.
     warning
         True when prices can be computed all the same.
+    count
+        How many faults this one stands for; more than 1 where the rest of a kind is counted in one line.
     """
 
     file: str
@@ -36,11 +38,14 @@ class Fault:
     column: str
     problem: str
     warning: bool = False
+    count: int = 1
 
     def __str__(self) -> str:
+        """One line whatever names it quotes: what cannot be printed is escaped."""
         place = f"{self.file}:{self.line}" if self.line else self.file
         column = f"{self.column}: " if self.column else ""
-        return f"{place}: {column}{'warning: ' if self.warning else ''}{self.problem}"
+        text = f"{place}: {column}{'warning: ' if self.warning else ''}{self.problem}"
+        return "".join(sign if sign.isprintable() else repr(sign)[1:-1] for sign in text)
 
 
 @dataclass
@@ -49,9 +54,9 @@ class Faults:
 
     found: list[Fault] = field(default_factory=list)
 
-    def add(self, file: str, line: int, column: str, problem: str, *, warning: bool = False) -> None:
-        """Note one fault."""
-        self.found.append(Fault(file, line, column, problem, warning))
+    def add(self, file: str, line: int, column: str, problem: str, *, warning: bool = False, count: int = 1) -> None:
+        """Note one fault, or one that stands for several."""
+        self.found.append(Fault(file, int(line), column, problem, warning, count))
 
     def add_rows(
         self,
@@ -70,7 +75,11 @@ class Faults:
         if len(rows) > LISTED_PER_KIND:
             rest = len(rows) - LISTED_PER_KIND
             line = line_of(rows[LISTED_PER_KIND])
-            self.add(file, line, column, f"and {rest:,} more like it from here on", warning=warning)
+            self.add(file, line, column, f"and {rest:,} more like it from here on", warning=warning, count=rest)
+
+    def concern(self, table: str) -> bool:
+        """True if an error has been noted in a table, whatever its format."""
+        return any(not fault.warning and fault.file.rpartition(".")[0] == table for fault in self.found)
 
     @property
     def errors(self) -> list[Fault]:

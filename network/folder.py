@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from datetime import UTC, datetime
+from datetime import datetime, timedelta
 from pathlib import Path
 
 import numpy as np
@@ -48,8 +48,8 @@ def read_folder(folder: Path | str) -> ReadResult:
         With every fault of every table, before anything is computed.
     """
     folder = Path(folder)
-    if not folder.is_dir():
-        problem = "is a file; name the folder that holds the tables" if folder.exists() else "there is no such folder"
+    problem = _unopened(folder)
+    if problem:
         raise InputError([Fault(str(folder), 0, "", problem)])
     faults = Faults()
     settings = read_settings(folder, faults)
@@ -60,7 +60,7 @@ def read_folder(folder: Path | str) -> ReadResult:
     curves = assemble_curves(tables["booking_curves"], faults)
     products = assemble_products(tables["fares"], tables["demand"], paths, curves, settings, faults)
     faults.raise_errors()
-    if not (settings and stations and legs and paths and products and tables["legs"]):
+    if not (settings and stations and legs and paths and products and tables["legs"]) or curves is None:
         raise AssertionError("a table is absent although no fault was noted")
     network = Network(
         name=settings.name,
@@ -84,9 +84,22 @@ def read_folder(folder: Path | str) -> ReadResult:
     return ReadResult(network, tuple(faults.warnings))
 
 
+def _unopened(folder: Path) -> str:
+    """Say why a folder cannot be opened, and what would mend it; nothing if it can."""
+    try:
+        if not folder.is_dir():
+            if folder.exists():
+                return "is a file; name the folder that holds the tables"
+            return "there is no such folder; correct its name"
+        (folder / "network.toml").exists()
+    except (OSError, ValueError) as error:
+        return f"cannot be opened ({getattr(error, 'strerror', error)}); correct its name or its permissions"
+    return ""
+
+
 def _remaining(table: TableData, legs: Legs, as_of: datetime, faults: Faults) -> IntArray:
     """Seats still for sale: none where a leg is sold out or has departed by the snapshot."""
-    instant = np.datetime64(as_of.astimezone(UTC).replace(tzinfo=None), "s")
+    instant = np.datetime64(as_of.replace(tzinfo=None), "s") - np.timedelta64(as_of.utcoffset() or timedelta(), "s")
     departed = legs.departs <= instant
     faults.add_rows(
         table.file,

@@ -34,6 +34,24 @@ def _freeze(record: object) -> None:
             value.flags.writeable = False
 
 
+def _freeze_table(record: object) -> None:
+    """Make every array read-only; ValueError unless all are as long as ``name``."""
+    assert is_dataclass(record)
+    lengths = {field.name: len(getattr(record, field.name)) for field in fields(record)}
+    for label, found in lengths.items():
+        if found != lengths["name"]:
+            raise ValueError(f"{label} has length {found}, expected {lengths['name']}")
+    _freeze(record)
+
+
+def _check_positions(label: str, values: IntArray, end: int, least: int = 0) -> None:
+    """ValueError unless whole numbers from ``least`` to ``end`` - 1."""
+    if not np.issubdtype(values.dtype, np.integer):
+        raise ValueError(f"{label} must hold whole numbers, not {values.dtype}")
+    if len(values) and not (values.min() >= least and values.max() < end):
+        raise ValueError(f"{label} must lie from {least} to {end - 1}")
+
+
 @dataclass(frozen=True, eq=False)
 class Stations:
     """Stations by position: names, coordinates (degrees, NaN if unknown), connection minutes."""
@@ -45,7 +63,7 @@ class Stations:
     minimum_connection: FloatArray
 
     def __post_init__(self) -> None:
-        _freeze(self)
+        _freeze_table(self)
 
     def __len__(self) -> int:
         return len(self.name)
@@ -56,7 +74,7 @@ class Legs:
     """Legs by position.
 
     ``origin`` and ``destination`` are station positions; ``departs`` and ``arrives`` are instants in
-    UTC (minutes) with the local offset of each in ``departs_offset`` and ``arrives_offset`` (minutes);
+    UTC (seconds) with the local offset of each in ``departs_offset`` and ``arrives_offset`` (minutes);
     ``capacity`` and ``sold`` are seats.
     """
 
@@ -71,7 +89,7 @@ class Legs:
     sold: IntArray
 
     def __post_init__(self) -> None:
-        _freeze(self)
+        _freeze_table(self)
 
     def __len__(self) -> int:
         return len(self.name)
@@ -90,6 +108,9 @@ class BookingCurves:
     share: FloatArray
 
     def __post_init__(self) -> None:
+        rows = int(self.start[-1])
+        if len(self.start) != len(self.name) + 1 or len(self.days_before) != rows or len(self.share) != rows:
+            raise ValueError("names, starts and rows of the booking curves do not fit each other")
         _freeze(self)
 
     def __len__(self) -> int:
@@ -155,13 +176,18 @@ class Network:
         for label, (found, wanted) in sizes.items():
             if found != wanted:
                 raise ValueError(f"{label} has length {found}, expected {wanted}")
-        if np.any(np.diff(self.path_start) < 1):
-            raise ValueError("every itinerary needs at least one leg")
+        if self.path_start[0] != 0 or np.any(np.diff(self.path_start) < 1):
+            raise ValueError("every itinerary needs at least one leg, the first from position 0 on")
+        _check_positions("path_leg", self.path_leg, n_legs)
+        _check_positions("product_itinerary", self.product_itinerary, n_itineraries)
+        _check_positions("product_class", self.product_class, len(self.fare_classes))
+        _check_positions("curve", self.curve, len(self.curves), least=-1)
+        _check_positions("remaining", self.remaining, np.iinfo(np.int64).max)
         key = self.product_itinerary.astype(np.int64) * len(self.fare_classes) + self.product_class
         if np.any(np.diff(key) <= 0):
             raise ValueError("products must be sorted by itinerary and fare class, without duplicates")
-        if not np.all(np.isfinite(self.fare)) or np.any(self.fare < 0) or np.any(self.remaining < 0):
-            raise ValueError("fares and remaining seats must be finite and not negative")
+        if not np.all(np.isfinite(self.fare)) or np.any(self.fare < 0):
+            raise ValueError("fares must be finite and not negative")
         _freeze(self)
 
     @property
@@ -185,6 +211,11 @@ class Network:
         itinerary = np.repeat(np.arange(self.n_itineraries), np.diff(self.path_start))
         ones = np.ones(len(self.path_leg))
         return csr_array((ones, (self.path_leg, itinerary)), shape=(self.n_legs, self.n_itineraries))
+
+    @cached_property
+    def transposed(self) -> csr_array:
+        """(I, L) sparse matrix: the transpose of ``incidence``."""
+        return csr_array(self.incidence.T)
 
     @cached_property
     def product_start(self) -> IntArray:

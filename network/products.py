@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from network.faults import Faults
-from network.model import BookingCurves, FloatArray, IntArray
+from network.model import BookingCurves, FloatArray, IntArray, NameArray
 from network.reading import TableData
 from network.routes import Paths, positions
 from network.settings import NetworkSettings
@@ -28,8 +28,13 @@ class Products:
     curve: IntArray
 
 
-def assemble_curves(table: TableData | None, faults: Faults) -> BookingCurves:
-    """Booking curves in order of first mention, each by falling days; notes curves that fall or end below 1."""
+def assemble_curves(table: TableData | None, faults: Faults) -> BookingCurves | None:
+    """Booking curves in order of first mention, each by falling days; notes curves that fall or end below 1.
+
+    None if the table stands in the folder but cannot be read, as opposed to no table and so no curves.
+    """
+    if table is None and faults.concern("booking_curves"):
+        return None
     if table is None:
         nothing = np.zeros(0)
         return BookingCurves(np.zeros(0, dtype=object), np.zeros(1, dtype=np.int64), nothing, nothing)
@@ -41,10 +46,11 @@ def assemble_curves(table: TableData | None, faults: Faults) -> BookingCurves:
     order = np.lexsort((-days, code))
     order = order[code[order] >= 0]
     code, days, share = code[order], days[order], share[order]
-    falls = np.flatnonzero((code[1:] == code[:-1]) & (share[1:] < share[:-1])) + 1
+    known = ~np.isnan(days)
+    falls = (code[1:] == code[:-1]) & (share[1:] < share[:-1]) & known[1:] & known[:-1]
     faults.add_rows(
         table.file,
-        falls,
+        np.flatnonzero(falls) + 1,
         lambda row: table.line_of(int(order[row])),
         "share",
         lambda row: (
@@ -54,7 +60,8 @@ def assemble_curves(table: TableData | None, faults: Faults) -> BookingCurves:
     )
     start = np.searchsorted(code, np.arange(len(names) + 1))
     last = start[1:] - 1
-    open_end = np.flatnonzero((days[last] != 0) | (np.abs(share[last] - 1) > 1e-9))
+    faulty = np.bincount(code, weights=~known | np.isnan(share), minlength=len(names)) > 0
+    open_end = np.flatnonzero(~faulty & ((days[last] != 0) | (np.abs(share[last] - 1) > 1e-9)))
     faults.add_rows(
         table.file,
         open_end,
@@ -69,15 +76,22 @@ def assemble_products(
     fares: TableData | None,
     demand: TableData | None,
     paths: Paths | None,
-    curves: BookingCurves,
+    curves: BookingCurves | None,
     settings: NetworkSettings | None,
     faults: Faults,
 ) -> Products | None:
-    """Join fares and demand; notes unknown itineraries and curves, and demand without fare."""
-    if fares is None or paths is None:
+    """Join fares and demand; notes unknown itineraries and curves, and demand without fare.
+
+    Without readable itineraries fares and demand are still held against each other by name.
+    """
+    known_curve = _known_curves(demand, curves, faults)
+    itineraries = _itineraries(paths, fares, demand)
+    if fares is None:
+        if demand is not None:
+            _keys(demand, itineraries, (), faults)
         return None
     classes = _fare_classes(fares, settings, faults)
-    fare_key, itinerary, fare_class = _keys(fares, paths, classes, faults)
+    fare_key, itinerary, fare_class = _keys(fares, itineraries, classes, faults)
     order = np.argsort(fare_key, kind="stable")
     order = order[fare_key[order] >= 0]
     order = order[np.append(True, np.diff(fare_key[order]) > 0)] if len(order) else order
@@ -87,18 +101,7 @@ def assemble_products(
     mean, deviation = np.zeros(len(key)), np.zeros(len(key))
     curve = np.full(len(key), -1, dtype=np.int32)
     if demand is not None:
-        known_curve, unknown = positions(demand.frame["curve"], curves.name)
-        faults.add_rows(
-            demand.file,
-            np.flatnonzero(unknown),
-            demand.line_of,
-            "curve",
-            lambda row: (
-                f"{demand.frame['curve'].iloc[row]!r} is not a booking curve; "
-                "add it to booking_curves.csv or leave blank"
-            ),
-        )
-        row = _match_demand(fares, demand, paths, classes, key, order, faults)
+        row = _match_demand(fares, demand, itineraries, classes, key, order, faults)
         have = row >= 0
         mean[have] = demand.frame["mean"].to_numpy()[row[have]]
         deviation[have] = demand.frame["deviation"].to_numpy()[row[have]]
@@ -114,27 +117,57 @@ def assemble_products(
     )
 
 
+def _known_curves(demand: TableData | None, curves: BookingCurves | None, faults: Faults) -> IntArray:
+    """Position of the curve of every row of demand, -1 where there is none; notes unknown ones."""
+    if demand is None:
+        return np.zeros(0, dtype=np.int64)
+    if curves is None:
+        return np.full(len(demand), -1)
+    position, unknown = positions(demand.frame["curve"], curves.name)
+    faults.add_rows(
+        demand.file,
+        np.flatnonzero(unknown),
+        demand.line_of,
+        "curve",
+        lambda row: (
+            f"{demand.frame['curve'].iloc[row]!r} is not a booking curve; add it to booking_curves.csv or leave blank"
+        ),
+    )
+    return position
+
+
+def _itineraries(paths: Paths | None, fares: TableData | None, demand: TableData | None) -> NameArray:
+    """Names of the itineraries, or where their table cannot be read the names that products go by."""
+    if paths is not None:
+        return paths.name
+    named = [table.frame["itinerary"].dropna().to_numpy(dtype=object) for table in (fares, demand) if table is not None]
+    return np.unique(np.concatenate(named).astype(object)) if named else np.zeros(0, dtype=object)
+
+
 def _fare_classes(fares: TableData, settings: NetworkSettings | None, faults: Faults) -> tuple[str, ...]:
-    named = tuple(str(name) for name in fares.frame["fare_class"].dropna().unique())
+    classes = fares.frame["fare_class"]
+    named = tuple(str(name) for name in classes.dropna().unique())
     if settings is None or not settings.fare_classes:
         return named
-    for name in named:
-        if name not in settings.fare_classes:
-            faults.add(
-                "network.toml",
-                0,
-                "fare_classes",
-                f"lacks {name!r}, which fares.csv sells; add it in its place",
-            )
-            return named
-    return settings.fare_classes
+    lacking = [name for name in named if name not in settings.fare_classes]
+    faults.add_rows(
+        fares.file,
+        [int(np.argmax(classes == name)) for name in lacking],
+        fares.line_of,
+        "fare_class",
+        lambda row: (
+            f"{classes.iloc[row]!r} is not among the fare_classes of network.toml; "
+            "add it there in its place, or correct it"
+        ),
+    )
+    return named if lacking else settings.fare_classes
 
 
 def _keys(
-    table: TableData, paths: Paths, classes: tuple[str, ...], faults: Faults
+    table: TableData, itineraries: NameArray, classes: tuple[str, ...], faults: Faults
 ) -> tuple[IntArray, IntArray, IntArray]:
     """Key of every row of a product table (-1 where unknown), and its itinerary and class positions."""
-    itinerary, unknown = positions(table.frame["itinerary"], paths.name)
+    itinerary, unknown = positions(table.frame["itinerary"], itineraries)
     faults.add_rows(
         table.file,
         np.flatnonzero(unknown),
@@ -156,14 +189,14 @@ def _keys(
 def _match_demand(
     fares: TableData,
     demand: TableData,
-    paths: Paths,
+    itineraries: NameArray,
     classes: tuple[str, ...],
     key: IntArray,
     order: IntArray,
     faults: Faults,
 ) -> IntArray:
     """Row of demand for every product, -1 where there is none."""
-    demand_key, itinerary, _ = _keys(demand, paths, classes, faults)
+    demand_key, itinerary, _ = _keys(demand, itineraries, classes, faults)
     complete = demand.frame["fare_class"].notna().to_numpy() & (itinerary >= 0)
     place = np.searchsorted(key, demand_key)
     found = np.append(key, -2)[place] == demand_key if len(key) else np.zeros(len(demand_key), dtype=bool)

@@ -32,7 +32,7 @@ def positions(values: pd.Series, names: NameArray) -> tuple[IntArray, np.ndarray
     values
         Text by category, as read.
     names
-        Unique names by position.
+        Names by position; of equal ones the first counts.
 
     Returns
     -------
@@ -40,8 +40,10 @@ def positions(values: pd.Series, names: NameArray) -> tuple[IntArray, np.ndarray
         Position of every value, -1 where it is missing or unknown, and True where it is unknown.
     """
     codes = values.cat.codes.to_numpy().astype(np.int64)
-    of_category = pd.Index(names).get_indexer(pd.Index(values.cat.categories.to_numpy(dtype=object)))
-    position = np.append(of_category, -1)[codes]
+    index = pd.Index(names, dtype=object)
+    first = np.flatnonzero(~index.duplicated())
+    of_category = index[first].get_indexer(pd.Index(values.cat.categories.to_numpy(dtype=object)))
+    position = np.append(np.append(first, -1)[of_category], -1)[codes]
     return position, (codes >= 0) & (position < 0)
 
 
@@ -63,15 +65,19 @@ def assemble_stations(table: TableData | None, settings: NetworkSettings | None)
 
 
 def assemble_legs(table: TableData | None, stations: Stations | None, faults: Faults) -> Legs | None:
-    """Legs in file order; notes unknown stations, loops, arrivals before departure and overselling."""
-    if table is None or stations is None:
+    """Legs in file order; notes unknown stations, loops, arrivals before departure and overselling.
+
+    Without a readable table of stations the other faults are noted all the same; so it is in the functions below.
+    """
+    if table is None:
         return None
     frame = table.frame
     ends = {}
     for column in ("origin", "destination"):
-        ends[column], unknown = positions(frame[column], stations.name)
-        _note_unknown_stations(table, column, unknown, faults)
-    loop = (ends["origin"] == ends["destination"]) & (ends["origin"] >= 0)
+        ends[column], unknown = positions(frame[column], _names(stations))
+        if stations is not None:
+            _note_unknown_stations(table, column, unknown, faults)
+    loop = frame["origin"].astype("str") == frame["destination"].astype("str")
     faults.add_rows(
         table.file,
         np.flatnonzero(loop),
@@ -110,6 +116,10 @@ def assemble_legs(table: TableData | None, stations: Stations | None, faults: Fa
     )
 
 
+def _names(table: Stations | Legs | None) -> NameArray:
+    return np.zeros(0, dtype=object) if table is None else table.name
+
+
 def _note_unknown_stations(table: TableData, column: str, unknown: np.ndarray, faults: Faults) -> None:
     values = table.frame[column]
     faults.add_rows(
@@ -125,24 +135,26 @@ def assemble_paths(
     table: TableData | None, legs: Legs | None, stations: Stations | None, faults: Faults
 ) -> Paths | None:
     """Itineraries in file order; notes unknown or repeated legs, and legs that do not connect."""
-    if table is None or legs is None or stations is None:
+    if table is None:
         return None
     text = table.frame["legs"].astype("str").fillna("")
     split = [value.split() for value in text.tolist()]
     length = np.array([len(names) for names in split], dtype=np.int64)
     start = np.concatenate([[0], np.cumsum(length)])
     flat = pd.Series([name for names in split for name in names], dtype="category")
-    leg, unknown = positions(flat, legs.name)
+    leg, unknown = positions(flat, _names(legs))
     owner = np.repeat(np.arange(len(split)), length)
     names = flat.to_numpy(dtype=object)
-    faults.add_rows(
-        table.file,
-        np.flatnonzero(unknown),
-        lambda at: table.line_of(int(owner[at])),
-        "legs",
-        lambda at: f"{names[at]!r} is not a leg; add it to legs.csv or correct the name",
-    )
-    _check_connections(table, legs, stations, leg, owner, faults)
+    if legs is not None:
+        faults.add_rows(
+            table.file,
+            np.flatnonzero(unknown),
+            lambda at: table.line_of(int(owner[at])),
+            "legs",
+            lambda at: f"{names[at]!r} is not a leg; add it to legs.csv or correct the name",
+        )
+    if legs is not None and stations is not None:
+        _check_connections(table, legs, stations, leg, owner, faults)
     return Paths(table.frame["itinerary"].to_numpy(dtype=object), start, leg.astype(np.int32))
 
 
@@ -182,7 +194,7 @@ def _check_connections(
         line,
         "legs",
         lambda row: (
-            f"{minutes[row]:.0f} minutes between {legs.name[first[row]]} and {legs.name[second[row]]}, but "
-            f"{station(legs.destination[first[row]])} needs {needed[row]:.0f}; drop the itinerary or correct the times"
+            f"{minutes[row]:.6g} minutes between {legs.name[first[row]]} and {legs.name[second[row]]}, but "
+            f"{station(legs.destination[first[row]])} needs {needed[row]:.6g}; drop the itinerary or correct the times"
         ),
     )
