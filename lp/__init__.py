@@ -8,7 +8,7 @@ from lp.problem import SeatProgram
 from lp.solution import LpOptions, Method, Solution
 from lp.solve import Optimum, optimise, solve
 from lp.solvers import SOLVERS, SolverOptions, solver_version
-from lp.values import SeatValues
+from lp.values import SeatValue, SeatValues
 
 __all__ = [
     "SOLVERS",
@@ -19,6 +19,7 @@ __all__ = [
     "Optimum",
     "SeatColumns",
     "SeatProgram",
+    "SeatValue",
     "SeatValues",
     "Solution",
     "SolverOptions",

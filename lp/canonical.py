@@ -32,6 +32,7 @@ import numpy as np
 from scipy.optimize import linprog
 from scipy.sparse import csr_array, vstack
 
+from lp.implied import implied_bounds, path_upper
 from lp.least_squares import least_norm
 from lp.problem import SeatProgram
 from network.errors import SolverStoppedError
@@ -46,9 +47,6 @@ MONEY = 1000.0
 """The scale of money inside this module, so that absolute tolerances mean the same in every currency."""
 
 ACTIVE = 1e-9
-TIGHTENING = 12
-IMPLIED = 1e-5
-"""Room left around implied bounds: more than the solver's tolerance, so that only given limits ever hold a price."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -116,8 +114,7 @@ def optimal_duals(program: SeatProgram, seats: FloatArray) -> OptimalDuals:
     np.minimum.at(upper, of_leg, high[single])
     several = np.flatnonzero((count > 1) & ((low > 0) | np.isfinite(high)))
     rows, low, high = _merged(csr_array(paths[several]), low[several], high[several])
-    duals = OptimalDuals(legs, lower, np.maximum(upper, lower), rows, low, high, scale)
-    return _tightened(duals)
+    return _without_idle_rows(OptimalDuals(legs, lower, np.maximum(upper, lower), rows, low, high, scale))
 
 
 def _path_limits(program: SeatProgram, seats: FloatArray) -> tuple[FloatArray, FloatArray]:
@@ -154,34 +151,16 @@ def _merged(rows: csr_array, low: FloatArray, high: FloatArray) -> tuple[csr_arr
     return csr_array(rows[first]), merged_low, np.maximum(merged_high, merged_low)
 
 
-def _tightened(duals: OptimalDuals) -> OptimalDuals:
-    """Draw the bounds in by what the rows imply, and drop the rows that then say nothing more."""
-    rows, lower, upper = duals.rows, duals.lower.copy(), duals.upper.copy()
-    count = np.diff(rows.indptr)
-    row_of = np.repeat(np.arange(rows.shape[0]), count)
-    for _ in range(TIGHTENING):
-        others_low = (rows @ lower)[row_of] - lower[rows.indices]
-        with np.errstate(invalid="ignore"):
-            others_high = np.where(np.isfinite(upper), upper, 0.0)
-            unbounded = rows @ np.isinf(upper).astype(np.float64)
-            free_others = unbounded[row_of] - np.isinf(upper)[rows.indices] > 0
-            others_high = (rows @ others_high)[row_of] - others_high[rows.indices]
-        implied_low = np.where(free_others, 0.0, duals.low[row_of] - others_high)
-        implied_high = duals.high[row_of] - others_low
-        before = lower.copy(), upper.copy()
-        np.maximum.at(lower, rows.indices, implied_low - IMPLIED)
-        np.minimum.at(upper, rows.indices, implied_high + IMPLIED)
-        upper = np.maximum(upper, lower)
-        if np.array_equal(before[0], lower) and np.array_equal(before[1], upper):
-            break
-    speaks = (duals.low > rows @ lower) | (duals.high < _path_upper(rows, upper))
+def _without_idle_rows(duals: OptimalDuals) -> OptimalDuals:
+    """Drop the rows that say nothing beyond what the bounds and the other rows imply.
+
+    The implied bounds keep a little room, so that a row is never dropped for what it implies itself.
+    """
+    rows, limits = duals.rows, (duals.low, duals.high)
+    lower, upper = implied_bounds(rows, limits, (duals.lower, duals.upper), ACTIVE)
+    speaks = (duals.low > rows @ lower) | (duals.high < path_upper(rows, np.maximum(upper, lower)))
     kept = np.flatnonzero(speaks)
-    return replace(duals, rows=csr_array(rows[kept]), low=duals.low[kept], high=duals.high[kept], upper=upper)
-
-
-def _path_upper(rows: csr_array, upper: FloatArray) -> FloatArray:
-    finite = rows @ np.where(np.isfinite(upper), upper, 0.0)
-    return np.where(rows @ np.isinf(upper).astype(np.float64) > 0, np.inf, finite)
+    return replace(duals, rows=csr_array(rows[kept]), low=duals.low[kept], high=duals.high[kept])
 
 
 def _extreme_face(duals: OptimalDuals, weight: FloatArray) -> OptimalDuals:

@@ -82,6 +82,11 @@ class SeatColumns:
         """Seats of the columns of every itinerary before the positions ``end``, (I,)."""
         return np.asarray(self.running[end, 0] - self.running_start[:, 0])
 
+    def expected_sales(self, seats: FloatArray, fare: FloatArray) -> FloatArray:
+        """Passengers expected of every product, (J,), within the seats that each column, (K,), sets aside."""
+        revenue = np.bincount(self.product, weights=self.value * seats, minlength=len(fare))
+        return np.divide(revenue, fare, out=np.zeros(len(fare)), where=fare > 0)
+
     def count_above(self, threshold: FloatArray, near: IntArray | None = None) -> IntArray:
         """Return where the columns worth more than a threshold, (I,), end in every itinerary.
 

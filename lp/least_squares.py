@@ -11,13 +11,26 @@ import numpy as np
 from scipy.sparse import csc_array, csr_array, eye_array, vstack
 from scipy.sparse.linalg import lsmr
 
+from lp.implied import implied_bounds
 from network.errors import SolverStoppedError
 from network.model import FloatArray
 
 __all__ = ["least_norm"]
 
-EQUAL = 1e-9
-HELD = 1e-6
+EQUAL = 1e-6
+"""Limits at most this far apart settle what lies between them: an interior point method needs an interior."""
+
+ROOM = 1e-7
+"""Room given to every limit, as a share of the greatest, where rounding has left no point inside them all."""
+
+CLEARLY = 1e3
+"""Ratio of multiplier to slack from which on a row is taken to hold the point."""
+
+BROKEN = 1e-7
+CORRECTIONS = 10
+
+Interior = tuple[FloatArray, FloatArray, FloatArray]
+"""A point, and slack and multiplier of every row."""
 
 
 def least_norm(rows: csr_array, low: FloatArray, high: FloatArray, lower: FloatArray, upper: FloatArray) -> FloatArray:
@@ -26,7 +39,7 @@ def least_norm(rows: csr_array, low: FloatArray, high: FloatArray, lower: FloatA
     Parameters
     ----------
     rows
-        (R, F) matrix.
+        (R, F) matrix of zeros and ones.
     low, high
         (R,) limits; equal limits make an equation, infinite ones none.
     lower, upper
@@ -43,9 +56,10 @@ def least_norm(rows: csr_array, low: FloatArray, high: FloatArray, lower: FloatA
         If the polyhedron is empty or the solver fails.
     """
     size = len(lower)
-    fixed = upper - lower <= EQUAL
-    point = np.where(fixed, lower, 0.0)
-    free = np.flatnonzero(~fixed)
+    least, most = implied_bounds(csr_array(rows), (low, high), (lower, upper))
+    settled = most - least <= EQUAL
+    point = np.where(settled, np.clip(0.5 * (least + most), lower, upper), 0.0)
+    free = np.flatnonzero(~settled)
     if len(free) == 0:
         return point
     matrix = vstack([csr_array(rows), eye_array(size, format="csr")], format="csr")
@@ -58,19 +72,51 @@ def least_norm(rows: csr_array, low: FloatArray, high: FloatArray, lower: FloatA
     equal = above - below <= EQUAL
     floor = ~equal & np.isfinite(below)
     ceiling = ~equal & np.isfinite(above)
-    stacked = vstack([matrix[equal], -matrix[floor], matrix[ceiling]], format="csc")
+    stacked = vstack([matrix[equal], -matrix[floor], matrix[ceiling]], format="csr")
     limit = np.concatenate([0.5 * (below + above)[equal], -below[floor], above[ceiling]])
-    inside, multiplier = _clarabel(csc_array(stacked), limit, int(equal.sum()))
-    held = np.abs(multiplier) > HELD
-    held[: int(equal.sum())] = True
-    rows_held = csr_array(stacked)[held]
-    sharp = lsmr(rows_held, limit[held], atol=1e-15, btol=1e-15, conlim=0, maxiter=50 * len(free) + 200)[0]
-    keeps = np.all(stacked @ sharp <= limit + 1e-7) and np.abs(sharp - inside).max() <= 1e-4
-    point[free] = sharp if keeps else inside
+    point[free] = _sharpened(csr_array(stacked), limit, int(equal.sum()))
     return point
 
 
-def _clarabel(matrix: csc_array, limit: FloatArray, equations: int) -> tuple[FloatArray, FloatArray]:
+def _sharpened(matrix: csr_array, limit: FloatArray, equations: int) -> FloatArray:
+    """Least-norm point of ``matrix @ p <= limit``, the first rows equations.
+
+    An interior point is right to half its digits. The shortest point on the rows that hold it has all of
+    them, and it is the answer if it meets the other rows and is no longer than the interior point.
+    """
+    size = float(np.abs(limit).max(initial=0.0)) or 1.0
+    (inside, slack, multiplier), room = _interior(matrix, limit / size, equations)
+    inside, slack, multiplier, room = inside * size, slack * size, multiplier * size, room * size
+    equation = np.arange(len(limit)) < equations
+    held, sharp, broken = equation | (multiplier > CLEARLY * slack), inside, equation
+    for _ in range(CORRECTIONS):
+        steps = 50 * matrix.shape[1] + 200
+        sharp = lsmr(matrix[held], limit[held], atol=1e-15, btol=1e-15, conlim=0, maxiter=steps)[0]
+        excess = matrix @ sharp - limit
+        broken = np.where(equation, np.abs(excess), excess) > BROKEN
+        if not np.any(broken & ~held):
+            break
+        held |= broken
+    # By duality, room around the limits shortens the point by at most so much.
+    shortened = BROKEN * (1 + inside @ inside) + 2 * room * np.abs(multiplier).sum()
+    longer = sharp @ sharp - inside @ inside > shortened
+    return inside if longer or broken.any() else sharp
+
+
+def _interior(matrix: csr_array, limit: FloatArray, equations: int) -> tuple[Interior, float]:
+    """Solve to about half the digits; where limits contradict each other by rounding, with room around them."""
+    found, status = _clarabel(csc_array(matrix), limit, equations)
+    if found is not None:
+        return found, 0.0
+    both = csc_array(vstack([matrix, -matrix[:equations]]))
+    found, _ = _clarabel(both, np.concatenate([limit, -limit[:equations]]) + ROOM, 0)
+    if found is None:
+        raise SolverStoppedError(f"the choice among optimal prices failed ({status}); try the other solver")
+    point, slack, multiplier = found
+    return (point, slack[: len(limit)], multiplier[: len(limit)]), ROOM
+
+
+def _clarabel(matrix: csc_array, limit: FloatArray, equations: int) -> tuple[Interior | None, str]:
     settings = clarabel.DefaultSettings()
     settings.verbose = False
     settings.max_threads = 1
@@ -85,5 +131,5 @@ def _clarabel(matrix: csc_array, limit: FloatArray, equations: int) -> tuple[Flo
     solver = clarabel.DefaultSolver(quadratic, np.zeros(size), matrix, limit, cones, settings)
     solution = solver.solve()
     if str(solution.status) not in ("Solved", "AlmostSolved"):
-        raise SolverStoppedError(f"the choice among optimal prices failed ({solution.status}); try the other solver")
-    return np.array(solution.x), np.array(solution.z)
+        return None, str(solution.status)
+    return (np.array(solution.x), np.array(solution.s), np.array(solution.z)), str(solution.status)

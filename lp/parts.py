@@ -28,7 +28,7 @@ class NetworkSolution:
         Sums over the components, currency.
     bid_price, next_seat, expected_sales
         (L,) as in `Solution`.
-    allotted
+    allotted, sales
         (J,) as in `Solution`.
     """
 
@@ -39,6 +39,7 @@ class NetworkSolution:
     next_seat: FloatArray
     expected_sales: FloatArray
     allotted: FloatArray
+    sales: FloatArray
 
 
 def solve_network(
@@ -83,12 +84,13 @@ def solve_network(
         if progress is not None:
             progress(piece)
     bid_price, next_seat, expected = (np.zeros(network.n_legs) for _ in range(3))
-    allotted = np.zeros(network.n_products)
+    allotted, sales = (np.zeros(network.n_products) for _ in range(2))
     for piece, solution in zip(pieces, solutions, strict=True):
         bid_price[piece.legs] = solution.bid_price
         next_seat[piece.legs] = solution.next_seat
         expected[piece.legs] = solution.expected_sales
         allotted[piece.products] = solution.allotted
+        sales[piece.products] = solution.sales
     return NetworkSolution(
         parts=tuple(zip(pieces, solutions, strict=True)),
         objective=sum(solution.objective for solution in solutions),
@@ -97,4 +99,5 @@ def solve_network(
         next_seat=next_seat,
         expected_sales=expected,
         allotted=allotted,
+        sales=sales,
     )

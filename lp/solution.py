@@ -48,10 +48,13 @@ class LpOptions:
     whole: bool = False
 
     def __post_init__(self) -> None:
+        if self.method not in list(Method):
+            raise SettingError(f"unknown method {self.method!r}; choose {', '.join(Method)}")
+        object.__setattr__(self, "method", Method(self.method))
         if not 0 < self.tail < 1:
             raise SettingError(f"tail {self.tail} is not a probability between 0 and 1")
-        if self.samples < 1:
-            raise SettingError(f"{self.samples} samples are too few; take at least 1")
+        if self.samples < 2:
+            raise SettingError(f"{self.samples} samples are too few to tell an error from; take at least 2")
 
 
 @dataclass(frozen=True, eq=False)
@@ -71,8 +74,10 @@ class Solution:
         (L,) value of the last and of the next seat, currency. On a leg without seats both are that of the next.
     allotted
         (J,) seats that the optimum sets aside for every product.
+    sales
+        (J,) passengers expected of every product within the seats set aside for it.
     expected_sales
-        (L,) passengers expected on every leg if the allotment were kept.
+        (L,) the same by leg.
     certificate
         That of the optimum with its last-seat prices; of the worst sample of the randomised program.
     columns, opened, rounds
@@ -89,6 +94,7 @@ class Solution:
     bid_price: FloatArray
     next_seat: FloatArray
     allotted: FloatArray
+    sales: FloatArray
     expected_sales: FloatArray
     certificate: Certificate
     columns: int

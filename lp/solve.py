@@ -92,7 +92,17 @@ def solve(
 def optimise(
     program: SeatProgram, options: LpOptions, start: FloatArray | None = None, phase: Phase = _unheard
 ) -> Optimum:
-    """Solve one program exactly and choose its canonical prices; certify it before you use it."""
+    """Solve one program exactly and choose its canonical prices; certify it before you use it.
+
+    Raises
+    ------
+    ValueError
+        If ``start`` is not one finite price per leg.
+    SolveError
+        If the solver is missing or stops without an optimum.
+    """
+    if start is not None and (start.shape != program.capacity.shape or not np.isfinite(start).all()):
+        raise ValueError(f"expected a finite price to start from for each of {len(program.capacity)} legs")
     if len(program.columns) == 0:
         nothing = np.zeros(len(program.capacity))
         return Optimum(np.zeros(0), nothing, nothing, 0, 0)
@@ -115,8 +125,7 @@ def _solve_columns(
     certificate.require()
     certify(program, optimum.seats, optimum.next_seat).require()
     phase("certify")
-    revenue = np.bincount(columns.product, weights=columns.value * optimum.seats, minlength=network.n_products)
-    passengers = np.divide(revenue, network.fare, out=np.zeros_like(revenue), where=network.fare > 0)
+    passengers = columns.expected_sales(optimum.seats, network.fare)
     return Solution(
         method=options.method,
         solver=solver_version(options.solver.name),
@@ -126,6 +135,7 @@ def _solve_columns(
         bid_price=np.where(network.remaining > 0, optimum.last_seat, optimum.next_seat),
         next_seat=optimum.next_seat,
         allotted=columns.sales(optimum.seats, network.n_products),
+        sales=passengers,
         expected_sales=network.leg_load(passengers),
         certificate=certificate,
         columns=len(columns),
@@ -154,6 +164,7 @@ def _solve_samples(network: Network, options: LpOptions, start: FloatArray | Non
         bid_price=np.mean([solution.bid_price for solution in solutions], axis=0),
         next_seat=np.mean([solution.next_seat for solution in solutions], axis=0),
         allotted=np.mean([solution.allotted for solution in solutions], axis=0),
+        sales=np.mean([solution.sales for solution in solutions], axis=0),
         expected_sales=np.mean([solution.expected_sales for solution in solutions], axis=0),
         columns=sum(solution.columns for solution in solutions),
         opened=max(solution.opened for solution in solutions),

@@ -77,7 +77,7 @@ def solve_open(program: OpenProgram, options: SolverOptions) -> tuple[FloatArray
     scale = VALUE_SCALE / greatest
     problem = pulp.LpProblem("seats", pulp.LpMinimize)
     ends = [width if width < np.inf else None for width in program.width.tolist()]
-    variables = [pulp.LpVariable(f"x{position}", 0.0, end) for position, end in enumerate(ends)]
+    variables = [problem.add_variable(f"x{position}", 0.0, end) for position, end in enumerate(ends)]
     cost = (-scale * program.value).tolist()
     problem += pulp.LpAffineExpression(list(zip(variables, cost, strict=True)))
     members: list[list[tuple[pulp.LpVariable, int]]] = [[] for _ in range(len(program.capacity))]
@@ -107,7 +107,9 @@ def solver_version(name: SolverName) -> str:
 def _factories() -> dict[str, Callable[[float | None], pulp.LpSolver]]:
     tight = ["primalTolerance 1e-9", "dualTolerance 1e-9"]
     return {
-        "cbc": lambda limit: pulp.PULP_CBC_CMD(msg=False, timeLimit=limit, options=tight),
+        "cbc": lambda limit: pulp.COIN_CMD(
+            path=pulp.PULP_CBC_CMD.pulp_cbc_path, msg=False, timeLimit=limit, options=tight
+        ),
         "highs": lambda limit: pulp.HiGHS(
             msg=False, timeLimit=limit, primal_feasibility_tolerance=1e-9, dual_feasibility_tolerance=1e-9
         ),
@@ -120,14 +122,11 @@ def _run(problem: pulp.LpProblem, options: SolverOptions) -> None:
         raise SolverMissingError(f"solver {options.name} cannot be started; install it or choose another")
     try:
         status = problem.solve(solver)
-    except (pulp.PulpSolverError, OSError) as error:
-        raise SolverStoppedError(
-            f"{options.name} failed: {str(error).splitlines()[0]}; try the other solver"
-        ) from error
+    except Exception as error:  # of any kind: adapters parse what a dying solver leaves behind
+        what = (str(error).splitlines() or [""])[0] or type(error).__name__
+        raise SolverStoppedError(f"{options.name} failed: {what}; try the other solver") from error
     if status != pulp.LpStatusOptimal or problem.sol_status != pulp.LpSolutionOptimal:
         limit = f" (the time limit was {options.time_limit:g} s)" if options.time_limit else ""
-        word = pulp.LpSolution.get(problem.sol_status, str(problem.sol_status)).lower()
-        raise SolverStoppedError(
-            f"{options.name} ended as {pulp.LpStatus[status].lower()} ({word}), not with an optimum{limit}; "
-            "allow more time or try the other solver"
-        )
+        early = status == pulp.LpStatusOptimal
+        what = "stopped before it had proved an optimum" if early else f"ended as {pulp.LpStatus[status].lower()}"
+        raise SolverStoppedError(f"{options.name} {what}{limit}; allow more time or try the other solver")

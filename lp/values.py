@@ -10,6 +10,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
+import numpy.typing as npt
 
 from lp.certificate import Certificate, certify
 from lp.columns import SeatColumns, deterministic_columns, probabilistic_columns
@@ -19,12 +20,31 @@ from lp.smoothing import smoothed_prices
 from lp.solution import LpOptions, Method
 from lp.solvers import SolverOptions
 from network import Network
-from network.model import FloatArray, IntArray
+from network.model import FloatArray
 
-__all__ = ["SeatValues"]
+__all__ = ["SeatValue", "SeatValues"]
 
 FENCE = 4.0
 """Distance of the first fences from the present prices, in windows of the last smoothing."""
+
+
+@dataclass(frozen=True, eq=False)
+class SeatValue:
+    """A certified optimum at some number of seats.
+
+    Attributes
+    ----------
+    value
+        V, currency.
+    sales
+        (J,) passengers expected of every product within the seats that the optimum sets aside for it.
+    certificate
+        Proof of the optimum.
+    """
+
+    value: float
+    sales: FloatArray
+    certificate: Certificate
 
 
 @dataclass(frozen=True, eq=False)
@@ -40,7 +60,7 @@ class SeatValues:
     prices, fence
         (L,) approximate bid prices at the present seats, and the distance of the fences around them, currency.
     present
-        Certificate of the present optimum; its ``primal`` is V(c).
+        The present optimum.
     solver
         The solver.
     """
@@ -48,7 +68,7 @@ class SeatValues:
     program: SeatProgram
     prices: FloatArray
     fence: float
-    present: Certificate
+    present: SeatValue
     solver: SolverOptions
 
     @classmethod
@@ -76,11 +96,11 @@ class SeatValues:
         prices, window = np.zeros(len(program.capacity)), 1.0
         if len(program.columns):
             prices, window = smoothed_prices(program, start)
-        present = _certified_value(program, prices, FENCE * window, options.solver)
+        present = _optimum(program, prices, FENCE * window, options.solver)
         return cls(program, prices, FENCE * window, present, options.solver)
 
-    def at(self, remaining: IntArray) -> Certificate:
-        """V at other remaining seats, (L,), as a certificate whose ``primal`` it is.
+    def at(self, remaining: npt.ArrayLike) -> SeatValue:
+        """Optimum at other remaining seats, (L,).
 
         Raises
         ------
@@ -93,10 +113,13 @@ class SeatValues:
         if remaining.shape != self.program.capacity.shape or np.any(remaining < 0):
             raise ValueError("expected remaining seats, not negative, for every leg")
         program = self.program.with_capacity(remaining.astype(np.float64))
-        return _certified_value(program, self.prices, self.fence, self.solver)
+        return _optimum(program, self.prices, self.fence, self.solver)
 
-    def displacement(self, itinerary: int, party: int) -> float:
-        """Exact displacement of a party on the path of an itinerary, V(c) - V(c - n a), currency.
+    def without_party(self, itinerary: int, party: int) -> SeatValue:
+        """Optimum for everybody else once a party has its seats on the path of an itinerary.
+
+        What the party displaces is V(c) - V(c - n a): ``present.value`` less the value returned; whom it
+        displaces is told by the difference of their ``sales``.
 
         Raises
         ------
@@ -109,7 +132,11 @@ class SeatValues:
         if party < 1 or np.any(remaining[path] < party):
             raise ValueError(f"a party of {party} does not fit into the seats left on the path")
         remaining[path] -= party
-        return self.present.primal - self.at(remaining).primal
+        return self.at(remaining)
+
+    def displacement(self, itinerary: int, party: int) -> float:
+        """Exact displacement of a party on the path of an itinerary, V(c) - V(c - n a), currency."""
+        return self.present.value - self.without_party(itinerary, party).value
 
     def change(self, leg: int, seats: int) -> float:
         """What more seats on one leg earn, or fewer, V(c + n e_l) - V(c), currency.
@@ -121,7 +148,7 @@ class SeatValues:
         """
         remaining = self.program.capacity.copy()
         remaining[leg] += seats
-        return self.at(remaining).primal - self.present.primal
+        return self.at(remaining).value - self.present.value
 
 
 def _columns(network: Network, options: LpOptions) -> SeatColumns:
@@ -132,11 +159,12 @@ def _columns(network: Network, options: LpOptions) -> SeatColumns:
     return probabilistic_columns(network, options.tail, any_seats=True)
 
 
-def _certified_value(program: SeatProgram, prices: FloatArray, fence: float, solver: SolverOptions) -> Certificate:
-    seats, found = np.zeros(len(program.columns)), np.zeros(len(program.capacity))
-    if len(program.columns):
+def _optimum(program: SeatProgram, prices: FloatArray, fence: float, solver: SolverOptions) -> SeatValue:
+    columns, network = program.columns, program.network
+    seats, found = np.zeros(len(columns)), np.zeros(len(program.capacity))
+    if len(columns):
         optimum = solve_priced_out(program, prices, fence, solver)
         seats, found = optimum.seats, optimum.prices
     certificate = certify(program, seats, found)
     certificate.require()
-    return certificate
+    return SeatValue(certificate.primal, columns.expected_sales(seats, network.fare), certificate)
