@@ -69,16 +69,18 @@ def whole_prices(network: Network, solutions: list[Solution]) -> NetworkSolution
     """Put the solutions of the components together."""
     pieces = components(network)
     per_leg = {name: np.zeros(network.n_legs) for name in ("bid_price", "next_seat", "expected_sales")}
-    allotted = np.zeros(network.n_products)
+    allotted, sales = np.zeros(network.n_products), np.zeros(network.n_products)
     for piece, solution in zip(pieces, solutions, strict=True):
         for name, values in per_leg.items():
             values[piece.legs] = getattr(solution, name)
         allotted[piece.products] = solution.allotted
+        sales[piece.products] = solution.sales
     return NetworkSolution(
         parts=tuple(zip(pieces, solutions, strict=True)),
         objective=sum(solution.objective for solution in solutions),
         bound=sum(solution.bound for solution in solutions),
         allotted=allotted,
+        sales=sales,
         **per_leg,
     )
 

@@ -10,15 +10,17 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.patches import Patch
 
+from legworth.connection import ConnectionStudy
 from legworth.pricing import PricedNetwork
 from legworth.report import largest_disagreements
-from network import SettingError
+from network import Network, SettingError
 
-__all__ = ["draw_comparison"]
+__all__ = ["draw_comparison", "draw_parties"]
 
 NETWORK_SELLS = "#0b6e6e"
 LEG_SELLS = "#c8641e"
 QUIET = "#6b7280"
+MOST_PANELS = 12
 
 
 def draw_comparison(priced: PricedNetwork, path: Path, top: int) -> None:
@@ -36,11 +38,43 @@ def draw_comparison(priced: PricedNetwork, path: Path, top: int) -> None:
         _draw_disagreements(money, priced, top)
         title = f"{priced.network.name}: {priced.summary['method']} bid prices against leg-level control"
         figure.suptitle(title, fontweight="bold")
-        try:
-            path.parent.mkdir(parents=True, exist_ok=True)
-            figure.savefig(path, dpi=130, format="png")
-        except OSError as error:
-            raise SettingError(f"cannot write {path} ({error.strerror}); name another file with --picture") from error
+        _save(figure, path)
+
+
+def draw_parties(network: Network, studies: list[ConnectionStudy], path: Path) -> None:
+    """Draw what a party displaces by its size, exactly and by bid prices, one panel an itinerary, into a PNG file.
+
+    Raises
+    ------
+    SettingError
+        If there is nothing to draw or the file cannot be written.
+    """
+    shown = [study for study in studies if study.parties][:MOST_PANELS]
+    if not shown:
+        raise SettingError("no party fits into the seats left, so there is nothing to draw; leave --picture out")
+    columns = min(len(shown), 3)
+    rows = -(-len(shown) // columns)
+    with mpl.rc_context({"font.size": 9, "axes.spines.top": False, "axes.spines.right": False}):
+        figure = Figure(figsize=(5 * columns, 3.6 * rows), layout="constrained")
+        for axes, study in zip(np.ravel(figure.subplots(rows, columns, squeeze=False)), shown, strict=False):
+            size = [line.seats for line in study.parties]
+            axes.plot(size, [line.least_fare for line in study.parties], color=NETWORK_SELLS, marker="o", markersize=3)
+            bid_price = [line.by_bid_price / line.seats for line in study.parties]
+            axes.plot(size, bid_price, color=LEG_SELLS, linestyle="--")
+            axes.set(ylim=(0, None), title=study.itinerary, xlabel="passengers in the party")
+            axes.set_ylabel(f"least fare for one passenger, {network.currency}")
+            axes.legend(["exact displacement", "sum of bid prices"], loc="lower right", frameon=False)
+        for axes in np.ravel(figure.axes)[len(shown) :]:
+            axes.set_axis_off()
+        _save(figure, path)
+
+
+def _save(figure: Figure, path: Path) -> None:
+    try:
+        path.parent.mkdir(parents=True, exist_ok=True)
+        figure.savefig(path, dpi=130, format="png")
+    except OSError as error:
+        raise SettingError(f"cannot write {path} ({error.strerror}); name another file with --picture") from error
 
 
 def _draw_legs(axes: Axes, priced: PricedNetwork) -> None:

@@ -15,6 +15,7 @@ import pandas as pd
 from heuristics import LegControl
 from legworth import __version__
 from legworth.control import ControlComparison, compare_controls
+from legworth.curves import CurveMethod, curves_table, network_curves
 from legworth.results import result_tables
 from lp import LpOptions, Method, NetworkSolution, Solution, solve, solve_network
 from network import Component, Fault, Network, read_folder
@@ -25,10 +26,11 @@ __all__ = ["PricedNetwork", "PricingOptions", "price_folder"]
 
 @dataclass(frozen=True)
 class PricingOptions:
-    """How a folder is priced: the linear program, leg control, and components side by side."""
+    """How a folder is priced: the linear program, leg control, price curves, and components side by side."""
 
     lp: LpOptions = field(default_factory=LpOptions)
     legs: LegControl = field(default_factory=LegControl)
+    curves: CurveMethod | None = None
     jobs: int = 1
 
 
@@ -107,14 +109,20 @@ def price_folder(
 
     solution = solve_network(network, options.lp, jobs=options.jobs, progress=count, solve_part=timed_solve)
     watch.lap("bid_prices")
-    bound = _revenue_bound(network, options, solution)
+    bounding = _bounding(network, options, solution)
     watch.lap("revenue_bound")
     controls = compare_controls(network, solution.bid_price, options.legs)
     watch.lap("leg_control")
     tables = result_tables(network, solution, controls)
     watch.lap("tables")
-    summary = _summary(network, options, solution, controls, bound) | {"seconds": watch.seconds}
-    summary["warnings"] = len(warnings)
+    bounds = {"dual": solution.bound, "revenue": bounding.objective}
+    if options.curves is not None:
+        curves = network_curves(network, bounding.bid_price, options.curves, jobs=options.jobs)
+        tables["price_curves"] = curves_table(network, curves)
+        bounds |= curves.bounds
+        watch.lap("price_curves")
+    summary = _summary(network, options, solution, controls)
+    summary |= {"bounds": bounds, "warnings": len(warnings), "seconds": watch.seconds}
     return PricedNetwork(network, warnings, solution, controls, tables, summary)
 
 
@@ -125,20 +133,16 @@ def timed_solve(network: Network, options: LpOptions, start: FloatArray | None) 
     return replace(solution, seconds=watch.seconds)
 
 
-def _revenue_bound(network: Network, options: PricingOptions, solution: NetworkSolution) -> float:
-    """Optimum of the deterministic program, which no control can beat on average."""
+def _bounding(network: Network, options: PricingOptions, solution: NetworkSolution) -> NetworkSolution:
+    """Solve the deterministic program, whose optimum no control can beat on average."""
     if options.lp.method is Method.DETERMINISTIC:
-        return solution.objective
+        return solution
     exact = replace(options.lp, method=Method.DETERMINISTIC)
-    return solve_network(network, exact, start=solution.bid_price, jobs=options.jobs).objective
+    return solve_network(network, exact, start=solution.bid_price, jobs=options.jobs)
 
 
 def _summary(
-    network: Network,
-    options: PricingOptions,
-    solution: NetworkSolution,
-    controls: ControlComparison,
-    revenue_bound: float,
+    network: Network, options: PricingOptions, solution: NetworkSolution, controls: ControlComparison
 ) -> dict[str, Any]:
     connections = controls.connections
     return {
@@ -147,7 +151,7 @@ def _summary(
         "as_of": network.as_of.isoformat(),
         "method": str(options.lp.method),
         "objective": solution.objective,
-        "bounds": {"dual": solution.bound, "revenue": revenue_bound},
+        "bounds": {},
         "certified": all(part.certificate.holds for _, part in solution.parts),
         "sizes": _sizes(network),
         "legs_with_price": int((solution.bid_price > 0).sum()),
@@ -164,6 +168,7 @@ def _summary(
             "seed": options.lp.seed if options.lp.method is Method.RANDOMISED else None,
             "leg_control_family": options.legs.family,
             "virtual_classes": options.legs.virtual_classes,
+            "price_curves": options.curves,
         },
         "versions": {
             "legworth": __version__,

@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 from rich.console import Console
 from rich.table import Table
+from rich.text import Text
 
 from legworth.pricing import PricedNetwork
 from network import Fault, Network
@@ -16,7 +17,10 @@ from network import Fault, Network
 __all__ = [
     "CAUTION",
     "comparison_as_json",
+    "console_for_output",
     "faults_as_json",
+    "money",
+    "price_text",
     "print_check",
     "print_comparison",
     "print_prices",
@@ -36,7 +40,15 @@ WORDS = {"network_only": "network sells, leg control refuses", "leg_only": "leg 
 def faults_as_json(faults: Iterable[Fault]) -> list[dict[str, Any]]:
     """Faults as plain records."""
     return [
-        {"file": f.file, "line": f.line, "column": f.column, "problem": f.problem, "warning": f.warning} for f in faults
+        {
+            "file": f.file,
+            "line": f.line,
+            "column": f.column,
+            "problem": f.problem,
+            "warning": f.warning,
+            "count": f.count,
+        }
+        for f in faults
     ]
 
 
@@ -58,26 +70,27 @@ def sizes(network: Network, n_components: int) -> dict[str, Any]:
 
 def print_check(network: Network, warnings: Iterable[Fault], n_components: int) -> None:
     """Print warnings and sizes of a network without faults."""
-    console = _console()
+    console = console_for_output()
     count = 0
-    for count, warning in enumerate(warnings, start=1):  # noqa: B007 - the last number is the count
-        console.print(str(warning), markup=False, highlight=False, soft_wrap=True)
+    for warning in warnings:
+        count += warning.count
+        console.print(str(warning), highlight=False, soft_wrap=True)
     _print_heading(console, network, n_components)
-    demand = float(network.demand.expected.sum())
-    console.print(f"{demand:,.0f} passengers expected to ask; {count} warnings, no faults", highlight=False)
+    demand, warned = float(network.demand.expected.sum()), f"{count:,} warning{'s' if count != 1 else ''}"
+    console.print(f"{demand:,.0f} passengers expected to ask; {warned}, no faults", highlight=False)
 
 
 def print_prices(priced: PricedNetwork, out: Path, table_format: str) -> None:
     """Print what pricing found and where it was written."""
-    console = _console()
+    console = console_for_output()
     network, summary = priced.network, priced.summary
     for warning in priced.warnings:
         console.print(str(warning), markup=False, highlight=False, soft_wrap=True)
     _print_heading(console, network, len(summary["components"]))
     gap = max(abs(part["certificate"]["gap"]) for part in summary["components"])
     facts = Table.grid(padding=(0, 2))
-    facts.add_row(f"Optimum of the {summary['method']} program", _money(summary["objective"]), f"gap {gap:.0e}")
-    facts.add_row("Bound on what any control can expect", _money(summary["bounds"]["revenue"]), "deterministic program")
+    facts.add_row(f"Optimum of the {summary['method']} program", money(summary["objective"]), f"gap {gap:.0e}")
+    facts.add_row("Bound on what any control can expect", money(summary["bounds"]["revenue"]), "deterministic program")
     facts.add_row(
         "Legs with a price",
         f"{summary['legs_with_price']:,} of {network.n_legs:,}",
@@ -85,7 +98,7 @@ def print_prices(priced: PricedNetwork, out: Path, table_format: str) -> None:
     )
     facts.add_row(
         "Disagreement with leg-level control",
-        _money(summary["at_stake"]),
+        money(summary["at_stake"]),
         f"{summary['products_where_controls_disagree']:,} products, {summary['legs_where_controls_disagree']:,} legs",
     )
     console.print(facts, highlight=False)
@@ -97,19 +110,19 @@ def print_prices(priced: PricedNetwork, out: Path, table_format: str) -> None:
 
 def print_comparison(priced: PricedNetwork, top: int, picture: Path) -> None:
     """Print the disagreements on which most money hangs."""
-    console = _console()
+    console = console_for_output()
     network, summary, connections = priced.network, priced.summary, priced.tables["connections"]
     _print_heading(console, network, len(summary["components"]))
     rows = largest_disagreements(priced, top)
     console.print(
         f"Both controls agree on {network.n_products - summary['products_where_controls_disagree']:,} of "
-        f"{network.n_products:,} products; on the others hang {_money(summary['at_stake'])} {network.currency}:",
+        f"{network.n_products:,} products; on the others hang {money(summary['at_stake'])} {network.currency}:",
         highlight=False,
     )
     for word, label in ALONE.items():
         chosen = connections["disagreement"] == word
         stake = float(connections["at_stake"][chosen].sum())
-        console.print(f"  {int(chosen.sum()):,} that {label} alone would sell, {_money(stake)}", highlight=False)
+        console.print(f"  {int(chosen.sum()):,} that {label} alone would sell, {money(stake)}", highlight=False)
     table = Table(title=f"The {len(rows)} disagreements with most at stake ({network.currency})", title_justify="left")
     table.add_column("Itinerary")
     table.add_column("Class")
@@ -122,8 +135,8 @@ def print_comparison(priced: PricedNetwork, top: int, picture: Path) -> None:
             row["itinerary"],
             row["fare_class"],
             row["route"],
-            *(_price(row[name]) for name in ("fare", "displacement", "contribution")),
-            _price(row["at_stake"]),
+            *(price_text(row[name]) for name in ("fare", "displacement", "contribution")),
+            price_text(row["at_stake"]),
             WORDS[row["disagreement"]],
         )
     console.print(table, highlight=False)
@@ -175,16 +188,16 @@ def _dearest(priced: PricedNetwork) -> Table:
             f"{network.stations.name[legs.origin[leg]]}-{network.stations.name[legs.destination[leg]]}",
             str(local.astype("datetime64[m]")).replace("T", " "),
             f"{network.remaining[leg]:,}",
-            _price(solution.bid_price[leg]),
-            _price(solution.next_seat[leg]),
-            _price(priced.controls.plain.seat_value[leg]),
+            price_text(solution.bid_price[leg]),
+            price_text(solution.next_seat[leg]),
+            price_text(priced.controls.plain.seat_value[leg]),
         )
     return table
 
 
 def _print_heading(console: Console, network: Network, n_components: int) -> None:
     instant = network.as_of.strftime("%Y-%m-%d %H:%M %z")
-    console.print(f"[bold]{network.name}[/bold], as of {instant}, in {network.currency}", highlight=False)
+    console.print(Text.assemble((network.name, "bold"), f", as of {instant}, in {network.currency}"))
     console.print(
         f"{network.n_legs:,} legs in {n_components:,} components, {network.n_itineraries:,} itineraries, "
         f"{network.n_products:,} products; {int(network.remaining.sum()):,} seats to sell",
@@ -192,14 +205,17 @@ def _print_heading(console: Console, network: Network, n_components: int) -> Non
     )
 
 
-def _console() -> Console:
-    console = Console()
-    return console if console.is_terminal else Console(width=PIPE_WIDTH)
+def console_for_output() -> Console:
+    """Console that prints names as they are written, brackets and colons too."""
+    console = Console(markup=False, emoji=False)
+    return console if console.is_terminal else Console(markup=False, emoji=False, width=PIPE_WIDTH)
 
 
-def _money(value: float) -> str:
+def money(value: float) -> str:
+    """Whole currency units, thousands apart."""
     return f"{value:,.0f}"
 
 
-def _price(value: float) -> str:
+def price_text(value: float) -> str:
+    """Two decimals, thousands apart."""
     return f"{value:,.2f}"

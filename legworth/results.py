@@ -13,7 +13,7 @@ from network import Network, TableSchema, table_schema
 
 __all__ = ["RESULT_TABLES", "result_schemas", "result_tables"]
 
-RESULT_TABLES = ("bid_prices", "protection", "comparison", "connections")
+RESULT_TABLES = ("bid_prices", "protection", "comparison", "connections", "price_curves")
 
 
 @cache
@@ -28,7 +28,7 @@ def result_tables(network: Network, solution: NetworkSolution, controls: Control
     Returns
     -------
     dict
-        Every table of `RESULT_TABLES`, its columns named and ordered as its schema declares.
+        Every table of `RESULT_TABLES` but the price curves, its columns named and ordered as its schema declares.
     """
     tables = {
         "bid_prices": _bid_prices(network, solution),
@@ -36,8 +36,8 @@ def result_tables(network: Network, solution: NetworkSolution, controls: Control
         "comparison": _comparison(network, solution, controls),
         "connections": _connections(network, controls),
     }
-    for name, schema in result_schemas().items():
-        if tuple(tables[name].columns) != schema.names:
+    for name, frame in tables.items():
+        if tuple(frame.columns) != result_schemas()[name].names:
             raise ValueError(f"table {name} does not have the columns that its schema declares")
     return tables
 

@@ -14,9 +14,10 @@ import pyarrow as pa
 import pyarrow.csv
 import pyarrow.parquet
 
+from legworth.results import RESULT_TABLES
 from network import SettingError
 
-__all__ = ["TableFormat", "write_results"]
+__all__ = ["TableFormat", "write_results", "write_table"]
 
 TableFormat = Literal["csv", "parquet"]
 
@@ -27,8 +28,8 @@ def write_results(
     """Write the result tables and ``summary.json``.
 
     Everything is written into a folder beside ``out`` first and moved into place at the end, so that a run
-    that fails leaves ``out`` as it was. Files of other names in ``out`` are left alone; tables of an earlier
-    run in the other format are removed.
+    that fails leaves ``out`` as it was. Result tables of an earlier run that this one does not write are removed;
+    files of other names in ``out`` are left alone.
 
     Raises
     ------
@@ -42,21 +43,44 @@ def write_results(
         raise SettingError(f"cannot write to {out} ({error.strerror}); name another folder with --out") from error
     try:
         for name, frame in tables.items():
-            _write_table(aside / f"{name}.{table_format}", frame)
+            _write(aside / f"{name}.{table_format}", frame)
         text = json.dumps(summary, indent=2, ensure_ascii=False, allow_nan=False)
         (aside / "summary.json").write_text(text + "\n", encoding="utf-8")
         for path in sorted(aside.iterdir()):
             os.replace(path, out / path.name)  # noqa: PTH105 - one atomic step, overwriting
-        other = "csv" if table_format == "parquet" else "parquet"
-        for name in tables:
-            (out / f"{name}.{other}").unlink(missing_ok=True)
+        written = {f"{name}.{table_format}" for name in tables}
+        for name in RESULT_TABLES:
+            for ending in ("csv", "parquet"):
+                if f"{name}.{ending}" not in written:
+                    (out / f"{name}.{ending}").unlink(missing_ok=True)
     except OSError as error:
         raise SettingError(f"cannot write to {out} ({error.strerror}); free space or name another folder") from error
     finally:
         shutil.rmtree(aside, ignore_errors=True)
 
 
-def _write_table(path: Path, frame: pd.DataFrame) -> None:
+def write_table(path: Path, frame: pd.DataFrame) -> None:
+    """Write one table, CSV or Parquet by its ending, whole or not at all.
+
+    Raises
+    ------
+    SettingError
+        If the ending is neither, or the file cannot be written.
+    """
+    if path.suffix not in (".csv", ".parquet"):
+        raise SettingError(f"{path} ends neither in .csv nor in .parquet; name it so")
+    aside = path.with_name(f".{path.name}.part{path.suffix}")
+    try:
+        path.parent.mkdir(parents=True, exist_ok=True)
+        _write(aside, frame)
+        aside.replace(path)
+    except OSError as error:
+        raise SettingError(f"cannot write {path} ({error.strerror}); name another file") from error
+    finally:
+        aside.unlink(missing_ok=True)
+
+
+def _write(path: Path, frame: pd.DataFrame) -> None:
     table = pa.Table.from_pandas(frame, preserve_index=False)
     if path.suffix == ".parquet":
         pyarrow.parquet.write_table(table, path, compression="zstd")

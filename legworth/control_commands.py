@@ -1,0 +1,145 @@
+"""The commands of itinerary control and planning: decide, connection, change."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Any
+
+import click
+
+from legworth.options import AS_JSON, EXIT_CODES, FOLDER, pricing_from, pricing_options, print_json
+
+__all__ = ["change", "connection", "decide"]
+
+
+@click.command(epilog=EXIT_CODES)
+@FOLDER
+@click.option(
+    "--prices",
+    type=click.Path(path_type=Path),
+    default=Path("priced"),
+    show_default=True,
+    help="Folder with bid_prices, and price_curves if there are any.",
+)
+@click.option("--requests", type=click.Path(path_type=Path), help="Table of requests to judge, CSV or Parquet.")
+@click.option("--out", type=click.Path(path_type=Path, dir_okay=False), help="File for the answers, CSV or Parquet.")
+@click.option("--itinerary", help="Judge one request: the itinerary asked for.")
+@click.option("--fare-class", help="Its fare class.")
+@click.option("--fare", type=float, help="Its fare for one passenger, if it is not that of the class.")
+@click.option("--seats", type=int, default=1, show_default=True, help="Passengers who travel together.")
+@click.option("--moment", help="Instant of the request, ISO 8601 with offset; the snapshot if left out.")
+@AS_JSON
+def decide(
+    folder: Path, prices: Path, requests: Path | None, out: Path | None, *, as_json: bool, **request: Any
+) -> None:
+    """Accept or refuse requests on FOLDER by the prices in force, each by itself, and say why."""
+    from legworth.control_report import decisions_as_json, print_decisions  # noqa: PLC0415
+    from legworth.decisions import decide as decided  # noqa: PLC0415
+    from legworth.decisions import decisions_table  # noqa: PLC0415
+    from legworth.price_table import read_prices  # noqa: PLC0415
+    from legworth.request_table import one_request, read_requests  # noqa: PLC0415
+    from legworth.writing import write_table  # noqa: PLC0415
+    from network import read_folder  # noqa: PLC0415
+
+    if (requests is None) == (request["itinerary"] is None):
+        raise click.UsageError("give either --requests FILE or --itinerary NAME")
+    network = read_folder(folder).network
+    table = read_prices(prices, network)
+    if requests is None:
+        asked, wanted = one_request(network, **request)
+    else:
+        asked, wanted = read_requests(requests, network)
+    answers = decisions_table(network, asked, wanted, decided(network, table, wanted))
+    source = f"price curves of {prices}" if table.has_curves else f"plain bid prices of {prices}"
+    if out is not None:
+        write_table(out, answers)
+    if as_json:
+        print_json(decisions_as_json(answers, source))
+        return
+    print_decisions(network, answers, source)
+
+
+@click.command(epilog=EXIT_CODES)
+@FOLDER
+@click.option("--itinerary", help="The itinerary to study.")
+@click.option("--from", "origin", help="Study all itineraries from this station ...")
+@click.option("--to", "destination", help="... to this one.")
+@click.option("--party", type=click.IntRange(1, 1000), default=10, show_default=True, help="Largest party looked at.")
+@click.option(
+    "--picture", type=click.Path(path_type=Path, dir_okay=False), help="File for a picture of value by party size."
+)
+@pricing_options
+@AS_JSON
+def connection(
+    folder: Path,
+    itinerary: str | None,
+    origin: str | None,
+    destination: str | None,
+    party: int,
+    picture: Path | None,
+    *,
+    as_json: bool,
+    **how: Any,
+) -> None:
+    """Study itineraries of FOLDER: what they displace by class and party, exactly, and whom."""
+    from legworth.connection import itineraries_between, itinerary_named, study_connection  # noqa: PLC0415
+    from legworth.control_report import connections_as_json, print_connections  # noqa: PLC0415
+    from legworth.picture import draw_parties  # noqa: PLC0415
+    from network import read_folder  # noqa: PLC0415
+
+    if (itinerary is None) == (origin is None or destination is None):
+        raise click.UsageError("give either --itinerary NAME or both --from STATION and --to STATION")
+    network = read_folder(folder).network
+    if itinerary is not None:
+        chosen = [itinerary_named(network, itinerary)]
+    else:
+        chosen = itineraries_between(network, str(origin), str(destination))
+    studies = study_connection(network, chosen, list(range(1, party + 1)), pricing_from(how))
+    if picture is not None:
+        draw_parties(network, studies, picture)
+    if as_json:
+        print_json(connections_as_json(studies, None if picture is None else str(picture)))
+        return
+    print_connections(network, studies)
+    if picture is not None:
+        click.echo(f"Picture: {picture}")
+
+
+@click.command(epilog=EXIT_CODES)
+@FOLDER
+@click.option("--seats", multiple=True, metavar="LEG=+N", help="More or fewer seats on a leg; may be repeated.")
+@click.option("--cancel", multiple=True, metavar="LEG", help="A leg that does not run; may be repeated.")
+@click.option("--fare", multiple=True, metavar="ITINERARY/CLASS=F", help="Another fare; may be repeated.")
+@click.option(
+    "--becomes",
+    type=click.Path(path_type=Path),
+    help="Another network folder to compare with, such as one with a new leg.",
+)
+@pricing_options
+@AS_JSON
+def change(
+    folder: Path,
+    seats: tuple[str, ...],
+    cancel: tuple[str, ...],
+    fare: tuple[str, ...],
+    becomes: Path | None,
+    *,
+    as_json: bool,
+    **how: Any,
+) -> None:
+    """Price FOLDER before and after a change: revenue, and the legs whose prices move most."""
+    from legworth.change import changed_network, parse_changes, study_change  # noqa: PLC0415
+    from legworth.control_report import change_as_json, print_change  # noqa: PLC0415
+    from network import read_folder  # noqa: PLC0415
+
+    changes = parse_changes(seats, cancel, fare)
+    if not changes and becomes is None:
+        raise click.UsageError("name a change: --seats, --cancel, --fare or --becomes")
+    before = read_folder(folder).network
+    after = changed_network(before if becomes is None else read_folder(becomes).network, changes)
+    options = pricing_from(how)
+    study = study_change(before, after, options.lp, options.jobs)
+    if as_json:
+        print_json(change_as_json(study))
+        return
+    print_change(before, study)

@@ -1,0 +1,125 @@
+"""Price curves of a whole network: leg dynamic programs over displacement-adjusted fares or fare splits."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from enum import StrEnum
+
+import numpy as np
+import pandas as pd
+from joblib import Parallel, delayed
+
+from heuristics import leg_products
+from heuristics.arrivals import ArrivalPlan
+from heuristics.dynamic import REQUESTS_PER_STEP, PriceCurves, price_curves
+from heuristics.fare_split import SplitOptions, Stage, best_split
+from network import Component, Network, components
+from network.model import FloatArray, IntArray
+
+__all__ = ["CurveMethod", "NetworkCurves", "curves_table", "network_curves"]
+
+
+class CurveMethod(StrEnum):
+    """Where the displacement terms of the leg programs come from."""
+
+    DECOMPOSITION = "decomposition"
+    FARE_SPLITS = "fare-splits"
+
+
+@dataclass(frozen=True, eq=False)
+class NetworkCurves:
+    """Price curves of all components.
+
+    Attributes
+    ----------
+    method
+        Where the displacement terms come from.
+    parts
+        Legs of every component as positions in the whole network, and its curves.
+    bounds
+        Upper bounds on expected revenue for Poisson requests at the mean rates, currency, by name.
+    """
+
+    method: CurveMethod
+    parts: tuple[tuple[IntArray, PriceCurves], ...]
+    bounds: dict[str, float]
+
+
+def network_curves(
+    network: Network,
+    prices: FloatArray,
+    method: CurveMethod = CurveMethod.DECOMPOSITION,
+    options: SplitOptions | None = None,
+    jobs: int = 1,
+) -> NetworkCurves:
+    """Solve the leg dynamic programs of a network.
+
+    Parameters
+    ----------
+    network
+        The network.
+    prices
+        (L,) bid prices that displace, best those of the deterministic program.
+    method
+        Displacement-adjusted fares by these prices, or fare splits that start from them.
+    options
+        When the search for fare splits stops.
+    jobs
+        Components side by side (fare splits).
+    """
+    if method is CurveMethod.DECOMPOSITION:
+        plan = ArrivalPlan.of(network, leg_products(network, prices))
+        curves = price_curves(plan, network.remaining)
+        return NetworkCurves(method, ((np.arange(network.n_legs), curves),), {})
+    pieces = components(network)
+    tasks = (delayed(_split_curves)(piece, prices[piece.legs], options or SplitOptions()) for piece in pieces)
+    found = Parallel(n_jobs=jobs)(tasks)
+    parts = tuple((piece.legs, curves) for piece, curves in zip(pieces, found, strict=True))
+    return NetworkCurves(method, parts, {"fare_splits": float(sum(curves.total.sum() for _, curves in parts))})
+
+
+def _split_curves(piece: Component, prices: FloatArray, options: SplitOptions) -> PriceCurves:
+    """Fare splits of one component, in stages between the readings of its booking curves."""
+    network = piece.network
+    products = leg_products(network, prices)
+    plan = ArrivalPlan.of(network, products)
+    itinerary = network.product_itinerary[products.product]
+    path_price = network.path_sum(prices)[itinerary]
+    fare = network.fare[products.product]
+    even = 1.0 / np.diff(network.path_start)[itinerary]
+    part = np.divide(prices[plan.leg], path_price, out=even, where=path_price > 0)
+    stages = []
+    for segment in plan.segments():
+        busiest = float(np.bincount(plan.leg, weights=segment.requests).max(initial=0.0))
+        steps = max(1, int(np.ceil(busiest / REQUESTS_PER_STEP)))
+        stages.append(Stage(segment.requests / steps, steps))
+    split = best_split(network.remaining, plan.leg, products.product, fare * part, stages, options)
+    return price_curves(plan, network.remaining, share=split.share)
+
+
+def curves_table(network: Network, curves: NetworkCurves) -> pd.DataFrame:
+    """Label the curves as the schema ``price_curves`` declares: by leg, days falling, seats rising."""
+    leg, days, seat, price = [], [], [], []
+    for legs, part in curves.parts:
+        size = np.diff(part.seat_start)
+        owner = np.repeat(np.arange(len(legs)), size)
+        seats = np.arange(len(owner)) - part.seat_start[owner] + 1
+        for when, value in [(part.days_now[owner], part.now)] + [
+            (np.full(len(owner), day), value) for day, value in zip(part.days, part.value, strict=True)
+        ]:
+            shown = np.flatnonzero(~np.isnan(value) & ((when < part.days_now[owner]) | (value is part.now)))
+            leg.append(legs[owner[shown]])
+            days.append(when[shown])
+            seat.append(seats[shown])
+            price.append(value[shown])
+    columns = [np.concatenate(parts) if parts else np.zeros(0) for parts in (leg, days, seat, price)]
+    order = np.lexsort((columns[2], -columns[1], columns[0]))
+    names = pd.Index(network.legs.name, dtype="str")
+    return pd.DataFrame(
+        {
+            "leg": pd.Categorical.from_codes(columns[0][order].astype(np.int64), categories=names),
+            "days_before": columns[1][order],
+            "remaining": columns[2][order].astype(np.int64),
+            "bid_price": np.maximum(columns[3][order], 0.0),
+        }
+    )

@@ -1,0 +1,243 @@
+"""Accept or refuse: requests against the prices in force and the seats left, in bulk."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from enum import IntEnum
+
+import numpy as np
+import numpy.typing as npt
+import pandas as pd
+import pyarrow as pa
+import pyarrow.compute as pc
+
+from legworth.price_table import PriceTable
+from network import Network
+from network.model import FloatArray, IntArray
+
+__all__ = ["Decisions", "Reason", "Requests", "decide", "decisions_table"]
+
+BoolArray = npt.NDArray[np.bool_]
+
+EQUAL = 1e-9
+"""Share of the money asked within which it counts as equal to the price."""
+
+DAY = 86_400.0
+
+
+class Reason(IntEnum):
+    """Why a request is accepted or refused; the first that holds, from the top, counts."""
+
+    UNKNOWN_ITINERARY = 0
+    UNKNOWN_PRODUCT = 1
+    NO_FARE = 2
+    NO_PASSENGERS = 3
+    DEPARTED = 4
+    NO_SEATS = 5
+    TOO_FEW_SEATS = 6
+    NO_PRICE = 7
+    FARE_BELOW_PRICE = 8
+    FARE_REACHES_PRICE = 9
+
+
+@dataclass(frozen=True, eq=False)
+class Requests:
+    """Requests by position.
+
+    Attributes
+    ----------
+    itinerary
+        (m,) position of the itinerary, -1 where it is unknown.
+    product
+        (m,) position of the product, -1 where no fare class is asked for, -2 where the itinerary has none of it.
+    fare
+        (m,) currency for one passenger, NaN to take that of the product.
+    seats
+        (m,) passengers.
+    moment
+        (m,) seconds since 1970-01-01 UTC.
+    """
+
+    itinerary: IntArray
+    product: IntArray
+    fare: FloatArray
+    seats: IntArray
+    moment: FloatArray
+
+
+@dataclass(frozen=True, eq=False)
+class Decisions:
+    """Answers by position.
+
+    Attributes
+    ----------
+    reason
+        (m,) `Reason`; accepted where it is ``FARE_REACHES_PRICE``.
+    fare
+        (m,) fare for one passenger, NaN if unknown.
+    displacement
+        (m,) currency for the whole party, NaN where there is no price.
+    binding_leg
+        (m,) leg that costs most, or that has too few seats or has departed; -1 where there is none.
+    leg_start, leg, leg_price
+        Legs of every request's path, and the price of the party on each, NaN where there is none.
+    """
+
+    reason: npt.NDArray[np.int8]
+    fare: FloatArray
+    displacement: FloatArray
+    binding_leg: IntArray
+    leg_start: IntArray
+    leg: IntArray
+    leg_price: FloatArray
+
+    @property
+    def accepted(self) -> BoolArray:
+        """(m,) whether the request is accepted."""
+        return np.equal(self.reason, Reason.FARE_REACHES_PRICE)
+
+
+def decide(network: Network, prices: PriceTable, requests: Requests) -> Decisions:
+    """Judge every request by itself against the seats left now.
+
+    A request is accepted when its itinerary is known and still to depart, the party fits into every leg, and
+    the fares of the party reach the price of its seats on all legs together.
+    """
+    known = requests.itinerary >= 0
+    itinerary = np.where(known, requests.itinerary, 0)
+    fare = np.where(
+        np.isnan(requests.fare) & (requests.product >= 0),
+        network.fare[np.maximum(requests.product, 0)] if network.n_products else np.nan,
+        requests.fare,
+    )
+    length = np.where(known, np.diff(network.path_start)[itinerary], 0)
+    leg_start = np.concatenate([[0], np.cumsum(length)])
+    owner = np.repeat(np.arange(len(known)), length)
+    offset = np.arange(leg_start[-1]) - leg_start[owner]
+    leg = network.path_leg[network.path_start[itinerary][owner] + offset].astype(np.int64)
+
+    departs = network.legs.departs.astype("datetime64[s]").astype(np.int64)
+    days = (departs[leg] - requests.moment[owner]) / DAY
+    seats = requests.seats[owner]
+    left = network.remaining[leg]
+    departed, sold_out = days <= 0, left < np.maximum(seats, 1)
+    priced = ~departed & ~sold_out & (seats > 0)
+    leg_price = np.full(len(leg), np.nan)
+    leg_price[priced] = prices.party_price(leg[priced], days[priced], left[priced], seats[priced])
+
+    displacement = _by_request(np.add, leg_price, leg_start, np.nan)
+    asked = fare * requests.seats
+    reason = np.full(len(known), Reason.FARE_REACHES_PRICE, dtype=np.int8)
+    for why, holds in (
+        (Reason.FARE_BELOW_PRICE, asked < displacement - EQUAL * np.abs(asked)),
+        (Reason.NO_PRICE, np.isnan(displacement)),
+        (Reason.TOO_FEW_SEATS, _by_request(np.logical_or, sold_out, leg_start, False)),
+        (Reason.NO_SEATS, _by_request(np.logical_or, left == 0, leg_start, False)),
+        (Reason.DEPARTED, _by_request(np.logical_or, departed, leg_start, False)),
+        (Reason.NO_PASSENGERS, requests.seats < 1),
+        (Reason.NO_FARE, np.isnan(fare)),
+        (Reason.UNKNOWN_PRODUCT, requests.product == -2),
+        (Reason.UNKNOWN_ITINERARY, ~known),
+    ):
+        reason[holds.astype(bool)] = why
+    binding = _binding(reason, leg, leg_price, departed, np.where(sold_out, left, np.iinfo(np.int64).max), leg_start)
+    displacement = np.where(reason >= Reason.FARE_BELOW_PRICE, displacement, np.nan)
+    return Decisions(reason, fare, displacement, binding, leg_start, leg, leg_price)
+
+
+def _by_request(fold: np.ufunc, figure: npt.NDArray, leg_start: IntArray, nothing: float | bool) -> npt.NDArray:
+    """Fold a figure per leg over the legs of every request."""
+    folded = np.full(len(leg_start) - 1, nothing)
+    some = np.diff(leg_start) > 0
+    if len(figure):
+        folded[some] = fold.reduceat(figure, leg_start[:-1][some])
+    return folded
+
+
+def _binding(
+    reason: npt.NDArray[np.int8],
+    leg: IntArray,
+    leg_price: FloatArray,
+    departed: BoolArray,
+    shortage: IntArray,
+    leg_start: IntArray,
+) -> IntArray:
+    """Leg that decides: the first departed, the fullest, or the dearest, as the reason has it."""
+    why = np.repeat(reason, np.diff(leg_start))
+    unpriced = np.where(why == Reason.NO_PRICE, np.inf, -1.0)
+    weight = np.where(np.isnan(leg_price), unpriced, leg_price)
+    weight = np.where(why == Reason.DEPARTED, departed, weight)
+    full = (why == Reason.NO_SEATS) | (why == Reason.TOO_FEW_SEATS)
+    weight = np.where(full, -shortage.astype(np.float64), weight)
+    greatest = _by_request(np.maximum, weight, leg_start, np.nan)
+    at = np.flatnonzero(weight == np.repeat(greatest, np.diff(leg_start)))
+    owner = np.repeat(np.arange(len(reason)), np.diff(leg_start))[at]
+    binding = np.full(len(reason), -1, dtype=np.int64)
+    binding[owner[::-1]] = leg[at[::-1]]
+    return np.where(reason >= Reason.DEPARTED, binding, -1)
+
+
+def decisions_table(network: Network, asked: pd.DataFrame, requests: Requests, found: Decisions) -> pd.DataFrame:
+    """Label the answers as the schema ``decisions`` declares, with a sentence each."""
+    names = pa.array(network.legs.name, pa.string())
+    binding = names.take(pa.array(found.binding_leg, mask=found.binding_leg < 0))
+    prices = _joined_prices(found)
+    words = [reason.name.lower() for reason in Reason]
+    sentence = _sentences(found, requests, binding, prices)
+    return pd.DataFrame(
+        {
+            "request": asked["request"],
+            "itinerary": asked["itinerary"],
+            "fare_class": asked["fare_class"],
+            "fare": found.fare,
+            "seats": requests.seats,
+            "answer": pd.Categorical.from_codes(found.accepted.astype(np.int8), ["refuse", "accept"]),
+            "reason": pd.Categorical.from_codes(found.reason, words),
+            "displacement": found.displacement,
+            "binding_leg": binding.to_pandas(),
+            "leg_prices": prices.to_pandas(),
+            "sentence": sentence.to_pandas(),
+        }
+    )
+
+
+def _money(values: FloatArray) -> pa.Array:
+    """Money with two decimals, as text; missing where it is NaN."""
+    return pc.cast(pc.cast(pa.array(np.round(values, 2), mask=np.isnan(values)), pa.decimal128(18, 2)), pa.string())
+
+
+def _joined_prices(found: Decisions) -> pa.Array:
+    """Prices of the path, joined by +; missing where the request has no price."""
+    text = _money(found.leg_price)
+    lists = pa.ListArray.from_arrays(pa.array(found.leg_start, pa.int32()), text)
+    joined = pc.binary_join(lists, "+")
+    return pc.if_else(pa.array(np.isnan(found.displacement)), pa.scalar(None, pa.string()), joined)
+
+
+def _sentences(found: Decisions, requests: Requests, binding: pa.Array, prices: pa.Array) -> pa.Array:
+    """One sentence a request, by reason."""
+    party = pc.cast(pa.array(requests.seats), pa.string())
+    asked = _money(found.fare * requests.seats)
+    price = _money(found.displacement)
+
+    def text(*parts: object) -> pa.Array:
+        filled = [pc.fill_null(part, "") if isinstance(part, pa.Array) else pa.scalar(str(part)) for part in parts]
+        return pc.binary_join_element_wise(*filled, "")
+
+    compare = (price, " (", prices, "); ", binding, " costs most.")
+    sentences = {
+        Reason.UNKNOWN_ITINERARY: text("Refused: the itinerary is not known."),
+        Reason.UNKNOWN_PRODUCT: text("Refused: the itinerary is not sold in this fare class."),
+        Reason.NO_FARE: text("Refused: neither a fare nor a fare class is given."),
+        Reason.NO_PASSENGERS: text("Refused: nobody is to travel; ask for at least one seat."),
+        Reason.DEPARTED: text("Refused: ", binding, " has departed."),
+        Reason.NO_SEATS: text("Refused: ", binding, " has no seats left."),
+        Reason.TOO_FEW_SEATS: text("Refused: ", binding, " has fewer than ", party, " seats left."),
+        Reason.NO_PRICE: text("Refused: ", binding, " has no price; price the network again."),
+        Reason.FARE_BELOW_PRICE: text("Refused: ", asked, " asked is below the price of the seats, ", *compare),
+        Reason.FARE_REACHES_PRICE: text("Accepted: ", asked, " asked reaches the price of the seats, ", *compare),
+    }
+    chosen = pa.array([""] * len(found.reason))
+    for reason, sentence in sentences.items():
+        chosen = pc.if_else(pa.array(found.reason == reason), sentence, chosen)
+    return chosen

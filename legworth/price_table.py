@@ -1,0 +1,145 @@
+"""Prices in force: what a seat of a leg costs, by seats left and days before departure, looked up in bulk."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+from pathlib import Path
+
+import numpy as np
+import pandas as pd
+
+from network import InputError, Network
+from network.faults import Faults
+from network.model import FloatArray, IntArray
+from network.reading import TableData, read_table
+from network.routes import positions
+from network.schema import table_schema
+
+__all__ = ["PriceTable", "read_prices"]
+
+
+@dataclass(frozen=True, eq=False)
+class PriceTable:
+    """Prices of all legs of a network.
+
+    Attributes
+    ----------
+    bid_price
+        (L,) plain bid prices, currency; NaN where a leg has none.
+    first_block
+        (L + 1,) blocks of leg l are ``first_block[l]:first_block[l + 1]``, days falling; empty without curves.
+    days
+        (B,) days before departure from which a block is in force.
+    first_seat
+        (B + 1,) where the prices of each block begin, for one seat left, two seats left, and so on.
+    price
+        (N,) currency.
+    """
+
+    bid_price: FloatArray
+    first_block: IntArray
+    days: FloatArray
+    first_seat: IntArray
+    price: FloatArray
+
+    @property
+    def has_curves(self) -> bool:
+        """Whether any price depends on seats left and days before departure."""
+        return len(self.price) > 0
+
+    def party_price(self, leg: IntArray, days: FloatArray, remaining: IntArray, party: IntArray) -> FloatArray:
+        """Price of ``party`` seats on a leg, one sold after the other, currency.
+
+        With price curves the last of ``remaining`` seats goes first, then the one before it, and so on; with
+        plain bid prices every seat costs the same. A leg with more seats left than its curve knows is
+        priced at its highest; a leg without curve at its bid price.
+
+        Parameters
+        ----------
+        leg, days, remaining, party
+            (m,) legs, days before departure, seats left, at least ``party``, and passengers, at least 1.
+        """
+        plain = self.bid_price[leg] * party
+        if not self.has_curves:
+            return np.asarray(plain)
+        block = self._block(leg, days)
+        known = block >= 0
+        total = plain.astype(np.float64)
+        start, end = self.first_seat[block[known]], self.first_seat[block[known] + 1]
+        last = np.minimum(start + remaining[known], end)
+        begin = last - party[known]
+        short = np.maximum(start - begin, 0)
+        whole = self._sums[last] - self._sums[np.maximum(begin, start)]
+        single = party[known] == 1
+        whole[single] = self.price[last[single] - 1]
+        total[known] = whole + short * self.price[start]
+        return total
+
+    def _block(self, leg: IntArray, days: FloatArray) -> IntArray:
+        """(m,) block in force, -1 for a leg without curve."""
+        begin, end = self.first_block[leg], self.first_block[leg + 1]
+        # Days fall within a leg: the block in force is the last whose days are not below the present ones.
+        found = np.searchsorted(self._key, leg * self._span - np.clip(days, 0.0, self._span / 2), side="right") - 1
+        return np.where(end > begin, np.clip(found, begin, np.maximum(end - 1, begin)), -1)
+
+    @cached_property
+    def _span(self) -> float:
+        """Twice the farthest day: keys of different legs do not overlap."""
+        return 2.0 * (float(self.days.max(initial=0.0)) + 1.0)
+
+    @cached_property
+    def _key(self) -> FloatArray:
+        """(B,) rising key of all blocks, leg by leg and then by falling days."""
+        owner = np.repeat(np.arange(len(self.first_block) - 1), np.diff(self.first_block))
+        return np.asarray(owner * self._span - self.days)
+
+    @cached_property
+    def _sums(self) -> FloatArray:
+        """(N + 1,) prices summed up to each place."""
+        return np.concatenate([[0.0], np.cumsum(self.price)])
+
+
+def read_prices(folder: Path, network: Network) -> PriceTable:
+    """Read ``bid_prices`` and, where it stands beside them, ``price_curves`` of a priced folder.
+
+    Raises
+    ------
+    InputError
+        If the tables are missing, at fault, or name legs that the network does not have.
+    """
+    faults = Faults()
+    prices = read_table(folder, table_schema("legworth", "bid_prices"), faults)
+    has_curves = any((folder / f"price_curves.{suffix}").exists() for suffix in ("csv", "parquet"))
+    curves = read_table(folder, table_schema("legworth", "price_curves"), faults) if has_curves else None
+    legs = [_legs(table, network, faults) for table in (prices, curves) if table is not None]
+    if faults.errors or prices is None:
+        raise InputError(faults.errors)
+    bid_price = np.full(network.n_legs, np.nan)
+    bid_price[legs[0]] = prices.frame["bid_price"].to_numpy()
+    if curves is None:
+        nothing, none = np.zeros(0), np.zeros(network.n_legs + 1, dtype=np.int64)
+        return PriceTable(bid_price, none, nothing, np.zeros(1, dtype=np.int64), nothing)
+    return _with_curves(bid_price, curves.frame, legs[1], network.n_legs)
+
+
+def _legs(table: TableData, network: Network, faults: Faults) -> IntArray:
+    leg, unknown = positions(table.frame["leg"], network.legs.name)
+    names = table.frame["leg"]
+    faults.add_rows(
+        table.file,
+        np.flatnonzero(unknown),
+        table.line_of,
+        "leg",
+        lambda row: f"{names.iloc[row]!r} is not a leg of the network; price this network again",
+    )
+    return leg
+
+
+def _with_curves(bid_price: FloatArray, frame: pd.DataFrame, leg: IntArray, n_legs: int) -> PriceTable:
+    days = frame["days_before"].to_numpy()
+    order = np.lexsort((frame["remaining"].to_numpy(), -days, leg))
+    leg, days, price = leg[order], days[order], frame["bid_price"].to_numpy()[order]
+    begins = np.flatnonzero(np.concatenate([[True], (np.diff(leg) != 0) | (np.diff(days) != 0)]))
+    first_block = np.searchsorted(leg[begins], np.arange(n_legs + 1))
+    return PriceTable(bid_price, first_block, days[begins], np.append(begins, len(price)), price)
