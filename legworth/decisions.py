@@ -125,29 +125,30 @@ def decide(network: Network, prices: PriceTable, requests: Requests) -> Decision
     leg_price = np.full(len(leg), np.nan)
     leg_price[priced] = prices.party_price(leg[priced], days[priced], left[priced], seats[priced])
 
-    displacement = _by_request(np.add, leg_price, leg_start, np.nan)
+    displacement = _by_request(np.add, leg_price, leg_start)
     asked = fare * requests.seats
     reason = np.full(len(known), Reason.FARE_REACHES_PRICE, dtype=np.int8)
     for why, holds in (
         (Reason.FARE_BELOW_PRICE, asked < displacement - EQUAL * np.abs(asked)),
         (Reason.NO_PRICE, np.isnan(displacement)),
-        (Reason.TOO_FEW_SEATS, _by_request(np.logical_or, sold_out, leg_start, False)),
-        (Reason.NO_SEATS, _by_request(np.logical_or, left == 0, leg_start, False)),
-        (Reason.DEPARTED, _by_request(np.logical_or, departed, leg_start, False)),
+        (Reason.TOO_FEW_SEATS, _by_request(np.maximum, sold_out, leg_start) > 0),
+        (Reason.NO_SEATS, _by_request(np.maximum, left == 0, leg_start) > 0),
+        (Reason.DEPARTED, _by_request(np.maximum, departed, leg_start) > 0),
         (Reason.NO_PASSENGERS, requests.seats < 1),
         (Reason.NO_FARE, np.isnan(fare)),
         (Reason.UNKNOWN_PRODUCT, requests.product == -2),
         (Reason.UNKNOWN_ITINERARY, ~known),
     ):
-        reason[holds.astype(bool)] = why
+        reason[holds] = why
     binding = _binding(reason, leg, leg_price, departed, np.where(sold_out, left, np.iinfo(np.int64).max), leg_start)
     displacement = np.where(reason >= Reason.FARE_BELOW_PRICE, displacement, np.nan)
     return Decisions(reason, fare, displacement, binding, leg_start, leg, leg_price)
 
 
-def _by_request(fold: np.ufunc, figure: npt.NDArray, leg_start: IntArray, nothing: float | bool) -> npt.NDArray:
-    """Fold a figure per leg over the legs of every request."""
-    folded = np.full(len(leg_start) - 1, nothing)
+def _by_request(fold: np.ufunc, figure: npt.ArrayLike, leg_start: IntArray) -> FloatArray:
+    """Fold a figure per leg over the legs of every request; NaN where there are none."""
+    figure = np.asarray(figure, dtype=np.float64)
+    folded = np.full(len(leg_start) - 1, np.nan)
     some = np.diff(leg_start) > 0
     if len(figure):
         folded[some] = fold.reduceat(figure, leg_start[:-1][some])
@@ -169,7 +170,7 @@ def _binding(
     weight = np.where(why == Reason.DEPARTED, departed, weight)
     full = (why == Reason.NO_SEATS) | (why == Reason.TOO_FEW_SEATS)
     weight = np.where(full, -shortage.astype(np.float64), weight)
-    greatest = _by_request(np.maximum, weight, leg_start, np.nan)
+    greatest = _by_request(np.maximum, weight, leg_start)
     at = np.flatnonzero(weight == np.repeat(greatest, np.diff(leg_start)))
     owner = np.repeat(np.arange(len(reason)), np.diff(leg_start))[at]
     binding = np.full(len(reason), -1, dtype=np.int64)
@@ -191,8 +192,8 @@ def decisions_table(network: Network, asked: pd.DataFrame, requests: Requests, f
             "fare_class": asked["fare_class"],
             "fare": found.fare,
             "seats": requests.seats,
-            "answer": pd.Categorical.from_codes(found.accepted.astype(np.int8), ["refuse", "accept"]),
-            "reason": pd.Categorical.from_codes(found.reason, words),
+            "answer": pd.Categorical.from_codes(found.accepted.astype(np.int64), pd.Index(["refuse", "accept"])),
+            "reason": pd.Categorical.from_codes(found.reason.astype(np.int64), pd.Index(words)),
             "displacement": found.displacement,
             "binding_leg": binding.to_pandas(),
             "leg_prices": prices.to_pandas(),

@@ -9,6 +9,7 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.patches import Patch
+from matplotlib.ticker import MaxNLocator
 
 from legworth.connection import ConnectionStudy
 from legworth.pricing import PricedNetwork
@@ -56,15 +57,18 @@ def draw_parties(network: Network, studies: list[ConnectionStudy], path: Path) -
     rows = -(-len(shown) // columns)
     with mpl.rc_context({"font.size": 9, "axes.spines.top": False, "axes.spines.right": False}):
         figure = Figure(figsize=(5 * columns, 3.6 * rows), layout="constrained")
-        for axes, study in zip(np.ravel(figure.subplots(rows, columns, squeeze=False)), shown, strict=False):
+        panels: list[Axes] = figure.subplots(rows, columns, squeeze=False).ravel().tolist()
+        for axes, study in zip(panels, shown, strict=False):
             size = [line.seats for line in study.parties]
             axes.plot(size, [line.least_fare for line in study.parties], color=NETWORK_SELLS, marker="o", markersize=3)
             bid_price = [line.by_bid_price / line.seats for line in study.parties]
             axes.plot(size, bid_price, color=LEG_SELLS, linestyle="--")
-            axes.set(ylim=(0, None), title=study.itinerary, xlabel="passengers in the party")
+            highest = max(line.least_fare for line in study.parties)
+            axes.set(ylim=(0, 1.15 * highest or 1), title=study.itinerary, xlabel="passengers in the party")
+            axes.xaxis.set_major_locator(MaxNLocator(integer=True))
             axes.set_ylabel(f"least fare for one passenger, {network.currency}")
             axes.legend(["exact displacement", "sum of bid prices"], loc="lower right", frameon=False)
-        for axes in np.ravel(figure.axes)[len(shown) :]:
+        for axes in panels[len(shown) :]:
             axes.set_axis_off()
         _save(figure, path)
 

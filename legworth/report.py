@@ -160,9 +160,12 @@ def largest_disagreements(priced: PricedNetwork, top: int) -> list[dict[str, Any
     connections = priced.tables["connections"]
     order = np.argsort(-connections["at_stake"].to_numpy(), kind="stable")[:top]
     order = order[connections["disagreement"].notna().to_numpy()[order]]
-    records: list[dict[str, Any]] = connections.iloc[order].to_dict(orient="records")
+    records = connections.iloc[order].to_dict(orient="records")
     itineraries = priced.network.product_itinerary[order]
-    return [{**record, "route": route(priced.network, int(i))} for record, i in zip(records, itineraries, strict=True)]
+    return [
+        {**{str(key): value for key, value in record.items()}, "route": route(priced.network, int(i))}
+        for record, i in zip(records, itineraries, strict=True)
+    ]
 
 
 def route(network: Network, itinerary: int) -> str:

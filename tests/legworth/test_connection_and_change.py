@@ -1,0 +1,140 @@
+"""Planners' questions: the worth of a connection and of a change, held against solving anew."""
+
+from __future__ import annotations
+
+import json
+import re
+from pathlib import Path
+
+import numpy as np
+import pytest
+
+from legworth.change import changed_network, parse_changes, study_change
+from legworth.connection import itineraries_between, itinerary_named, study_connection
+from legworth.pricing import PricingOptions
+from lp import LpOptions, Method, solve_network
+from network import Network, SettingError, read_folder
+from tests.commands import run
+from tests.folders import Folder
+
+
+@pytest.fixture(scope="module")
+def folder(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    return Folder().write(tmp_path_factory.mktemp("network"))
+
+
+@pytest.fixture(scope="module")
+def network(folder: Path) -> Network:
+    return read_folder(folder).network
+
+
+@pytest.mark.parametrize("method", [Method.PROBABILISTIC, Method.DETERMINISTIC])
+def test_party_lines_equal_solving_anew(network: Network, method: Method) -> None:
+    options = PricingOptions(lp=LpOptions(method=method))
+    position = itinerary_named(network, "NOR-SUD")
+    (study,) = study_connection(network, [position], [1, 4, 9, 10], options)
+    present = solve_network(network, options.lp)
+    assert study.legs == ("L1", "L2")
+    assert [line.seats for line in study.parties] == [1, 4, 9]
+    path = np.isin(network.legs.name, study.legs)
+    for line in study.parties:
+        anew = solve_network(network.with_remaining(network.remaining - line.seats * path), options.lp)
+        assert line.displacement == pytest.approx(present.objective - anew.objective, abs=1e-6)
+        assert line.least_fare == pytest.approx(line.displacement / line.seats)
+        assert line.by_bid_price == pytest.approx(line.seats * present.bid_price[path].sum())
+        assert line.displacement >= line.by_bid_price - 1e-6
+    for line in study.classes:
+        assert line.displacement == pytest.approx(sum(study.bid_prices))
+        assert line.open == (line.contribution >= 0)
+
+
+def test_the_displaced_account_for_the_money(network: Network) -> None:
+    position = itinerary_named(network, "NOR-OST")
+    (study,) = study_connection(network, [position], [8], PricingOptions())
+    assert study.displaced_by == 8
+    # The folder has fewer products than are listed at most, so the rows say it all, down to 0.005 passengers each.
+    money = sum(row.fare * row.passengers for row in study.displaced)
+    assert money == pytest.approx(study.parties[-1].displacement, abs=0.005 * network.fare.sum())
+    assert {leg for row in study.displaced for leg in row.legs} <= {"L1", "L3"}
+
+
+def test_a_change_equals_pricing_two_folders(network: Network, tmp_path: Path, folder: Path) -> None:
+    changes = parse_changes(("L2=+6",), (), ("NOR-HUB/A=150",))
+    larger = Folder().cell("legs.csv", 3, "capacity", "26").cell("fares.csv", 2, "fare", "150").write(tmp_path / "n")
+    study = study_change(network, changed_network(network, changes), LpOptions())
+    assert study.before == pytest.approx(solve_network(network).objective)
+    assert study.after == pytest.approx(solve_network(read_folder(larger).network).objective)
+    outcome = run("change", folder, "--becomes", larger, "--json")
+    assert json.loads(outcome.out)["gain"] == pytest.approx(study.after - study.before)
+    assert study.moves
+    assert study.moves[0].leg in ("L1", "L2", "L3")
+
+
+def test_a_cancelled_leg_takes_its_itineraries_and_frees_seats(network: Network) -> None:
+    after = changed_network(network, parse_changes((), ("L2",), ()))
+    assert "L2" not in after.legs.name
+    assert {"HUB-SUD", "NOR-SUD"} == set(network.itinerary) - set(after.itinerary)
+    study = study_change(network, after, LpOptions())
+    assert study.lost_itineraries == 2
+    assert study.after < study.before
+    solution = solve_network(network)
+    through = network.product_itinerary == itinerary_named(network, "NOR-SUD")
+    assert dict(study.freed) == {"L1": pytest.approx(solution.sales[through].sum())}
+
+
+def test_a_new_leg_is_compared_by_folder(network: Network, tmp_path: Path, folder: Path) -> None:
+    more = Folder().add("legs.csv", "L6,NOR,HUB,2030-03-04T06:00+01:00,2030-03-04T07:30+01:00,20,0")
+    more.add("itineraries.csv", "NOR-HUB-2,L6").add("fares.csv", "NOR-HUB-2,A,100")
+    more.add("demand.csv", "NOR-HUB-2,A,5,2.5,")
+    outcome = run("change", folder, "--becomes", more.write(tmp_path / "more"), "--json")
+    study = json.loads(outcome.out)
+    assert study["gain"] == pytest.approx(500.0, rel=0.01)
+    assert study["moves"] == []
+
+
+@pytest.mark.parametrize(
+    ("seats", "cancel", "fares", "words"),
+    [
+        (("L2",), (), (), "LEG=+20"),
+        (("L2=many",), (), (), "LEG=+20"),
+        (("L2=1.5",), (), (), "LEG=+20"),
+        (("L9=+1",), (), (), "no leg 'L9'"),
+        (("L2=-10",), (), (), "9 seats left"),
+        ((), ("L9",), (), "no leg 'L9'"),
+        ((), (), ("NOR-SUD=5",), "ITINERARY/CLASS"),
+        ((), (), ("NOR-SUD/A=-5",), "not below zero"),
+        ((), (), ("NOR-SUD/Z=5",), "not sold in class 'Z'"),
+        ((), (), ("NOWHERE/A=5",), "no itinerary 'NOWHERE'"),
+    ],
+)
+def test_changes_that_make_no_sense_are_refused(
+    network: Network, seats: tuple[str, ...], cancel: tuple[str, ...], fares: tuple[str, ...], words: str
+) -> None:
+    with pytest.raises(SettingError, match=re.escape(words)):
+        changed_network(network, parse_changes(seats, cancel, fares))
+
+
+def test_city_pairs_and_names_are_found_or_refused(network: Network) -> None:
+    assert [network.itinerary[i] for i in itineraries_between(network, "NOR", "OST")] == ["NOR-OST"]
+    with pytest.raises(SettingError, match="no station"):
+        itineraries_between(network, "NOR", "XXX")
+    with pytest.raises(SettingError, match="nothing is sold"):
+        itineraries_between(network, "OST", "SUD")
+    with pytest.raises(SettingError, match="no itinerary"):
+        itinerary_named(network, "NOR-NOWHERE")
+    with pytest.raises(SettingError, match="one program"):
+        study_connection(network, [0], [1], PricingOptions(lp=LpOptions(method=Method.RANDOMISED)))
+
+
+def test_commands_print_and_draw(folder: Path, tmp_path: Path) -> None:
+    picture = tmp_path / "party.png"
+    outcome = run("connection", folder, "--from", "NOR", "--to", "SUD", "--party", "4", "--picture", picture)
+    assert outcome.code == 0
+    assert "NOR-SUD: L1" in outcome.out
+    assert "Least acceptable fare by party" in outcome.out
+    assert picture.read_bytes().startswith(b"\x89PNG")
+    outcome = run("change", folder, "--seats", "L1=+10", "--seats", "L2=+10")
+    assert outcome.code == 0
+    assert "Optimum before" in outcome.out
+    assert run("connection", folder).code == 2
+    assert run("change", folder).code == 2

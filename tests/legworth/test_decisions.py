@@ -1,0 +1,188 @@
+"""Accept or refuse: every answer recomputed by hand, from plain bid prices and from price curves."""
+
+from __future__ import annotations
+
+import json
+from datetime import datetime
+from pathlib import Path
+
+import numpy as np
+import pandas as pd
+import pytest
+
+from legworth.decisions import Reason, Requests, decide
+from legworth.price_table import PriceTable, read_prices
+from network import Network, read_folder
+from tests.commands import run
+from tests.folders import Folder
+
+DAY = 86_400.0
+
+
+@pytest.fixture(scope="module")
+def folder(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    return Folder().write(tmp_path_factory.mktemp("network"))
+
+
+@pytest.fixture(scope="module")
+def priced(folder: Path, tmp_path_factory: pytest.TempPathFactory) -> dict[str, Path]:
+    """The folder priced without and with price curves."""
+    out = {kind: tmp_path_factory.mktemp(kind) for kind in ("none", "decomposition", "fare-splits")}
+    for kind, path in out.items():
+        assert run("price", folder, "--out", path, "--curves", kind).code == 0
+    return out
+
+
+def asked(network: Network, itinerary: str, fare: float, seats: int = 1, days_early: float = 0.0) -> Requests:
+    position = np.flatnonzero(network.itinerary == itinerary)
+    return Requests(
+        itinerary=np.array([position[0] if len(position) else -1]),
+        product=np.array([-1]),
+        fare=np.array([fare]),
+        seats=np.array([seats]),
+        moment=np.array([network.as_of.timestamp() + days_early * DAY]),
+    )
+
+
+def test_plain_bid_prices_decide_by_their_sum(folder: Path, priced: dict[str, Path]) -> None:
+    network = read_folder(folder).network
+    table = read_prices(priced["none"], network)
+    price = pd.read_csv(priced["none"] / "bid_prices.csv", index_col="leg")["bid_price"]
+    path = price["L1"] + price["L2"]
+    for fare, seats, accepted in ((path + 0.01, 1, True), (path - 0.01, 1, False), (path, 3, True)):
+        found = decide(network, table, asked(network, "NOR-SUD", fare, seats))
+        assert found.accepted[0] == accepted
+        assert found.displacement[0] == pytest.approx(seats * path)
+        dearest = "L1" if price["L1"] >= price["L2"] else "L2"
+        assert network.legs.name[found.binding_leg[0]] == dearest
+
+
+@pytest.mark.parametrize("kind", ["decomposition", "fare-splits"])
+def test_price_curves_decide_by_seats_left_and_day(folder: Path, priced: dict[str, Path], kind: str) -> None:
+    network = read_folder(folder).network
+    table = read_prices(priced[kind], network)
+    curves = pd.read_csv(priced[kind] / "price_curves.csv")
+    departs = datetime.fromisoformat("2030-03-01T06:00+01:00"), datetime.fromisoformat("2030-03-01T08:30+01:00")
+    for early in (0.0, 0.3, 1.6, 3.2):
+        for seats in (1, 2, 5):
+            total = 0.0
+            for leg, instant, left in zip(("L1", "L2"), departs, (12, 9), strict=True):
+                days = (instant.timestamp() - network.as_of.timestamp()) / DAY - early
+                rows = curves[curves["leg"] == leg]
+                block = rows[rows["days_before"] == rows["days_before"][rows["days_before"] >= days - 1e-12].min()]
+                wanted = block["remaining"].between(left - seats + 1, left)
+                assert wanted.sum() == seats
+                total += block["bid_price"][wanted].sum()
+            for fare, accepted in ((total / seats + 1e-3, True), (total / seats - 1e-3, False)):
+                found = decide(network, table, asked(network, "NOR-SUD", fare, seats, early))
+                assert found.displacement[0] == pytest.approx(total, rel=1e-9, abs=1e-9)
+                assert found.accepted[0] == (accepted or total < 1e-9)
+
+
+def test_prices_of_curves_fall_with_seats_and_never_below_zero(priced: dict[str, Path]) -> None:
+    for kind in ("decomposition", "fare-splits"):
+        curves = pd.read_csv(priced[kind] / "price_curves.csv")
+        assert (curves["bid_price"] >= 0).all()
+        for _, block in curves.groupby(["leg", "days_before"]):
+            assert (block["remaining"].to_numpy() == np.arange(1, len(block) + 1)).all()
+            assert (np.diff(block["bid_price"]) <= 1e-9).all()
+
+
+def test_every_kind_of_request_has_its_own_answer(folder: Path, priced: dict[str, Path], tmp_path: Path) -> None:
+    rows = [
+        ("good", "NOR-SUD", "A", "", "1", "", Reason.FARE_REACHES_PRICE, "Accepted"),
+        ("cheap", "NOR-SUD", "", "0.01", "", "", Reason.FARE_BELOW_PRICE, "below the price"),
+        ("nowhere", "NOR-NOWHERE", "A", "", "1", "", Reason.UNKNOWN_ITINERARY, "not known"),
+        ("other class", "NOR-OST", "C", "", "1", "", Reason.UNKNOWN_PRODUCT, "not sold in this fare class"),
+        ("free", "NOR-OST", "", "", "1", "", Reason.NO_FARE, "neither a fare nor a fare class"),
+        ("nobody", "NOR-OST", "A", "", "0", "", Reason.NO_PASSENGERS, "nobody"),
+        ("less", "NOR-OST", "A", "", "-2", "", Reason.NO_PASSENGERS, "nobody"),
+        ("crowd", "NOR-SUD", "A", "", "10", "", Reason.TOO_FEW_SEATS, "L2 has fewer than 10"),
+        ("late", "NOR-SUD", "A", "", "1", "2030-03-01T07:00+01:00", Reason.DEPARTED, "L1 has departed"),
+    ]
+    header = "request,itinerary,fare_class,fare,seats,moment\n"
+    wanted = tmp_path / "wanted.csv"
+    wanted.write_text(header + "".join(",".join(row[:6]) + "\n" for row in rows))
+    answers = tmp_path / "answers.parquet"
+    outcome = run("decide", folder, "--prices", priced["none"], "--requests", wanted, "--out", answers)
+    assert outcome.code == 0
+    found = pd.read_parquet(answers).set_index("request")
+    for name, *_, reason, words in rows:
+        assert found.loc[name, "reason"] == reason.name.lower()
+        assert words in found.loc[name, "sentence"]
+        assert (found.loc[name, "answer"] == "accept") == (reason is Reason.FARE_REACHES_PRICE)
+
+
+def test_a_sold_out_leg_and_a_leg_without_price_are_named(folder: Path, priced: dict[str, Path]) -> None:
+    network = read_folder(folder).network
+    table = read_prices(priced["none"], network)
+    full = network.with_remaining(np.where(network.legs.name == "L2", 0, network.remaining))
+    found = decide(full, table, asked(network, "NOR-SUD", 500.0))
+    assert found.reason[0] == Reason.NO_SEATS
+    assert network.legs.name[found.binding_leg[0]] == "L2"
+    unpriced = PriceTable(
+        np.where(network.legs.name == "L1", np.nan, table.bid_price),
+        table.first_block,
+        table.days,
+        table.first_seat,
+        table.price,
+    )
+    found = decide(network, unpriced, asked(network, "NOR-SUD", 500.0))
+    assert found.reason[0] == Reason.NO_PRICE
+    assert network.legs.name[found.binding_leg[0]] == "L1"
+
+
+def test_what_is_printed_lets_the_answer_be_worked_out_again(folder: Path, priced: dict[str, Path]) -> None:
+    for kind in ("none", "decomposition"):
+        outcome = run(
+            *("decide", folder, "--prices", priced[kind], "--itinerary", "NOR-SUD", "--fare-class", "B"),
+            *("--seats", "3", "--json"),
+        )
+        answer = json.loads(outcome.out)["decisions"][0]
+        parts = [float(part) for part in answer["leg_prices"].split("+")]
+        assert sum(parts) == pytest.approx(answer["displacement"], abs=0.011)
+        assert (answer["answer"] == "accept") == (3 * answer["fare"] >= answer["displacement"])
+        assert answer["fare"] == 125.0
+
+
+def test_faults_in_requests_and_prices_are_listed(folder: Path, priced: dict[str, Path], tmp_path: Path) -> None:
+    bad = tmp_path / "bad.csv"
+    bad.write_text("request,itinerary,seats\na,NOR-SUD,two\na,NOR-SUD,1\n")
+    outcome = run("decide", folder, "--prices", priced["none"], "--requests", bad)
+    assert outcome.code == 2
+    assert "bad.csv:2: seats: 'two'" in outcome.err
+    assert "bad.csv:3: request:" in outcome.err
+    assert run("decide", folder, "--prices", tmp_path, "--itinerary", "NOR-SUD").code == 2
+    assert run("decide", folder, "--prices", priced["none"]).code == 2
+    strange = tmp_path / "strange"
+    strange.mkdir()
+    (strange / "bid_prices.csv").write_text(
+        "leg,bid_price,next_seat,remaining,expected_sales\nL1,5,4,3,2\nL77,5,4,3,2\n"
+    )
+    outcome = run("decide", folder, "--prices", strange, "--itinerary", "NOR-SUD", "--fare", "10")
+    assert outcome.code == 2
+    assert "bid_prices.csv:3: leg: 'L77' is not a leg of the network" in outcome.err
+
+
+def test_answers_in_bulk_equal_answers_one_by_one(folder: Path, priced: dict[str, Path]) -> None:
+    network = read_folder(folder).network
+    table = read_prices(priced["decomposition"], network)
+    rng = np.random.default_rng(4)
+    m = 300
+    product = rng.integers(0, network.n_products, m)
+    many = Requests(
+        itinerary=np.where(rng.random(m) < 0.05, -1, network.product_itinerary[product]).astype(np.int64),
+        product=np.where(rng.random(m) < 0.2, -1, product),
+        fare=np.where(rng.random(m) < 0.5, np.nan, rng.uniform(0, 200, m)),
+        seats=rng.integers(0, 12, m),
+        moment=network.as_of.timestamp() + rng.uniform(-1, 8, m) * DAY,
+    )
+    together = decide(network, table, many)
+    for i in range(m):
+        one = Requests(
+            *(getattr(many, name)[i : i + 1] for name in ("itinerary", "product", "fare", "seats", "moment"))
+        )
+        alone = decide(network, table, one)
+        assert alone.reason[0] == together.reason[i]
+        assert alone.binding_leg[0] == together.binding_leg[i]
+        np.testing.assert_allclose(alone.displacement[0], together.displacement[i], rtol=1e-9, equal_nan=True)
