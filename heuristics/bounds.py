@@ -32,7 +32,7 @@ the same part of it: legs of one itinerary that depart hours apart are treated a
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -127,7 +127,7 @@ def poisson_bounds(
     return _bounds(network, bid_prices, np.where(_sellable(network), network.demand.expected, 0.0), leg_values)
 
 
-def period_bounds(network: Network, bid_prices: npt.ArrayLike, periods: Sequence[FloatArray]) -> RevenueBounds:
+def period_bounds(network: Network, bid_prices: npt.ArrayLike, periods: FloatArray) -> RevenueBounds:
     """Bound the expected revenue from requests of which at most one comes a period.
 
     Parameters
@@ -137,18 +137,19 @@ def period_bounds(network: Network, bid_prices: npt.ArrayLike, periods: Sequence
     bid_prices
         As in `poisson_bounds`.
     periods
-        (J,) probability of a request for every product, period after period, the last before departure first.
+        (T, J) probability of a request for every product, the last period before departure first.
 
     Raises
     ------
     ValueError
-        If bid prices are wrong as in `poisson_bounds`, or probabilities are negative, of another length or sum to
-        more than one.
+        If bid prices are wrong as in `poisson_bounds`, there is not one probability for every product in each period,
+        one is negative, or those of a period sum to more than one.
     """
-    chance = np.asarray(periods, dtype=np.float64).reshape(-1, network.n_products)
-    if not np.all(chance >= 0) or np.any(chance.sum(axis=1) > 1 + 1e-9):
+    if periods.shape[1:] != (network.n_products,):
+        raise ValueError(f"expected probabilities of {network.n_products} products by period, got {periods.shape}")
+    if not np.all(periods >= 0) or np.any(periods.sum(axis=1) > 1 + 1e-9):
         raise ValueError("probabilities of a period must not be negative nor sum to more than one")
-    chance = np.where(_sellable(network), chance, 0.0)
+    chance = np.where(_sellable(network), periods, 0.0)
 
     def leg_values(products: LegProducts) -> FloatArray:
         fares = SortedRuns(products.adjusted_fare, products.leg_start)

@@ -36,6 +36,9 @@ IntArray = npt.NDArray[np.integer]
 REQUESTS_PER_STEP = 0.5
 """Requests that one step may expect on the busiest leg."""
 
+EXTRA_REQUESTS = 2.0
+"""Requests by which steps are reckoned beyond those expected in a segment: values bend most where few have come."""
+
 SEATS_TOGETHER = 16_000
 """Seats whose legs go through time together."""
 
@@ -225,7 +228,7 @@ class _Block:
         """Move the values of these legs in the line of all, in place, past (P,) expected requests at (P,) fares."""
         fares, coming = SortedRuns(fare[self._rows], self._start), expected[self._rows]
         busiest = float(np.bincount(self._leg, weights=np.where(fares.value > 0, coming, 0.0)).max(initial=0.0))
-        steps = int(np.ceil(busiest / requests_per_step))
+        steps = int(np.ceil((busiest + EXTRA_REQUESTS) / requests_per_step)) if busiest > 0 else 0
         requests = Requests(fares, coming / max(steps, 1), self._line.leg)
         own = value[self._places]
         for _ in range(steps):

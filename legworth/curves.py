@@ -11,6 +11,7 @@ from joblib import Parallel, delayed
 
 from heuristics import leg_products
 from heuristics.arrivals import ArrivalPlan
+from heuristics.bounds import poisson_bounds
 from heuristics.dynamic import REQUESTS_PER_STEP, PriceCurves, price_curves
 from heuristics.fare_split import SplitOptions, Stage, best_split
 from network import Component, Network, components
@@ -67,15 +68,21 @@ def network_curves(
     jobs
         Components side by side (fare splits).
     """
+    pieces = components(network)
+    found = [poisson_bounds(piece.network, prices[piece.legs]) for piece in pieces]
+    bounds = {
+        "decomposition": sum(bound.one_leg for bound in found),
+        "legs_apart": sum(bound.legs_apart for bound in found),
+        "split_by_price": sum(bound.split for bound in found),
+    }
     if method is CurveMethod.DECOMPOSITION:
         plan = ArrivalPlan.of(network, leg_products(network, prices))
         curves = price_curves(plan, network.remaining)
-        return NetworkCurves(method, ((np.arange(network.n_legs), curves),), {})
-    pieces = components(network)
+        return NetworkCurves(method, ((np.arange(network.n_legs), curves),), bounds)
     tasks = (delayed(_split_curves)(piece, prices[piece.legs], options or SplitOptions()) for piece in pieces)
-    found = Parallel(n_jobs=jobs)(tasks)
-    parts = tuple((piece.legs, curves) for piece, curves in zip(pieces, found, strict=True))
-    return NetworkCurves(method, parts, {"fare_splits": float(sum(curves.total.sum() for _, curves in parts))})
+    parts = list(zip((piece.legs for piece in pieces), Parallel(n_jobs=jobs)(tasks), strict=True))
+    bounds["fare_splits"] = float(sum(curves.total.sum() for _, curves in parts))
+    return NetworkCurves(method, tuple(parts), bounds)
 
 
 def _split_curves(piece: Component, prices: FloatArray, options: SplitOptions) -> PriceCurves:

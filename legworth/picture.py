@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import warnings
 from pathlib import Path
 
 import matplotlib as mpl
@@ -22,6 +23,7 @@ NETWORK_SELLS = "#0b6e6e"
 LEG_SELLS = "#c8641e"
 QUIET = "#6b7280"
 MOST_PANELS = 12
+LOOK = {"font.size": 9, "axes.spines.top": False, "axes.spines.right": False, "text.parse_math": False}
 
 
 def draw_comparison(priced: PricedNetwork, path: Path, top: int) -> None:
@@ -32,7 +34,7 @@ def draw_comparison(priced: PricedNetwork, path: Path, top: int) -> None:
     SettingError
         If the file cannot be written.
     """
-    with mpl.rc_context({"font.size": 9, "axes.spines.top": False, "axes.spines.right": False}):
+    with mpl.rc_context(LOOK):
         figure = Figure(figsize=(13, max(5.5, 1.6 + 0.3 * top)), layout="constrained")
         legs, money = figure.subplots(1, 2, width_ratios=[1, 1.25])
         _draw_legs(legs, priced)
@@ -55,7 +57,7 @@ def draw_parties(network: Network, studies: list[ConnectionStudy], path: Path) -
         raise SettingError("no party fits into the seats left, so there is nothing to draw; leave --picture out")
     columns = min(len(shown), 3)
     rows = -(-len(shown) // columns)
-    with mpl.rc_context({"font.size": 9, "axes.spines.top": False, "axes.spines.right": False}):
+    with mpl.rc_context(LOOK):
         figure = Figure(figsize=(5 * columns, 3.6 * rows), layout="constrained")
         panels: list[Axes] = figure.subplots(rows, columns, squeeze=False).ravel().tolist()
         for axes, study in zip(panels, shown, strict=False):
@@ -76,7 +78,10 @@ def draw_parties(network: Network, studies: list[ConnectionStudy], path: Path) -
 def _save(figure: Figure, path: Path) -> None:
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
-        figure.savefig(path, dpi=130, format="png")
+        with warnings.catch_warnings():
+            # A name in letters that the font lacks is drawn as boxes; the tables hold it in full.
+            warnings.filterwarnings("ignore", message="Glyph .* missing from font")
+            figure.savefig(path, dpi=130, format="png")
     except OSError as error:
         raise SettingError(f"cannot write {path} ({error.strerror}); name another file with --picture") from error
 

@@ -122,7 +122,7 @@ def price_folder(
         bounds |= curves.bounds
         watch.lap("price_curves")
     summary = _summary(network, options, solution, controls)
-    summary |= {"bounds": bounds, "warnings": len(warnings), "seconds": watch.seconds}
+    summary |= {"bounds": bounds, "warnings": sum(warning.count for warning in warnings), "seconds": watch.seconds}
     return PricedNetwork(network, warnings, solution, controls, tables, summary)
 
 

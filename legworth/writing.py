@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import json
-import os
 import shutil
 import tempfile
 from pathlib import Path
@@ -27,7 +26,7 @@ def write_results(
 ) -> None:
     """Write the result tables and ``summary.json``.
 
-    Everything is written into a folder beside ``out`` first and moved into place at the end, so that a run
+    Everything is written into a hidden folder inside ``out`` first and moved into place at the end, so that a run
     that fails leaves ``out`` as it was. Result tables of an earlier run that this one does not write are removed;
     files of other names in ``out`` are left alone.
 
@@ -36,27 +35,30 @@ def write_results(
     SettingError
         If ``out`` cannot be written.
     """
+    names = [*(f"{name}.{table_format}" for name in tables), "summary.json"]
+    stale = {f"{name}.{ending}" for name in RESULT_TABLES for ending in ("csv", "parquet")} - set(names)
+    for name in names:
+        if (out / name).is_dir():
+            raise SettingError(f"{out / name} is a folder, where a result is to go; move it away")
+    made = not out.exists()
     try:
         out.mkdir(parents=True, exist_ok=True)
-        aside = Path(tempfile.mkdtemp(prefix=f".{out.name}-", dir=out.parent))
-    except OSError as error:
-        raise SettingError(f"cannot write to {out} ({error.strerror}); name another folder with --out") from error
-    try:
-        for name, frame in tables.items():
-            _write(aside / f"{name}.{table_format}", frame)
-        text = json.dumps(summary, indent=2, ensure_ascii=False, allow_nan=False)
-        (aside / "summary.json").write_text(text + "\n", encoding="utf-8")
-        for path in sorted(aside.iterdir()):
-            os.replace(path, out / path.name)  # noqa: PTH105 - one atomic step, overwriting
-        written = {f"{name}.{table_format}" for name in tables}
-        for name in RESULT_TABLES:
-            for ending in ("csv", "parquet"):
-                if f"{name}.{ending}" not in written:
-                    (out / f"{name}.{ending}").unlink(missing_ok=True)
+        aside = Path(tempfile.mkdtemp(prefix=".unfinished-", dir=out))
+        try:
+            for name, frame in tables.items():
+                _write(aside / f"{name}.{table_format}", frame)
+            text = json.dumps(summary, indent=2, ensure_ascii=False, allow_nan=False)
+            (aside / "summary.json").write_text(text + "\n", encoding="utf-8")
+            for name in names:
+                (aside / name).replace(out / name)
+            for name in stale:
+                (out / name).unlink(missing_ok=True)
+        finally:
+            shutil.rmtree(aside, ignore_errors=True)
+            if made and not any(out.iterdir()):
+                out.rmdir()
     except OSError as error:
         raise SettingError(f"cannot write to {out} ({error.strerror}); free space or name another folder") from error
-    finally:
-        shutil.rmtree(aside, ignore_errors=True)
 
 
 def write_table(path: Path, frame: pd.DataFrame) -> None:

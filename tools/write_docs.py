@@ -13,7 +13,7 @@ from pydantic import BaseModel
 
 from legworth.cli import cli
 from legworth.results import result_schemas
-from network.schema import TableSchema, input_schemas
+from network.schema import TableSchema, input_schemas, table_schema
 from network.settings import NetworkSettings
 
 DOCS = Path(__file__).parent.parent / "docs"
@@ -43,10 +43,10 @@ def tables_document() -> str:
         "# What goes in",
         "",
     ]
-    for schema in input_schemas().values():
+    for schema in (*input_schemas().values(), table_schema("legworth", "requests")):
         lines += _table(schema)
     lines += ["# What comes out", ""]
-    for schema in result_schemas().values():
+    for schema in (*result_schemas().values(), table_schema("legworth", "decisions")):
         lines += _table(schema)
     return "\n".join(lines).rstrip() + "\n"
 
@@ -56,7 +56,9 @@ def commands_document() -> str:
     lines = ["# Commands", "", "Written from `--help` by `python -m tools.write_docs`; do not edit.", ""]
     for name, command in [("", cli), *sorted(cli.commands.items())]:
         title = f"legworth {name}".strip()
-        context = click.Context(command, info_name=title, max_content_width=100, terminal_width=100)
+        context = click.Context(
+            command, info_name=title, max_content_width=100, terminal_width=100, help_option_names=["-h", "--help"]
+        )
         lines += [f"## {title}", "", "```text", command.get_help(context), "```", ""]
     return "\n".join(lines).rstrip() + "\n"
 
