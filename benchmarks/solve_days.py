@@ -65,26 +65,6 @@ def timed(network: Network, options: LpOptions, timings: Timings, start: np.ndar
     return solutions
 
 
-def whole_prices(network: Network, solutions: list[Solution]) -> NetworkSolution:
-    """Put the solutions of the components together."""
-    pieces = components(network)
-    per_leg = {name: np.zeros(network.n_legs) for name in ("bid_price", "next_seat", "expected_sales")}
-    allotted, sales = np.zeros(network.n_products), np.zeros(network.n_products)
-    for piece, solution in zip(pieces, solutions, strict=True):
-        for name, values in per_leg.items():
-            values[piece.legs] = getattr(solution, name)
-        allotted[piece.products] = solution.allotted
-        sales[piece.products] = solution.sales
-    return NetworkSolution(
-        parts=tuple(zip(pieces, solutions, strict=True)),
-        objective=sum(solution.objective for solution in solutions),
-        bound=sum(solution.bound for solution in solutions),
-        allotted=allotted,
-        sales=sales,
-        **per_leg,
-    )
-
-
 def run(size: str, repeat: int, solver: str, *, peer: bool) -> None:
     """Measure one size and print its table."""
     options = LpOptions(solver=SolverOptions(solver))
@@ -101,7 +81,7 @@ def run(size: str, repeat: int, solver: str, *, peer: bool) -> None:
             network = read_folder(day).network
             cold["read"].append(time.perf_counter() - clock)
             solutions = timed(network, options, cold)
-            prices = whole_prices(network, solutions)
+            prices = NetworkSolution.of(network, components(network), solutions)
             clock = time.perf_counter()
             controls = compare_controls(network, prices.bid_price)
             cold["leg control"].append(time.perf_counter() - clock)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -40,6 +40,24 @@ class NetworkSolution:
     expected_sales: FloatArray
     allotted: FloatArray
     sales: FloatArray
+
+    @classmethod
+    def of(cls, network: Network, pieces: Sequence[Component], solutions: Sequence[Solution]) -> NetworkSolution:
+        """Put the solutions of all components of a network together, in the order of the network's arrays."""
+        legs = {name: np.zeros(network.n_legs) for name in ("bid_price", "next_seat", "expected_sales")}
+        products = {name: np.zeros(network.n_products) for name in ("allotted", "sales")}
+        for piece, solution in zip(pieces, solutions, strict=True):
+            for name, figures in legs.items():
+                figures[piece.legs] = getattr(solution, name)
+            for name, figures in products.items():
+                figures[piece.products] = getattr(solution, name)
+        return cls(
+            parts=tuple(zip(pieces, solutions, strict=True)),
+            objective=sum(solution.objective for solution in solutions),
+            bound=sum(solution.bound for solution in solutions),
+            **legs,
+            **products,
+        )
 
 
 def solve_network(
@@ -83,21 +101,4 @@ def solve_network(
         solutions.append(solution)
         if progress is not None:
             progress(piece)
-    bid_price, next_seat, expected = (np.zeros(network.n_legs) for _ in range(3))
-    allotted, sales = (np.zeros(network.n_products) for _ in range(2))
-    for piece, solution in zip(pieces, solutions, strict=True):
-        bid_price[piece.legs] = solution.bid_price
-        next_seat[piece.legs] = solution.next_seat
-        expected[piece.legs] = solution.expected_sales
-        allotted[piece.products] = solution.allotted
-        sales[piece.products] = solution.sales
-    return NetworkSolution(
-        parts=tuple(zip(pieces, solutions, strict=True)),
-        objective=sum(solution.objective for solution in solutions),
-        bound=sum(solution.bound for solution in solutions),
-        bid_price=bid_price,
-        next_seat=next_seat,
-        expected_sales=expected,
-        allotted=allotted,
-        sales=sales,
-    )
+    return NetworkSolution.of(network, pieces, solutions)
