@@ -13,10 +13,9 @@ leg l with displacement-adjusted fares::
 
 and s_l, the saving of leg l, is not negative, since pricing the seats of l too gives g(p) (Talluri and van Ryzin 2004,
 The Theory and Practice of Revenue Management, section 3.4; Zhang and Adelman 2009, An approximate dynamic programming
-approach to network revenue management with customer choice, Transportation Science 43(3), where the least B_l is
-shown to bound the value). With several legs kept of which no two are joined by a product, the program still falls
-apart, into one for each of them: the bound is g(p) less the sum of their savings. The inward legs of a hub are such
-a set.
+approach to network revenue management with customer choice, Transportation Science 43(3), on the least B_l). With
+several legs kept of which no two are joined by a product, the program still falls apart, into one for each of them:
+the bound is g(p) less the sum of their savings. The inward legs of a hub are such a set.
 
 *Split.* Let every leg decide by itself about a share of the fare, f_j p_l / P_j (equal shares where P_j = 0). The sum
 of the leg values is a bound, as for any shares that sum to the fare (Topaloglu 2009, Using Lagrangian relaxation to
@@ -26,8 +25,9 @@ either, because V_l <= p_l c_l + sum_j E[D_j] (r_jl - p_l)^+ and the last terms 
 What is bounded is the most that any control can earn if requests come one by one at the mean rates, independent of
 each other and of the decisions: as Poisson processes (`poisson_bounds`), or at most one a period (`period_bounds`).
 Demand that varies more than Poisson demand is not covered, as its early requests foretell the late ones. In
-`poisson_bounds` each leg counts time from its own departure, and all products of a path with equal curves come at
-the same part of it: legs of one itinerary that depart hours apart are treated as if their clocks agreed.
+`poisson_bounds` each leg counts time from its own departure. Where all products share one curve that is the same
+process on every leg; where curves differ, legs of an itinerary that depart hours apart see it shifted by these hours,
+and the bounds hold as far as that does not matter.
 """
 
 from __future__ import annotations
@@ -37,6 +37,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 import numpy.typing as npt
+from scipy.sparse import csr_array
 
 from heuristics.arrivals import ArrivalPlan
 from heuristics.displacement import LegProducts, leg_products
@@ -223,10 +224,9 @@ def _legs_apart(network: Network, expected: FloatArray, saving: FloatArray) -> B
     """
     asked = np.bincount(network.product_itinerary, weights=expected, minlength=network.n_itineraries) > 0
     used = network.incidence[:, np.flatnonzero(asked)]
-    joined = (used @ used.T).tocsr()
-    joined.setdiag(0.0)
-    joined.eliminate_zeros()
-    joined.data[:] = 1.0
+    pairs = (used @ used.T).tocoo()
+    row, column = pairs.row[pairs.row != pairs.col], pairs.col[pairs.row != pairs.col]
+    joined = csr_array((np.ones(len(row)), (row, column)), shape=pairs.shape)
     worth = np.maximum(saving, 0.0)
     apart = np.zeros(network.n_legs, dtype=bool)
     for leg in np.argsort(joined @ worth - worth, kind="stable").tolist():

@@ -11,7 +11,7 @@ from joblib import Parallel, delayed
 
 from heuristics import leg_products
 from heuristics.arrivals import ArrivalPlan
-from heuristics.bounds import poisson_bounds
+from heuristics.bounds import poisson_bounds, split_shares
 from heuristics.dynamic import REQUESTS_PER_STEP, PriceCurves, price_curves
 from heuristics.fare_split import SplitOptions, Stage, best_split
 from network import Component, Network, components
@@ -90,17 +90,13 @@ def _split_curves(piece: Component, prices: FloatArray, options: SplitOptions) -
     network = piece.network
     products = leg_products(network, prices)
     plan = ArrivalPlan.of(network, products)
-    itinerary = network.product_itinerary[products.product]
-    path_price = network.path_sum(prices)[itinerary]
-    fare = network.fare[products.product]
-    even = 1.0 / np.diff(network.path_start)[itinerary]
-    part = np.divide(prices[plan.leg], path_price, out=even, where=path_price > 0)
     stages = []
     for segment in plan.segments():
         busiest = float(np.bincount(plan.leg, weights=segment.requests).max(initial=0.0))
         steps = max(1, int(np.ceil(busiest / REQUESTS_PER_STEP)))
         stages.append(Stage(segment.requests / steps, steps))
-    split = best_split(network.remaining, plan.leg, products.product, fare * part, stages, options)
+    start = split_shares(network, products, prices)
+    split = best_split(network.remaining, plan.leg, products.product, start, stages, options)
     return price_curves(plan, network.remaining, share=split.share)
 
 
