@@ -58,7 +58,7 @@ class SplitOptions:
         Share of the bound; an iteration that lowers it by less ends a search, and a search that does ends all.
     """
 
-    iterations: int = 200
+    iterations: int = 60
     tolerance: float = 1e-6
 
 
