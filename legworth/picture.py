@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import warnings
 from pathlib import Path
+from typing import TYPE_CHECKING, Any
 
 import matplotlib as mpl
 import numpy as np
@@ -17,13 +18,21 @@ from legworth.pricing import PricedNetwork
 from legworth.report import largest_disagreements
 from network import Network, SettingError
 
+if TYPE_CHECKING:
+    from matplotlib.typing import RcKeyType
+
 __all__ = ["draw_comparison", "draw_parties"]
 
 NETWORK_SELLS = "#0b6e6e"
 LEG_SELLS = "#c8641e"
 QUIET = "#6b7280"
 MOST_PANELS = 12
-LOOK = {"font.size": 9, "axes.spines.top": False, "axes.spines.right": False, "text.parse_math": False}
+LOOK: dict[RcKeyType, Any] = {
+    "font.size": 9,
+    "axes.spines.top": False,
+    "axes.spines.right": False,
+    "text.parse_math": False,
+}
 
 
 def draw_comparison(priced: PricedNetwork, path: Path, top: int) -> None:
