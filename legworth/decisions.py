@@ -24,6 +24,9 @@ EQUAL = 1e-9
 
 DAY = 86_400.0
 
+UNPRICED, SHORT, EMPTY, DEPARTED = 1e15, 2e15, 3e15, 4e15
+"""Weights of a leg without price, with too few seats, with none, or departed: far above any price."""
+
 
 class Reason(IntEnum):
     """Why a request is accepted or refused; the first that holds, from the top, counts."""
@@ -120,34 +123,49 @@ def decide(network: Network, prices: PriceTable, requests: Requests) -> Decision
     days = (departs[leg] - requests.moment[owner]) / DAY
     seats = requests.seats[owner]
     left = network.remaining[leg]
-    departed, sold_out = days <= 0, left < np.maximum(seats, 1)
-    priced = ~departed & ~sold_out & (seats > 0)
+    fits = (left >= seats) & (left > 0) & (days > 0) & (seats > 0)
     leg_price = np.full(len(leg), np.nan)
-    leg_price[priced] = prices.party_price(leg[priced], days[priced], left[priced], seats[priced])
+    leg_price[fits] = prices.party_price(leg[fits], days[fits], left[fits], seats[fits])
 
+    weight = np.where(np.isnan(leg_price), UNPRICED, leg_price)
+    obstacle = np.flatnonzero(~fits & (seats > 0))
+    weight[obstacle] = _obstacles(left[obstacle], days[obstacle])
     displacement = _by_request(np.add, leg_price, leg_start)
+    greatest = _by_request(np.maximum, weight, leg_start)
+    binding = _first_equal(weight, greatest, leg_start, leg)
     asked = fare * requests.seats
     reason = np.full(len(known), Reason.FARE_REACHES_PRICE, dtype=np.int8)
     for why, holds in (
         (Reason.FARE_BELOW_PRICE, asked < displacement - EQUAL * np.abs(asked)),
-        (Reason.NO_PRICE, np.isnan(displacement)),
-        (Reason.TOO_FEW_SEATS, _by_request(np.maximum, sold_out, leg_start) > 0),
-        (Reason.NO_SEATS, _by_request(np.maximum, left == 0, leg_start) > 0),
-        (Reason.DEPARTED, _by_request(np.maximum, departed, leg_start) > 0),
+        (Reason.NO_PRICE, greatest >= UNPRICED),
+        (Reason.TOO_FEW_SEATS, greatest > UNPRICED),
+        (Reason.NO_SEATS, greatest >= EMPTY),
+        (Reason.DEPARTED, greatest >= DEPARTED),
         (Reason.NO_PASSENGERS, requests.seats < 1),
         (Reason.NO_FARE, np.isnan(fare)),
         (Reason.UNKNOWN_PRODUCT, requests.product == -2),
         (Reason.UNKNOWN_ITINERARY, ~known),
     ):
         reason[holds] = why
-    binding = _binding(reason, leg, leg_price, departed, np.where(sold_out, left, np.iinfo(np.int64).max), leg_start)
-    displacement = np.where(reason >= Reason.FARE_BELOW_PRICE, displacement, np.nan)
-    return Decisions(reason, fare, displacement, binding, leg_start, leg, leg_price)
+    priced = reason >= Reason.FARE_BELOW_PRICE
+    return Decisions(
+        reason=reason,
+        fare=fare,
+        displacement=np.where(priced, displacement, np.nan),
+        binding_leg=np.where(reason >= Reason.DEPARTED, binding, -1),
+        leg_start=leg_start,
+        leg=leg,
+        leg_price=leg_price,
+    )
 
 
-def _by_request(fold: np.ufunc, figure: npt.ArrayLike, leg_start: IntArray) -> FloatArray:
+def _obstacles(left: IntArray, days: FloatArray) -> FloatArray:
+    """Weights of legs that cannot carry the party, above every price; the fuller of two short legs weighs more."""
+    return np.where(days <= 0, DEPARTED, np.where(left <= 0, EMPTY, SHORT - left))
+
+
+def _by_request(fold: np.ufunc, figure: FloatArray, leg_start: IntArray) -> FloatArray:
     """Fold a figure per leg over the legs of every request; NaN where there are none."""
-    figure = np.asarray(figure, dtype=np.float64)
     folded = np.full(len(leg_start) - 1, np.nan)
     some = np.diff(leg_start) > 0
     if len(figure):
@@ -155,27 +173,13 @@ def _by_request(fold: np.ufunc, figure: npt.ArrayLike, leg_start: IntArray) -> F
     return folded
 
 
-def _binding(
-    reason: npt.NDArray[np.int8],
-    leg: IntArray,
-    leg_price: FloatArray,
-    departed: BoolArray,
-    shortage: IntArray,
-    leg_start: IntArray,
-) -> IntArray:
-    """Leg that decides: the first departed, the fullest, or the dearest, as the reason has it."""
-    why = np.repeat(reason, np.diff(leg_start))
-    unpriced = np.where(why == Reason.NO_PRICE, np.inf, -1.0)
-    weight = np.where(np.isnan(leg_price), unpriced, leg_price)
-    weight = np.where(why == Reason.DEPARTED, departed, weight)
-    full = (why == Reason.NO_SEATS) | (why == Reason.TOO_FEW_SEATS)
-    weight = np.where(full, -shortage.astype(np.float64), weight)
-    greatest = _by_request(np.maximum, weight, leg_start)
-    at = np.flatnonzero(weight == np.repeat(greatest, np.diff(leg_start)))
-    owner = np.repeat(np.arange(len(reason)), np.diff(leg_start))[at]
-    binding = np.full(len(reason), -1, dtype=np.int64)
-    binding[owner[::-1]] = leg[at[::-1]]
-    return np.where(reason >= Reason.DEPARTED, binding, -1)
+def _first_equal(figure: FloatArray, wanted: FloatArray, leg_start: IntArray, leg: IntArray) -> IntArray:
+    """First leg of every request whose figure is the wanted one; -1 where there is none."""
+    owner = np.repeat(np.arange(len(wanted)), np.diff(leg_start))
+    at = np.flatnonzero(figure == wanted[owner])[::-1]
+    found = np.full(len(wanted), -1, dtype=np.int64)
+    found[owner[at]] = leg[at]
+    return found
 
 
 def decisions_table(network: Network, asked: pd.DataFrame, requests: Requests, found: Decisions) -> pd.DataFrame:
