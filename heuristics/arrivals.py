@@ -26,8 +26,14 @@ __all__ = ["PUBLISHED_DAYS", "ArrivalPlan", "Segment", "days_before_departure"]
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.integer]
 
-PUBLISHED_DAYS = (0, 1, 2, 3, 4, 5, 6, 7, 10, 14, 21, 28, 42, 60, 90, 120, 180, 270, 360)
-"""Days before departure at which price curves are published."""
+HOURS = (0.5, 1, 2, 3, 4, 6, 8, 12, 16, 20)
+PUBLISHED_DAYS = (
+    0,
+    *(hours / 24 for hours in HOURS),
+    *(1, 1.25, 1.5, 1.75, 2, 2.5, 3, 3.5, 4, 5, 6, 7, 8, 10, 12, 14, 17, 21, 25, 30, 36, 42, 50, 60, 75, 90),
+    *(105, 120, 150, 180, 225, 270, 315, 360),
+)
+"""Days before departure at which price curves are published: dense where prices fall fast."""
 
 DAY = 86_400.0
 

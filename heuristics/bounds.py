@@ -24,7 +24,8 @@ either, because V_l <= p_l c_l + sum_j E[D_j] (r_jl - p_l)^+ and the last terms 
 
 What is bounded is the most that any control can earn if requests come one by one at the mean rates, independent of
 each other and of the decisions: as Poisson processes (`poisson_bounds`), or at most one a period (`period_bounds`).
-Demand that varies more than Poisson demand is not covered, as its early requests foretell the late ones. In
+Demand that varies more than Poisson demand is not covered, as its early requests foretell the late ones, nor demand
+that varies less, of which more can be earned; only g(p) bounds the revenue from any demand of these means. In
 `poisson_bounds` each leg counts time from its own departure. Where all products share one curve that is the same
 process on every leg; where curves differ, legs of an itinerary that depart hours apart see it shifted by these hours,
 and the bounds hold as far as that does not matter.

@@ -100,7 +100,11 @@ class LegProtection:
 
 
 def leg_protection(
-    products: LegProducts, demand: Demand, remaining: npt.ArrayLike, options: LegControl | None = None
+    products: LegProducts,
+    demand: Demand,
+    remaining: npt.ArrayLike,
+    options: LegControl | None = None,
+    reachable: npt.ArrayLike | None = None,
 ) -> LegProtection:
     """Protect seats on every leg by EMSR-b over displacement-adjusted fares.
 
@@ -114,6 +118,9 @@ def leg_protection(
         (L,) whole seats still for sale.
     options
         Family of joint demand and number of virtual classes.
+    reachable
+        (P,) whether the demand of a row can come true; where not, because another leg of its path has no seats,
+        nothing is kept for it. All of it if None.
 
     Raises
     ------
@@ -125,7 +132,8 @@ def leg_protection(
     if seats.shape != (products.n_legs,) or np.any(seats < 0) or np.any(seats != np.floor(seats)):
         raise ValueError(f"expected whole remaining seats, not negative, for each of {products.n_legs} legs")
     seats = seats.astype(np.int64)
-    ladder, step = _ladder(products, demand)
+    weight = np.ones(len(products.product)) if reachable is None else np.asarray(reachable, dtype=np.float64)
+    ladder, step = _ladder(products, demand, weight)
     if options.virtual_classes is not None:
         ladder, class_of_step = virtual_classes(ladder, options.virtual_classes)
         step[step >= 0] = class_of_step[step[step >= 0]]
@@ -185,7 +193,7 @@ def seat_value_curve(protection: LegProtection, leg: int) -> FloatArray:
     return seat_values(protection.joint, np.full(x.size, leg), x)
 
 
-def _ladder(products: LegProducts, demand: Demand) -> tuple[Ladder, IntArray]:
+def _ladder(products: LegProducts, demand: Demand, weight: FloatArray) -> tuple[Ladder, IntArray]:
     """Ladder of positive adjusted fares, a step for each group of equal ones, and (P,) the step or -1.
 
     A step's fare is the lowest of its group, so that all its members reach what it reaches.
@@ -200,7 +208,7 @@ def _ladder(products: LegProducts, demand: Demand) -> tuple[Ladder, IntArray]:
     held = step >= 0
     stands, product = step[held], products.product[held]
     n = int(np.count_nonzero(worth))
-    mean = np.bincount(stands, weights=demand.mean[product], minlength=n).astype(np.float64)
-    variance = np.bincount(stands, weights=demand.variance[product], minlength=n).astype(np.float64)
+    mean = np.bincount(stands, weights=weight[held] * demand.mean[product], minlength=n).astype(np.float64)
+    variance = np.bincount(stands, weights=weight[held] * demand.variance[product], minlength=n).astype(np.float64)
     leg_start = np.searchsorted(leg[worth], np.arange(n_legs + 1))
     return Ladder(leg_start, fare[worth], mean, variance), step

@@ -6,7 +6,8 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from lp import LpOptions, NetworkSolution, solve_network
+from heuristics.arrivals import days_before_departure
+from lp import LpOptions, Method, NetworkSolution, solve_network
 from network import Network, SettingError
 from network.model import FloatArray, IntArray
 
@@ -110,7 +111,7 @@ def changed_network(network: Network, changes: list[Change]) -> Network:
     SettingError
         If a leg, itinerary or fare class is unknown, or a leg would have fewer seats than none.
     """
-    remaining = network.remaining.copy()
+    capacity = network.legs.capacity.copy()
     fare = network.fare.copy()
     cancelled: list[int] = []
     for change in changes:
@@ -121,16 +122,21 @@ def changed_network(network: Network, changes: list[Change]) -> Network:
         if change.kind == "cancel":
             cancelled.append(leg)
             continue
-        remaining[leg] += int(change.amount)
-        if remaining[leg] < 0:
+        if days_before_departure(network)[leg] <= 0:
+            raise SettingError(f"{change.target[0]} has departed; its seats cannot change")
+        capacity[leg] += int(change.amount)
+        if change.amount < 0 and capacity[leg] < network.legs.sold[leg]:
             left = network.remaining[leg]
             raise SettingError(f"{change.target[0]} has {left} seats left; {-change.amount:.0f} cannot be taken away")
-    network = replace(network, remaining=remaining, fare=fare)
+    moved = capacity != network.legs.capacity
+    remaining = np.where(moved, np.maximum(capacity - network.legs.sold, 0), network.remaining)
+    legs = replace(network.legs, capacity=capacity)
+    network = replace(network, legs=legs, remaining=remaining, fare=fare)
     if not cancelled:
         return network
-    legs = np.setdiff1d(np.arange(network.n_legs), cancelled)
+    kept = np.setdiff1d(np.arange(network.n_legs), cancelled)
     hit = network.path_sum(np.isin(np.arange(network.n_legs), cancelled).astype(np.float64)) > 0
-    return network.subnetwork(legs, np.flatnonzero(~hit))
+    return network.subnetwork(kept, np.flatnonzero(~hit))
 
 
 def study_change(before: Network, after: Network, options: LpOptions, jobs: int = 1) -> ChangeStudy:
@@ -138,9 +144,15 @@ def study_change(before: Network, after: Network, options: LpOptions, jobs: int 
 
     Raises
     ------
+    SettingError
+        If the currencies differ, or the method is the randomised program, whose draws would differ.
     SolveError
         If either has no certified optimum.
     """
+    if options.method is Method.RANDOMISED:
+        raise SettingError("a change needs one program; choose --method probabilistic or deterministic")
+    if before.currency != after.currency:
+        raise SettingError(f"the folders are in {before.currency} and {after.currency}; give both in one currency")
     old = solve_network(before, options, jobs=jobs)
     kept, place = _matched(before.legs.name, after.legs.name)
     start = np.zeros(after.n_legs)

@@ -11,7 +11,7 @@ from heuristics import LegControl, LegProtection, leg_products, leg_protection
 from network import Network
 from network.model import FloatArray, IntArray
 
-__all__ = ["Connections", "ControlComparison", "compare_controls"]
+__all__ = ["Connections", "ControlComparison", "compare_controls", "leg_control"]
 
 BoolArray = npt.NDArray[np.bool_]
 
@@ -74,8 +74,8 @@ def compare_controls(network: Network, bid_prices: FloatArray, options: LegContr
     prices. Leg-level control sells it if every leg, on full fares and by itself, has a seat for it.
     """
     options = options or LegControl()
-    adjusted = leg_protection(leg_products(network, bid_prices), network.demand, network.remaining, options)
-    plain = leg_protection(leg_products(network, np.zeros(network.n_legs)), network.demand, network.remaining, options)
+    adjusted = leg_control(network, bid_prices, options)
+    plain = leg_control(network, np.zeros(network.n_legs), options)
     displacement = network.displacement(bid_prices)
     contribution = network.fare - displacement
     contribution = np.where(np.abs(contribution) <= EQUAL * network.fare, 0.0, contribution)
@@ -89,6 +89,17 @@ def compare_controls(network: Network, bid_prices: FloatArray, options: LegContr
     connections = Connections(displacement, contribution, opened, opened_by_leg, at_stake)
     disagreements = network.leg_load(connections.disagrees.astype(np.float64))
     return ControlComparison(adjusted, plain, connections, disagreements == 0)
+
+
+def leg_control(network: Network, bid_prices: FloatArray, options: LegControl | None = None) -> LegProtection:
+    """Protect seats on every leg over fares displaced by bid prices, (L,); zeros give leg-level control.
+
+    Nothing is kept for a product that another leg of its path, without seats, makes unsellable.
+    """
+    products = leg_products(network, bid_prices)
+    closed = (network.remaining == 0).astype(np.float64)
+    elsewhere = network.displacement(closed)[products.product] - closed[products.leg]
+    return leg_protection(products, network.demand, network.remaining, options, elsewhere == 0)
 
 
 def _path_limit(network: Network, protection: LegProtection) -> IntArray:

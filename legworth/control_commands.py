@@ -7,7 +7,16 @@ from typing import Any
 
 import click
 
-from legworth.options import AS_JSON, EXIT_CODES, FOLDER, pricing_from, pricing_options, print_json
+from legworth.options import (
+    AS_JSON,
+    EXIT_CODES,
+    FOLDER,
+    pricing_from,
+    pricing_options,
+    print_json,
+    print_warnings,
+    program_options,
+)
 
 __all__ = ["change", "connection", "decide"]
 
@@ -36,21 +45,23 @@ def decide(
     from legworth.control_report import decisions_as_json, print_decisions  # noqa: PLC0415
     from legworth.decisions import decide as decided  # noqa: PLC0415
     from legworth.decisions import decisions_table  # noqa: PLC0415
-    from legworth.price_table import read_prices  # noqa: PLC0415
+    from legworth.price_table import prices_made_for, read_prices  # noqa: PLC0415
     from legworth.request_table import one_request, read_requests  # noqa: PLC0415
     from legworth.writing import write_table  # noqa: PLC0415
     from network import read_folder  # noqa: PLC0415
 
     if (requests is None) == (request["itinerary"] is None):
         raise click.UsageError("give either --requests FILE or --itinerary NAME")
-    network = read_folder(folder).network
+    read = read_folder(folder)
+    print_warnings(read.warnings)
+    network = read.network
     table = read_prices(prices, network)
     if requests is None:
         asked, wanted = one_request(network, **request)
     else:
         asked, wanted = read_requests(requests, network)
     answers = decisions_table(network, asked, wanted, decided(network, table, wanted))
-    source = f"price curves of {prices}" if table.has_curves else f"plain bid prices of {prices}"
+    source = prices_made_for(prices, network)
     if out is not None:
         write_table(out, answers)
     if as_json:
@@ -89,7 +100,9 @@ def connection(
 
     if (itinerary is None) == (origin is None or destination is None):
         raise click.UsageError("give either --itinerary NAME or both --from STATION and --to STATION")
-    network = read_folder(folder).network
+    read = read_folder(folder)
+    print_warnings(read.warnings)
+    network = read.network
     if itinerary is not None:
         chosen = [itinerary_named(network, itinerary)]
     else:
@@ -100,7 +113,7 @@ def connection(
     if as_json:
         print_json(connections_as_json(studies, None if picture is None else str(picture)))
         return
-    print_connections(network, studies)
+    print_connections(network, studies, how["method"])
     if picture is not None:
         click.echo(f"Picture: {picture}")
 
@@ -115,7 +128,7 @@ def connection(
     type=click.Path(path_type=Path),
     help="Another network folder to compare with, such as one with a new leg.",
 )
-@pricing_options
+@program_options
 @AS_JSON
 def change(
     folder: Path,
@@ -135,11 +148,14 @@ def change(
     changes = parse_changes(seats, cancel, fare)
     if not changes and becomes is None:
         raise click.UsageError("name a change: --seats, --cancel, --fare or --becomes")
-    before = read_folder(folder).network
-    after = changed_network(before if becomes is None else read_folder(becomes).network, changes)
+    read = read_folder(folder)
+    other = read if becomes is None else read_folder(becomes)
+    print_warnings(read.warnings if becomes is None else (*read.warnings, *other.warnings))
+    before = read.network
+    after = changed_network(other.network, changes)
     options = pricing_from(how)
     study = study_change(before, after, options.lp, options.jobs)
     if as_json:
         print_json(change_as_json(study))
         return
-    print_change(before, study)
+    print_change(before, study, str(options.lp.method), fares=bool(fare))

@@ -48,7 +48,7 @@ def decisions_as_json(decisions: pd.DataFrame, source: str) -> dict[str, Any]:
     return {"prices": source, "decisions": plain.to_dict(orient="records")}
 
 
-def print_connections(network: Network, studies: list[ConnectionStudy]) -> None:
+def print_connections(network: Network, studies: list[ConnectionStudy], method: str) -> None:
     """Print every itinerary: classes, parties, and who is displaced."""
     console = console_for_output()
     for study in studies:
@@ -74,16 +74,17 @@ def print_connections(network: Network, studies: list[ConnectionStudy]) -> None:
             )
         console.print(classes, highlight=False)
         if study.parties:
-            console.print(_parties(study), highlight=False)
+            console.print(_parties(study, method), highlight=False)
             console.print(_displaced(study), highlight=False)
         else:
             console.print("No party of these sizes fits into the seats left.", highlight=False)
     console.print(CAUTION, style="dim", highlight=False, soft_wrap=True)
 
 
-def _parties(study: ConnectionStudy) -> Table:
-    table = Table(title="Least acceptable fare by party", title_justify="left")
-    for heading in ("Party", "Displaces exactly", "Least fare each", "By bid prices", "Difference"):
+def _parties(study: ConnectionStudy, method: str) -> Table:
+    title = f"Least acceptable fare by party, by the {method} program solved without those seats"
+    table = Table(title=title, title_justify="left")
+    for heading in ("Party", "Displaces", "Least fare each", "By bid prices", "Difference"):
         table.add_column(heading, justify="right")
     for line in study.parties:
         table.add_row(
@@ -115,15 +116,18 @@ def connections_as_json(studies: list[ConnectionStudy], picture: str | None) -> 
     return {"connections": [asdict(study) for study in studies], "picture": picture}
 
 
-def print_change(network: Network, study: ChangeStudy) -> None:
+def print_change(network: Network, study: ChangeStudy, method: str, *, fares: bool) -> None:
     """Print revenue before and after, and what moves."""
     console = console_for_output()
     gain = study.after - study.before
     console.print(
-        f"Optimum before {money(study.before)}, after {money(study.after)}: {gain:+,.2f} {network.currency}",
+        f"Optimum of the {method} program before {money(study.before)}, after {money(study.after)}: "
+        f"{gain:+,.2f} {network.currency}",
         style="bold",
         highlight=False,
     )
+    if fares:
+        console.print("Demand is taken to stay the same at the new fares.", highlight=False)
     if study.lost_itineraries:
         console.print(
             f"{study.lost_itineraries:,} itineraries are no longer sold; carrying their passengers another way is not "

@@ -110,7 +110,8 @@ def curves_table(network: Network, curves: NetworkCurves) -> pd.DataFrame:
         for when, value in [(part.days_now[owner], part.now)] + [
             (np.full(len(owner), day), value) for day, value in zip(part.days, part.value, strict=True)
         ]:
-            shown = np.flatnonzero(~np.isnan(value) & ((when < part.days_now[owner]) | (value is part.now)))
+            earlier = (when > 0) & ((when < part.days_now[owner]) | (value is part.now))
+            shown = np.flatnonzero(~np.isnan(value) & earlier)
             leg.append(legs[owner[shown]])
             days.append(when[shown])
             seat.append(seats[shown])

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import json
 import sys
-from collections.abc import Callable
+from collections.abc import Callable, Iterable
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -15,6 +15,7 @@ import click
 
 if TYPE_CHECKING:
     from legworth.pricing import PricedNetwork, PricingOptions
+    from network import Fault
 
 __all__ = ["AS_JSON", "EXIT_CODES", "FOLDER", "priced_folder", "pricing_from", "pricing_options", "print_json"]
 
@@ -31,8 +32,8 @@ FOLDER = click.argument("folder", type=click.Path(path_type=Path))
 AS_JSON = click.option("--json", "as_json", is_flag=True, help="Print one JSON document instead of text.")
 
 
-def pricing_options(command: Callable[..., None]) -> Callable[..., None]:
-    """Add the options that decide how a folder is priced."""
+def program_options(command: Callable[..., None]) -> Callable[..., None]:
+    """Add the options that decide how a linear program is solved."""
     options = [
         click.option(
             "--method",
@@ -52,15 +53,28 @@ def pricing_options(command: Callable[..., None]) -> Callable[..., None]:
             "--seed", type=click.IntRange(0), default=1, show_default=True, help="Seed of the draw (randomised)."
         ),
         click.option(
-            "--virtual-classes", type=int, help="Cut the products of a leg into at most this many classes for EMSR-b."
-        ),
-        click.option(
             "--jobs", type=click.IntRange(1), default=1, show_default=True, help="Components solved side by side."
         ),
     ]
     for option in reversed(options):
         command = option(command)
     return command
+
+
+def pricing_options(command: Callable[..., None]) -> Callable[..., None]:
+    """Add the options that decide how a folder is priced: the program, and leg control."""
+    classes = click.option(
+        "--virtual-classes",
+        type=click.IntRange(1),
+        help="Cut the products of a leg into at most this many classes for EMSR-b.",
+    )
+    return classes(program_options(command))
+
+
+def print_warnings(warnings: Iterable[Fault]) -> None:
+    """Print the warnings of a network folder on standard error."""
+    for warning in warnings:
+        click.echo(str(warning), err=True)
 
 
 def priced_folder(folder: Path, how: dict[str, Any]) -> PricedNetwork:
@@ -86,7 +100,7 @@ def pricing_from(how: dict[str, Any]) -> PricingOptions:
             samples=how["samples"],
             seed=how["seed"],
         ),
-        legs=LegControl(virtual_classes=how["virtual_classes"]),
+        legs=LegControl(virtual_classes=how.get("virtual_classes")),
         curves=CurveMethod(how["curves"]) if how.get("curves", "none") != "none" else None,
         jobs=how["jobs"],
     )

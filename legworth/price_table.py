@@ -2,21 +2,21 @@
 
 from __future__ import annotations
 
+import json
 from dataclasses import dataclass
 from functools import cached_property
 from pathlib import Path
 
 import numpy as np
-import pandas as pd
 
-from network import InputError, Network
+from network import InputError, Network, SettingError
 from network.faults import Faults
 from network.model import FloatArray, IntArray
 from network.reading import TableData, read_table
 from network.routes import positions
 from network.schema import table_schema
 
-__all__ = ["PriceTable", "read_prices"]
+__all__ = ["PriceTable", "prices_made_for", "read_prices"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -52,8 +52,8 @@ class PriceTable:
         """Price of ``party`` seats on a leg, one sold after the other, currency.
 
         With price curves the last of ``remaining`` seats goes first, then the one before it, and so on; with
-        plain bid prices every seat costs the same. A leg with more seats left than its curve knows is
-        priced at its highest; a leg without curve at its bid price.
+        plain bid prices every seat costs the same. Seats beyond those that the curve knows cost what its
+        last one does, which is at least their worth; a leg without curve is priced by its bid price.
 
         Parameters
         ----------
@@ -67,13 +67,12 @@ class PriceTable:
         known = block >= 0
         total = plain.astype(np.float64)
         start, end = self.first_seat[block[known]], self.first_seat[block[known] + 1]
+        surplus = np.clip(start + remaining[known] - end, 0, party[known])
         last = np.minimum(start + remaining[known], end)
-        begin = last - party[known]
-        short = np.maximum(start - begin, 0)
-        whole = self._sums[last] - self._sums[np.maximum(begin, start)]
-        single = party[known] == 1
-        whole[single] = self.price[last[single] - 1]
-        total[known] = whole + short * self.price[start]
+        begin = np.maximum(last - (party[known] - surplus), start)
+        total[known] = self._sums[last] - self._sums[begin] + surplus * self.price[end - 1]
+        single = np.flatnonzero(known)[party[known] == 1]
+        total[single] = self.price[last[party[known] == 1] - 1]
         return total
 
     def _block(self, leg: IntArray, days: FloatArray) -> IntArray:
@@ -120,7 +119,29 @@ def read_prices(folder: Path, network: Network) -> PriceTable:
     if curves is None:
         nothing, none = np.zeros(0), np.zeros(network.n_legs + 1, dtype=np.int64)
         return PriceTable(bid_price, none, nothing, np.zeros(1, dtype=np.int64), nothing)
-    return _with_curves(bid_price, curves.frame, legs[1], network.n_legs)
+    return _with_curves(bid_price, curves, legs[1], network.n_legs, faults)
+
+
+def prices_made_for(folder: Path, network: Network) -> str:
+    """Say which prices these are, and whether they were made for the snapshot of this network.
+
+    Raises
+    ------
+    SettingError
+        If ``summary.json`` beside them names another network or currency.
+    """
+    kind = "price curves" if any(folder.glob("price_curves.*")) else "plain bid prices"
+    try:
+        summary = json.loads((folder / "summary.json").read_text(encoding="utf-8"))
+        made = {name: str(summary[name]) for name in ("network", "currency", "as_of")}
+    except (OSError, ValueError, KeyError, TypeError):
+        return f"{kind} of {folder}, made for a snapshot unknown"
+    for name, here in (("network", network.name), ("currency", network.currency)):
+        if made[name] != here:
+            raise SettingError(f"the prices in {folder} are for {name} {made[name]!r}, not {here!r}; price it again")
+    here = network.as_of.isoformat()
+    warning = "" if made["as_of"] == here else f"; CAUTION: this folder's snapshot is {here}, price it again"
+    return f"{kind} of {folder}, made for the snapshot of {made['as_of']}{warning}"
 
 
 def _legs(table: TableData, network: Network, faults: Faults) -> IntArray:
@@ -136,10 +157,24 @@ def _legs(table: TableData, network: Network, faults: Faults) -> IntArray:
     return leg
 
 
-def _with_curves(bid_price: FloatArray, frame: pd.DataFrame, leg: IntArray, n_legs: int) -> PriceTable:
-    days = frame["days_before"].to_numpy()
-    order = np.lexsort((frame["remaining"].to_numpy(), -days, leg))
+def _with_curves(bid_price: FloatArray, curves: TableData, leg: IntArray, n_legs: int, faults: Faults) -> PriceTable:
+    """Blocks of one leg and day each; notes those that do not hold a price for one seat, two seats, and so on."""
+    frame = curves.frame
+    days, remaining = frame["days_before"].to_numpy(), frame["remaining"].to_numpy()
+    order = np.lexsort((remaining, -days, leg))
     leg, days, price = leg[order], days[order], frame["bid_price"].to_numpy()[order]
     begins = np.flatnonzero(np.concatenate([[True], (np.diff(leg) != 0) | (np.diff(days) != 0)]))
+    first_seat = np.append(begins, len(price))
+    place = np.arange(len(price)) - np.repeat(begins, np.diff(first_seat)) + 1
+    faults.add_rows(
+        curves.file,
+        np.flatnonzero(remaining[order] != place),
+        lambda row: curves.line_of(int(order[row])),
+        "remaining",
+        lambda row: (
+            f"{remaining[order[row]]} stands where the price for {place[row]} seats left is missing; price again"
+        ),
+    )
+    faults.raise_errors()
     first_block = np.searchsorted(leg[begins], np.arange(n_legs + 1))
-    return PriceTable(bid_price, first_block, days[begins], np.append(begins, len(price)), price)
+    return PriceTable(bid_price, first_block, days[begins], first_seat, price)

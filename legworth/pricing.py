@@ -116,13 +116,15 @@ def price_folder(
     tables = result_tables(network, solution, controls)
     watch.lap("tables")
     bounds = {"dual": solution.bound, "revenue": bounding.objective}
+    poisson_bounds: dict[str, float] = {}
     if options.curves is not None:
         curves = network_curves(network, bounding.bid_price, options.curves, jobs=options.jobs)
         tables["price_curves"] = curves_table(network, curves)
-        bounds |= curves.bounds
+        poisson_bounds = curves.bounds
         watch.lap("price_curves")
     summary = _summary(network, options, solution, controls)
-    summary |= {"bounds": bounds, "warnings": sum(warning.count for warning in warnings), "seconds": watch.seconds}
+    summary |= {"bounds": bounds, "poisson_bounds": poisson_bounds, "seconds": watch.seconds}
+    summary["warnings"] = sum(warning.count for warning in warnings)
     return PricedNetwork(network, warnings, solution, controls, tables, summary)
 
 

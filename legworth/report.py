@@ -32,6 +32,9 @@ CAUTION = (
     "what is sold or refused, and come first."
 )
 DEAREST = 8
+LOW = 0.75
+"""Share of the adjusted seat value below which the mean bid price is remarked on."""
+
 PIPE_WIDTH = 140
 ALONE = {"network_only": "network control", "leg_only": "leg-level control"}
 WORDS = {"network_only": "network sells, leg control refuses", "leg_only": "leg control sells, network refuses"}
@@ -89,8 +92,8 @@ def print_prices(priced: PricedNetwork, out: Path, table_format: str) -> None:
     _print_heading(console, network, len(summary["components"]))
     gap = max(abs(part["certificate"]["gap"]) for part in summary["components"])
     facts = Table.grid(padding=(0, 2))
-    facts.add_row(f"Optimum of the {summary['method']} program", money(summary["objective"]), f"gap {gap:.0e}")
-    facts.add_row("Bound on what any control can expect", money(summary["bounds"]["revenue"]), "deterministic program")
+    facts.add_row(f"Optimum of the {summary['method']} program", money(summary["objective"]), f"proved to {gap:.0e}")
+    facts.add_row("No control can expect more than", money(summary["bounds"]["revenue"]), "deterministic program")
     facts.add_row(
         "Legs with a price",
         f"{summary['legs_with_price']:,} of {network.n_legs:,}",
@@ -103,9 +106,24 @@ def print_prices(priced: PricedNetwork, out: Path, table_format: str) -> None:
     )
     console.print(facts, highlight=False)
     console.print(_dearest(priced), highlight=False)
+    _print_low_prices(console, priced)
     names = ", ".join([*(f"{name}.{table_format}" for name in priced.tables), "summary.json"])
     console.print(f"Written to {out}: {names}", highlight=False, markup=False, soft_wrap=True)
     console.print(CAUTION, style="dim", highlight=False, soft_wrap=True)
+
+
+def _print_low_prices(console: Console, priced: PricedNetwork) -> None:
+    """Say so where setting seats aside product by product makes bid prices low."""
+    comparison = priced.tables["comparison"]
+    price, value = float(comparison["bid_price"].mean()), float(comparison["adjusted_seat_value"].mean())
+    if priced.summary["method"] == "probabilistic" and price < LOW * value:
+        console.print(
+            f"Caution: bid prices are low here, {price_text(price)} on average where displacement-adjusted EMSR-b has "
+            f"{price_text(value)}. The probabilistic program sets seats aside for each product apart, which values "
+            "seats low where products are many and small. Look at --method randomised and at price curves first.",
+            highlight=False,
+            soft_wrap=True,
+        )
 
 
 def print_comparison(priced: PricedNetwork, top: int, picture: Path) -> None:
@@ -116,7 +134,8 @@ def print_comparison(priced: PricedNetwork, top: int, picture: Path) -> None:
     rows = largest_disagreements(priced, top)
     console.print(
         f"Both controls agree on {network.n_products - summary['products_where_controls_disagree']:,} of "
-        f"{network.n_products:,} products; on the others hang {money(summary['at_stake'])} {network.currency}:",
+        f"{network.n_products:,} products; at stake on the others, to first order and "
+        f"with seats counted more than once, {money(summary['at_stake'])} {network.currency}:",
         highlight=False,
     )
     for word, label in ALONE.items():
@@ -140,6 +159,7 @@ def print_comparison(priced: PricedNetwork, top: int, picture: Path) -> None:
             WORDS[row["disagreement"]],
         )
     console.print(table, highlight=False)
+    _print_low_prices(console, priced)
     console.print(f"Picture: {picture}", highlight=False, markup=False, soft_wrap=True)
     console.print(CAUTION, style="dim", highlight=False, soft_wrap=True)
 

@@ -10,17 +10,19 @@ where low_i is the best value still unsold on i, and high_i the least value sold
 on which optimum x is used.) Two of its members are published:
 
 last seat
-    The duals at capacities a hair below c: the greatest sum of prices over legs with seats. With one leg
-    and two classes this is f_H P(D_H >= c), so that accepting fares at or above it is Littlewood's rule.
+    The duals at capacities a hair below c: the greatest sum of prices over legs with seats. With one leg and two
+    classes the price is the c-th greatest of all column values. It is never below f_H P(D_H >= c), and with ample low
+    demand it exceeds f_L exactly when that does, so that accepting fares at or above it is Littlewood's rule.
 next seat
     The duals at capacities a hair above c: the least sum of prices.
 
 Where several members share that sum, the one with the least sum of squares is taken. It is unique, it does
-not depend on names, row order or solver, and it scales with the currency. It also moves continuously: for
-fixed capacities the optimal duals are the solutions of a linear program whose right-hand side are the
-values v, and such solution sets, their extreme sums and their least-square members are Lipschitz
-continuous in it (Walkup and Wets 1969; Mangasarian and Shiau 1987). A small change of demand therefore
-moves a price a little, and never makes it jump.
+not depend on names, row order or solver, and it scales with the currency. It also moves continuously with the
+values v: for fixed capacities and widths the optimal duals are the solutions of a linear program whose right-hand
+side is v, and such solution sets, their extreme sums and their least-square members are Lipschitz continuous in it
+(Walkup and Wets 1969; Mangasarian and Shiau 1987). A small change of fares therefore never makes a price jump, nor in
+the probabilistic program a small change of demand within its family. In the deterministic program demand is a width,
+and a price does jump where the mean demand passes a whole number of seats that matters.
 """
 
 from __future__ import annotations

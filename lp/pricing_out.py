@@ -22,12 +22,15 @@ from lp.solvers import OpenProgram, SolverOptions, solve_open
 from network.errors import SolverStoppedError
 from network.model import FloatArray, IntArray, ranges
 
-__all__ = ["PricedOut", "solve_priced_out"]
+__all__ = ["FENCE", "PricedOut", "solve_priced_out"]
 
 WHOLE = 400
 """A program of at most this many columns is opened whole."""
 
 MOST_ROUNDS = 40
+FENCE = 4.0
+"""Distance of the first fences from approximate prices, in windows of the last smoothing."""
+
 WIDEN = 4.0
 """Factor by which a fence that the prices press on moves out."""
 

@@ -10,7 +10,7 @@ import numpy as np
 from lp.canonical import canonical_prices
 from lp.certificate import certify
 from lp.columns import SeatColumns, deterministic_columns, probabilistic_columns, sampled_columns
-from lp.pricing_out import solve_priced_out
+from lp.pricing_out import FENCE, solve_priced_out
 from lp.problem import SeatProgram
 from lp.smoothing import WARM_WINDOWS, WINDOWS, smoothed_prices
 from lp.solution import LpOptions, Method, Solution
@@ -19,9 +19,6 @@ from network import Network
 from network.model import FloatArray
 
 __all__ = ["Optimum", "Phase", "optimise", "solve"]
-
-FENCE = 4.0
-"""Distance of the first fences from the approximate prices, in windows of the last smoothing."""
 
 Phase = Callable[[str], None]
 """Called with the name of each phase as it ends: assemble, approach, solve, choose, certify."""
@@ -155,7 +152,7 @@ def _solve_samples(network: Network, options: LpOptions, start: FloatArray | Non
         start = solutions[0].bid_price
     objectives = np.array([solution.objective for solution in solutions])
     worst = max(solutions, key=lambda solution: abs(solution.certificate.gap))
-    error = float(objectives.std(ddof=1) / np.sqrt(len(objectives))) if len(objectives) > 1 else float("nan")
+    error = float(objectives.std(ddof=1) / np.sqrt(len(objectives)))
     return replace(
         worst,
         objective=float(objectives.mean()),

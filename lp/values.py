@@ -14,7 +14,7 @@ import numpy.typing as npt
 
 from lp.certificate import Certificate, certify
 from lp.columns import SeatColumns, deterministic_columns, probabilistic_columns
-from lp.pricing_out import solve_priced_out
+from lp.pricing_out import FENCE, solve_priced_out
 from lp.problem import SeatProgram
 from lp.smoothing import smoothed_prices
 from lp.solution import LpOptions, Method
@@ -23,9 +23,6 @@ from network import Network
 from network.model import FloatArray
 
 __all__ = ["SeatValue", "SeatValues"]
-
-FENCE = 4.0
-"""Distance of the first fences from the present prices, in windows of the last smoothing."""
 
 
 @dataclass(frozen=True, eq=False)

@@ -135,6 +135,21 @@ def test_commands_print_and_draw(folder: Path, tmp_path: Path) -> None:
     assert picture.read_bytes().startswith(b"\x89PNG")
     outcome = run("change", folder, "--seats", "L1=+10", "--seats", "L2=+10")
     assert outcome.code == 0
-    assert "Optimum before" in outcome.out
+    assert "Optimum of the probabilistic program before" in outcome.out
     assert run("connection", folder).code == 2
     assert run("change", folder).code == 2
+
+
+def test_seats_of_an_oversold_leg_are_filled_up_first(tmp_path: Path) -> None:
+    oversold = read_folder(Folder().cell("legs.csv", 3, "sold", "30").write(tmp_path / "n")).network
+    leg = int(np.flatnonzero(oversold.legs.name == "L2")[0])
+    for more, remaining in ((5, 0), (10, 0), (13, 3)):
+        assert changed_network(oversold, parse_changes((f"L2=+{more}",), (), ())).remaining[leg] == remaining
+
+
+def test_changes_that_cannot_be_compared_are_refused(tmp_path: Path, network: Network, folder: Path) -> None:
+    dollars = Folder().replace("network.toml", '"EUR"', '"USD"').write(tmp_path / "dollars")
+    assert "one currency" in run("change", folder, "--becomes", dollars).err
+    assert "one program" in run("change", folder, "--seats", "L1=+1", "--method", "randomised").err
+    departed = Folder().replace("network.toml", "2030-02-25T02:30", "2030-03-01T07:00").write(tmp_path / "departed")
+    assert "L1 has departed" in run("change", departed, "--seats", "L1=+1").err

@@ -48,6 +48,16 @@ def test_money_at_stake_is_that_of_expected_passengers() -> None:
     assert each.at_stake[0] == pytest.approx(30.0 * stats.poisson.sf([0, 1], 3.0).sum(), rel=1e-12)
 
 
+def test_leg_control_has_no_more_at_stake_than_the_seats_it_would_sell() -> None:
+    # Leg 0 keeps three of its five seats for sure locals at 200 and leaves two to the through fare of 150, which at
+    # prices of 100 and 60 gives away 10 a passenger; four would come.
+    rows = (((150.0, 4.0, 0.0),), ((200.0, 3.0, 0.0),))
+    network = Plan((5, 9), ((0, 1), (0,)), rows, "normal").network()
+    each = compare_controls(network, np.array([100.0, 60.0])).connections
+    assert each.disagrees.tolist() == [True, False]
+    assert each.at_stake.tolist() == [20.0, 0.0]
+
+
 def test_a_dear_through_passenger_by_hand() -> None:
     # At 300 it reaches its displacement of 180 under network control and ranks first leg by leg.
     found = compare_controls(cheap_through(300.0, mean=1.0), np.array([90.0, 90.0]))

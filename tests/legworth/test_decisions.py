@@ -186,3 +186,41 @@ def test_answers_in_bulk_equal_answers_one_by_one(folder: Path, priced: dict[str
         assert alone.reason[0] == together.reason[i]
         assert alone.binding_leg[0] == together.binding_leg[i]
         np.testing.assert_allclose(alone.displacement[0], together.displacement[i], rtol=1e-9, equal_nan=True)
+
+
+def one_leg_table(prices: list[float]) -> PriceTable:
+    """Price table of one leg with one block, in force from ten days before departure."""
+    ends = np.array([0, 1])
+    return PriceTable(np.array([5.0]), ends, np.array([10.0]), np.array([0, len(prices)]), np.array(prices))
+
+
+@pytest.mark.parametrize(
+    ("remaining", "party", "total"),
+    [(5, 1, 10), (5, 2, 40), (3, 3, 210), (12, 8, 7 * 10 + 10), (12, 7, 70), (7, 4, 10 + 10 + 10 + 30), (7, 1, 10)],
+)
+def test_a_party_pays_seat_by_seat_and_seats_beyond_the_curve_cost_its_last(
+    remaining: int, party: int, total: float
+) -> None:
+    table = one_leg_table([90.0, 70.0, 50.0, 30.0, 10.0])
+    found = table.party_price(np.array([0]), np.array([3.0]), np.array([remaining]), np.array([party]))
+    assert found.tolist() == [total]
+
+
+def test_prices_of_another_snapshot_or_currency_are_noticed(
+    folder: Path, priced: dict[str, Path], tmp_path: Path
+) -> None:
+    later = Folder().replace("network.toml", "2030-02-25T02:30", "2030-02-26T02:30").write(tmp_path / "later")
+    outcome = run("decide", later, "--prices", priced["none"], "--itinerary", "NOR-SUD", "--fare", "300")
+    assert "CAUTION: this folder's snapshot is 2030-02-26" in outcome.out
+    dollars = Folder().replace("network.toml", '"EUR"', '"USD"').write(tmp_path / "dollars")
+    outcome = run("decide", dollars, "--prices", priced["none"], "--itinerary", "NOR-SUD", "--fare", "300")
+    assert (outcome.code, "price it again" in outcome.err) == (2, True)
+
+
+def test_a_gap_in_a_price_curve_is_a_fault(folder: Path, priced: dict[str, Path], tmp_path: Path) -> None:
+    lines = (priced["decomposition"] / "price_curves.csv").read_text().splitlines(keepends=True)
+    (tmp_path / "bid_prices.csv").write_text((priced["decomposition"] / "bid_prices.csv").read_text())
+    (tmp_path / "price_curves.csv").write_text("".join(lines[:2] + lines[3:]))
+    outcome = run("decide", folder, "--prices", tmp_path, "--itinerary", "NOR-SUD", "--fare", "300")
+    assert outcome.code == 2
+    assert "price_curves.csv:3: remaining: 3 stands where the price for 2 seats left is missing" in outcome.err
