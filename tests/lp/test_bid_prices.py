@@ -39,7 +39,7 @@ def slope(program: SeatProgram, direction: FloatArray) -> float:
 
 
 @given(plan=ANY)
-@examples(150)
+@examples(100)
 def test_all_legs_together_lose_the_sum_of_last_seats_and_gain_the_sum_of_next_ones(plan: Plan) -> None:
     for program in programs(plan.network()).values():
         last_seat, next_seat = prices(program)
@@ -64,7 +64,7 @@ def test_each_leg_alone_brackets_its_prices_and_meets_them_where_it_has_one_slop
 
 
 @given(capacity=seats, rows=products, family=st.sampled_from(FAMILIES))
-@examples(150)
+@examples(100)
 def test_on_one_leg_prices_are_the_differences_of_the_value_to_the_seat(
     capacity: int, rows: list[Product], family: str
 ) -> None:
@@ -88,7 +88,7 @@ def value_of(plan: Plan) -> float:
 
 
 @given(capacity=seats, rows=products)
-@examples(60)
+@examples(40)
 def test_on_one_leg_prices_fall_with_seats(capacity: int, rows: list[Product]) -> None:
     found = [solve(one_leg(n, rows, "poisson").network()) for n in range(capacity, capacity + 3)]
     for few, many in pairwise(found):

@@ -178,7 +178,7 @@ def test_a_solver_that_lies_about_seats_is_found_out(lie: str, method: Method, m
 
 
 @given(plan=st.one_of(plans(), degenerate_plans()), lie=st.sampled_from(sorted(SEAT_LIES | PRICE_LIES)))
-@examples(150)
+@examples(100)
 def test_no_lie_ever_changes_a_number(plan: Plan, lie: str) -> None:
     network = plan.network()
     for method in (Method.DETERMINISTIC, Method.PROBABILISTIC):

@@ -66,7 +66,7 @@ def test_names_do_not_matter(plan: Plan) -> None:
 
 @pytest.mark.parametrize("factor", [0.01, 137.5, 1e6])
 @given(plan=ANY, method=EXACT)
-@examples(40)
+@examples(25)
 def test_prices_scale_with_the_currency(factor: float, plan: Plan, method: Method) -> None:
     network = plan.network()
     found, scaled = (solve(n, LpOptions(method)) for n in (network, plan.with_fares(factor).network()))

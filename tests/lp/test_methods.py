@@ -22,7 +22,7 @@ ERRORS = 5.0
 
 
 @given(plan=st.one_of(plans(), degenerate_plans()))
-@examples(150)
+@examples(100)
 def test_the_deterministic_program_bounds_the_probabilistic_one(plan: Plan) -> None:
     network = plan.network()
     upper, lower = (solve(network, LpOptions(m, FAST)) for m in (Method.DETERMINISTIC, Method.PROBABILISTIC))

@@ -24,13 +24,15 @@ def side_by_side(parts: list[Plan]) -> Plan:
 
 
 def arrays(found: NetworkSolution) -> list[FloatArray]:
-    return [found.bid_price, found.next_seat, found.expected_sales, found.allotted]
+    return [found.bid_price, found.next_seat, found.expected_sales, found.allotted, found.sales]
 
 
-@given(parts=st.lists(st.one_of(plans(max_legs=3), degenerate_plans()), min_size=1, max_size=3))
+@given(parts=st.lists(st.one_of(plans(max_legs=3), degenerate_plans()), min_size=1, max_size=3), data=st.data())
 @examples(60)
-def test_parts_add_up_to_the_whole(parts: list[Plan]) -> None:
-    network = side_by_side(parts).network()
+def test_parts_add_up_to_the_whole(parts: list[Plan], data: st.DataObject) -> None:
+    plan = side_by_side(parts)
+    orders = [data.draw(st.permutations(range(len(each)))) for each in (plan.capacity, plan.paths)]
+    network = plan.reordered(*orders).network()
     for method in (Method.DETERMINISTIC, Method.PROBABILISTIC):
         whole, apart = solve(network, LpOptions(method)), solve_network(network, LpOptions(method))
         assert len(apart.parts) >= len(parts)
@@ -40,7 +42,9 @@ def test_parts_add_up_to_the_whole(parts: list[Plan]) -> None:
         near = 1e-6 * network.fare.max(initial=1.0)
         np.testing.assert_allclose(apart.bid_price, whole.bid_price, rtol=0, atol=near)
         np.testing.assert_allclose(apart.next_seat, whole.next_seat, rtol=0, atol=near)
-        assert apart.allotted.shape == whole.allotted.shape
+        assert apart.sales @ network.fare == pytest.approx(whole.objective, rel=1e-9, abs=1e-9)
+        np.testing.assert_allclose(network.leg_load(apart.sales), apart.expected_sales, rtol=1e-9, atol=1e-9)
+        assert np.all(network.leg_load(apart.allotted) <= network.remaining + 1e-6)
         assert all(part.certificate.holds for _, part in apart.parts)
 
 
