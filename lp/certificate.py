@@ -109,8 +109,10 @@ def certify(program: SeatProgram, seats: FloatArray, prices: FloatArray) -> Cert
     spare = program.capacity - program.load(seats)
     unsold_worth = float(np.max(reduced, initial=0.0, where=room > GREATEST_VIOLATION))
     sold_unworthy = -float(np.min(reduced, initial=0.0, where=seats > GREATEST_VIOLATION))
-    primal = float(columns.value @ seats)
-    dual = float(program.capacity @ prices + columns.width @ np.maximum(reduced, 0.0, out=reduced))
+    # Summed in pairs rather than by BLAS: sharper, and the same whatever the number of threads.
+    primal = float(np.sum(columns.value * seats))
+    surplus = np.sum(columns.width * np.maximum(reduced, 0.0, out=reduced))
+    dual = float(np.sum(program.capacity * prices) + surplus)
     size = max(abs(dual), 0.01 * program.scale)
     return Certificate(
         primal=primal,

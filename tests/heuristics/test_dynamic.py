@@ -188,7 +188,7 @@ def test_no_legs() -> None:
 def test_nothing_is_published_before_the_snapshot() -> None:
     rows = (tuple(poisson((100.0, 9.0))), tuple(poisson((90.0, 30.0))))
     network = departing(Plan((3, 2), ((0,), (1,)), rows, "poisson").network(), [2.0, 5.5], -1, [])
-    found = price_curves(plan_of(network), network.remaining)
+    found = price_curves(plan_of(network, (0, 1, 2, 3, 4, 5, 6)), network.remaining)
     assert found.days.tolist() == [0, 1, 2, 3, 4, 5]
     known = ~np.isnan(found.value)
     np.testing.assert_array_equal(known[:, :3], np.broadcast_to((found.days <= 2)[:, None], (6, 3)))
