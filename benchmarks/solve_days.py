@@ -89,7 +89,8 @@ def run(size: str, repeat: int, solver: str, *, peer: bool) -> None:
             write_results(Path(folder) / "out", result_tables(network, prices, controls), {}, "parquet")
             cold["write"].append(time.perf_counter() - clock)
             timed(changed(network, rng), options, warm, prices.bid_price)
-            memory = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024**2
+            if not highs:
+                memory = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024**2
             if peer:
                 program = SeatProgram.of(network, probabilistic_columns(network))
                 clock = time.perf_counter()

@@ -15,6 +15,7 @@ from legworth import __version__
 from legworth.control_commands import change, connection, decide
 from legworth.options import EXIT_CODES, print_json
 from legworth.pricing_commands import check, compare, price
+from legworth.simulate_command import simulate
 
 if TYPE_CHECKING:
     from network.errors import LegworthError
@@ -32,7 +33,7 @@ def cli() -> None:
     """
 
 
-for command in (check, price, compare, decide, connection, change):
+for command in (check, price, compare, decide, connection, change, simulate):
     cli.add_command(command)
 
 

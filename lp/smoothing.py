@@ -24,7 +24,7 @@ __all__ = ["WARM_WINDOWS", "WINDOWS", "SmoothedDual", "smoothed_prices"]
 WINDOWS = (0.25, 0.06, 0.015, 0.004)
 """Half-widths of the window, as shares of the mean value of a column, for a cold start."""
 
-WARM_WINDOWS = (0.015, 0.004)
+WARM_WINDOWS = (0.06, 0.015, 0.004)
 """The same for a start from prices that were good lately."""
 
 WIDER = 4.0
@@ -32,7 +32,10 @@ WIDER = 4.0
 
 STEPS_PER_WINDOW = 12
 ENOUGH = 1e-3
-"""A window is left once the projected gradient is below this share of the seats."""
+"""A window is left once the projected gradient is below this share of the seats ..."""
+
+ENOUGH_AT_LAST = 3e-4
+"""... and the last window below this share."""
 
 
 class SmoothedDual:
@@ -100,13 +103,13 @@ def smoothed_prices(
     prices = np.zeros(len(program.capacity)) if start is None else np.maximum(start, 0.0)
     for share in windows:
         dual = SmoothedDual(program, share * money)
-        prices = _minimise(dual, prices)
+        prices = _minimise(dual, prices, ENOUGH_AT_LAST if share == windows[-1] else ENOUGH)
     return prices, windows[-1] * money
 
 
-def _minimise(dual: SmoothedDual, prices: FloatArray) -> FloatArray:
+def _minimise(dual: SmoothedDual, prices: FloatArray, enough: float) -> FloatArray:
     program = dual.program
-    target = ENOUGH * max(float(program.capacity.sum()), 1.0)
+    target = enough * max(float(program.capacity.sum()), 1.0)
     value, gradient = dual.at(prices)
     for _ in range(STEPS_PER_WINDOW):
         free = (prices > 0) | (gradient < 0)

@@ -46,7 +46,11 @@ def tables_document() -> str:
     for schema in (*input_schemas().values(), table_schema("legworth", "requests")):
         lines += _table(schema)
     lines += ["# What comes out", ""]
-    for schema in (*result_schemas().values(), table_schema("legworth", "decisions")):
+    for schema in (
+        *result_schemas().values(),
+        table_schema("legworth", "decisions"),
+        table_schema("legworth", "simulation"),
+    ):
         lines += _table(schema)
     return "\n".join(lines).rstrip() + "\n"
 
