@@ -67,20 +67,29 @@ class SeatColumns:
 
     @cached_property
     def running(self) -> FloatArray:
-        """(K + 1, 3) sums of width, width*value and width*value**2 of the columns before each position."""
-        width, value = self.width, self.value
-        sums = np.zeros((len(self) + 1, 3))
-        np.cumsum(np.column_stack([width, width * value, width * value**2]), axis=0, out=sums[1:])
+        """(3, K + 1) sums of width, width*value and width*value**2 of the columns before each position."""
+        sums = np.zeros((3, len(self) + 1))
+        term = self.width
+        for row in sums:
+            np.cumsum(term, out=row[1:])
+            term = term * self.value
         return sums
 
     @cached_property
     def running_start(self) -> FloatArray:
-        """(I, 3) the rows of ``running`` where the columns of each itinerary begin."""
-        return np.asarray(self.running[self.start[:-1]])
+        """(3, I) the columns of ``running`` where those of each itinerary begin."""
+        return np.asarray(self.running[:, self.start[:-1]])
 
     def seats_before(self, end: IntArray) -> FloatArray:
         """Seats of the columns of every itinerary before the positions ``end``, (I,)."""
-        return np.asarray(self.running[end, 0] - self.running_start[:, 0])
+        return np.asarray(self.running[0].take(end) - self.running_start[0])
+
+    def sums_before(self, end: IntArray) -> list[FloatArray]:
+        """Sums of width, width*value and width*value**2 of every itinerary before the positions ``end``, (I,) each."""
+        found = [row.take(end) for row in self.running]
+        for sums, first in zip(found, self.running_start, strict=True):
+            sums -= first
+        return found
 
     def expected_sales(self, seats: FloatArray, fare: FloatArray) -> FloatArray:
         """Passengers expected of every product, (J,), within the seats that each column, (K,), sets aside."""

@@ -74,9 +74,16 @@ class SmoothedDual:
     def _sums(self, path: FloatArray, offset: float) -> tuple[FloatArray, FloatArray]:
         """F at ``path + offset`` and its integral from there on, (I,) each."""
         threshold = path + offset
-        columns = self.program.columns
-        seats, worth, square = (columns.running[self._end(path, offset)] - columns.running_start).T
-        return worth - threshold * seats, 0.5 * (square - 2 * threshold * worth + threshold**2 * seats)
+        seats, worth, square = self.program.columns.sums_before(self._end(path, offset))
+        # In place, for memory given back and taken again costs more here than the sums themselves:
+        # above = worth - t seats, beyond = (square - 2 t worth + t**2 seats) / 2.
+        above = np.multiply(threshold, seats, out=seats)
+        np.subtract(worth, above, out=above)
+        worth += above
+        worth *= threshold
+        square -= worth
+        square *= 0.5
+        return above, square
 
 
 def smoothed_prices(
