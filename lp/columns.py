@@ -88,7 +88,7 @@ class SeatColumns:
         """Sums of width, width*value and width*value**2 of every itinerary before the positions ``end``, (I,) each."""
         found = [row.take(end) for row in self.running]
         for sums, first in zip(found, self.running_start, strict=True):
-            sums -= first
+            np.subtract(sums, first, out=sums)
         return found
 
     def expected_sales(self, seats: FloatArray, fare: FloatArray) -> FloatArray:
