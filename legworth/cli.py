@@ -38,11 +38,11 @@ for command in (check, price, compare, decide, connection, change, simulate):
 
 
 def _fail(error: LegworthError, *, as_json: bool) -> NoReturn:
-    from network.errors import InputError  # noqa: PLC0415
+    from network.errors import InputError
 
     faults = error.faults if isinstance(error, InputError) else ()
     if as_json:
-        from legworth.report import faults_as_json  # noqa: PLC0415
+        from legworth.report import faults_as_json
 
         print_json({"ok": False, "error": str(error), "faults": faults_as_json(faults)})
     else:
@@ -72,7 +72,7 @@ def main() -> None:
     except click.exceptions.Exit as stop:
         sys.exit(stop.exit_code)
     except Exception as error:
-        from network.errors import LegworthError  # noqa: PLC0415
+        from network.errors import LegworthError
 
         if not isinstance(error, LegworthError):
             raise

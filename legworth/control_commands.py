@@ -42,13 +42,13 @@ def decide(
     folder: Path, prices: Path, requests: Path | None, out: Path | None, *, as_json: bool, **request: Any
 ) -> None:
     """Accept or refuse requests on FOLDER by the prices in force, each by itself, and say why."""
-    from legworth.control_report import decisions_as_json, print_decisions  # noqa: PLC0415
-    from legworth.decisions import decide as decided  # noqa: PLC0415
-    from legworth.decisions import decisions_table  # noqa: PLC0415
-    from legworth.price_table import prices_made_for, read_prices  # noqa: PLC0415
-    from legworth.request_table import one_request, read_requests  # noqa: PLC0415
-    from legworth.writing import write_table  # noqa: PLC0415
-    from network import read_folder  # noqa: PLC0415
+    from legworth.control_report import decisions_as_json, print_decisions
+    from legworth.decisions import decide as decided
+    from legworth.decisions import decisions_table
+    from legworth.price_table import prices_made_for, read_prices
+    from legworth.request_table import one_request, read_requests
+    from legworth.writing import write_table
+    from network import read_folder
 
     if (requests is None) == (request["itinerary"] is None):
         raise click.UsageError("give either --requests FILE or --itinerary NAME")
@@ -93,10 +93,10 @@ def connection(
     **how: Any,
 ) -> None:
     """Study itineraries of FOLDER: what they displace by class and party, exactly, and whom."""
-    from legworth.connection import itineraries_between, itinerary_named, study_connection  # noqa: PLC0415
-    from legworth.control_report import connections_as_json, print_connections  # noqa: PLC0415
-    from legworth.picture import draw_parties  # noqa: PLC0415
-    from network import read_folder  # noqa: PLC0415
+    from legworth.connection import itineraries_between, itinerary_named, study_connection
+    from legworth.control_report import connections_as_json, print_connections
+    from legworth.picture import draw_parties
+    from network import read_folder
 
     if (itinerary is None) == (origin is None or destination is None):
         raise click.UsageError("give either --itinerary NAME or both --from STATION and --to STATION")
@@ -141,9 +141,9 @@ def change(
     **how: Any,
 ) -> None:
     """Price FOLDER before and after a change: revenue, and the legs whose prices move most."""
-    from legworth.change import changed_network, parse_changes, study_change  # noqa: PLC0415
-    from legworth.control_report import change_as_json, print_change  # noqa: PLC0415
-    from network import read_folder  # noqa: PLC0415
+    from legworth.change import changed_network, parse_changes, study_change
+    from legworth.control_report import change_as_json, print_change
+    from network import read_folder
 
     changes = parse_changes(seats, cancel, fare)
     if not changes and becomes is None:

@@ -79,8 +79,8 @@ def print_warnings(warnings: Iterable[Fault]) -> None:
 
 def priced_folder(folder: Path, how: dict[str, Any]) -> PricedNetwork:
     """Price a folder as the options say, with progress on a terminal."""
-    from legworth.pricing import price_folder  # noqa: PLC0415
-    from legworth.progress import progress_bar  # noqa: PLC0415
+    from legworth.pricing import price_folder
+    from legworth.progress import progress_bar
 
     with progress_bar("Pricing legs") as progress:
         return price_folder(folder, pricing_from(how), progress)
@@ -88,10 +88,10 @@ def priced_folder(folder: Path, how: dict[str, Any]) -> PricedNetwork:
 
 def pricing_from(how: dict[str, Any]) -> PricingOptions:
     """Turn the values of `pricing_options` into options."""
-    from heuristics import LegControl  # noqa: PLC0415
-    from legworth.curves import CurveMethod  # noqa: PLC0415
-    from legworth.pricing import PricingOptions  # noqa: PLC0415
-    from lp import LpOptions, Method, SolverOptions  # noqa: PLC0415
+    from heuristics import LegControl
+    from legworth.curves import CurveMethod
+    from legworth.pricing import PricingOptions
+    from lp import LpOptions, Method, SolverOptions
 
     return PricingOptions(
         lp=LpOptions(

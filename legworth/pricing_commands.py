@@ -17,16 +17,16 @@ __all__ = ["check", "compare", "price"]
 @AS_JSON
 def check(folder: Path, *, as_json: bool) -> None:
     """Read the tables of FOLDER and list every fault, without pricing anything."""
-    from network import components, read_folder  # noqa: PLC0415
+    from network import components, read_folder
 
     read = read_folder(folder)
     pieces = components(read.network)
     if as_json:
-        from legworth.report import faults_as_json, sizes  # noqa: PLC0415
+        from legworth.report import faults_as_json, sizes
 
         print_json({"ok": True, "faults": faults_as_json(read.warnings), **sizes(read.network, len(pieces))})
         return
-    from legworth.report import print_check  # noqa: PLC0415
+    from legworth.report import print_check
 
     print_check(read.network, read.warnings, len(pieces))
 
@@ -60,14 +60,14 @@ def check(folder: Path, *, as_json: bool) -> None:
 @AS_JSON
 def price(folder: Path, out: Path, table_format: Any, *, as_json: bool, **how: Any) -> None:
     """Price FOLDER: bid prices, protection levels, comparison and connections, written to --out."""
-    from legworth.writing import write_results  # noqa: PLC0415
+    from legworth.writing import write_results
 
     priced = priced_folder(folder, how)
     write_results(out, priced.tables, priced.summary, table_format)
     if as_json:
         print_json(priced.summary)
         return
-    from legworth.report import print_prices  # noqa: PLC0415
+    from legworth.report import print_prices
 
     print_prices(priced, out, table_format)
 
@@ -86,8 +86,8 @@ def price(folder: Path, out: Path, table_format: Any, *, as_json: bool, **how: A
 @AS_JSON
 def compare(folder: Path, picture: Path, top: int, *, as_json: bool, **how: Any) -> None:
     """Price FOLDER and show where network control and leg-level control disagree, largest money first."""
-    from legworth.picture import draw_comparison  # noqa: PLC0415
-    from legworth.report import comparison_as_json, print_comparison  # noqa: PLC0415
+    from legworth.picture import draw_comparison
+    from legworth.report import comparison_as_json, print_comparison
 
     priced = priced_folder(folder, how)
     draw_comparison(priced, picture, top)

@@ -69,13 +69,13 @@ __all__ = ["simulate"]
 @AS_JSON
 def simulate(folder: Path, out: Path, *, stress: bool, as_json: bool, **how: Any) -> None:
     """Play whole booking horizons of FOLDER under several controls: which earns what, and how sure that is."""
-    from legworth.progress import progress_bar  # noqa: PLC0415
-    from legworth.simulation import result_table  # noqa: PLC0415
-    from legworth.simulation import simulate as simulated  # noqa: PLC0415
-    from legworth.simulation.files import write_simulation  # noqa: PLC0415
-    from legworth.simulation.page import simulation_page  # noqa: PLC0415
-    from legworth.simulation.report import print_simulation, simulation_as_json  # noqa: PLC0415
-    from network import read_folder  # noqa: PLC0415
+    from legworth.progress import progress_bar
+    from legworth.simulation import result_table
+    from legworth.simulation import simulate as simulated
+    from legworth.simulation.files import write_simulation
+    from legworth.simulation.page import simulation_page
+    from legworth.simulation.report import print_simulation, simulation_as_json
+    from network import read_folder
 
     options = _options(how)
     network = read_folder(folder).network
@@ -94,7 +94,7 @@ def simulate(folder: Path, out: Path, *, stress: bool, as_json: bool, **how: Any
 
 
 def _options(how: dict[str, Any]) -> SimulationOptions:
-    from legworth.simulation import REOPTIMISED, STANDARD, SimulationOptions  # noqa: PLC0415
+    from legworth.simulation import REOPTIMISED, STANDARD, SimulationOptions
 
     names = how["methods"]
     return SimulationOptions(
@@ -113,7 +113,7 @@ def _options(how: dict[str, Any]) -> SimulationOptions:
 
 
 def _attendance(how: dict[str, Any]) -> Attendance | None:
-    from legworth.simulation.attendance import Attendance, rates_by_class  # noqa: PLC0415
+    from legworth.simulation.attendance import Attendance, rates_by_class
 
     cancelled, absent = (
         () if text is None else rates_by_class(text) for text in (how["cancel_rate"], how["no_show_rate"])
@@ -123,7 +123,7 @@ def _attendance(how: dict[str, Any]) -> Attendance | None:
 
 
 def _days(text: str | None) -> tuple[float, ...] | None:
-    from network import SettingError  # noqa: PLC0415
+    from network import SettingError
 
     if text is None:
         return None
@@ -134,9 +134,9 @@ def _days(text: str | None) -> tuple[float, ...] | None:
 
 
 def _stressed(found: Simulation) -> list[Any]:
-    from legworth.progress import progress_bar  # noqa: PLC0415
-    from legworth.simulation.forecast import STRESSES  # noqa: PLC0415
-    from legworth.simulation.stress import under_stress  # noqa: PLC0415
+    from legworth.progress import progress_bar
+    from legworth.simulation.forecast import STRESSES
+    from legworth.simulation.stress import under_stress
 
     cases = list(STRESSES)
     with progress_bar("Playing wrong forecasts") as progress:

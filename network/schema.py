@@ -82,8 +82,8 @@ class TableSchema:
     @cached_property
     def checks(self) -> DataFrameSchema:
         """The limits of all columns as a pandera schema, which checks whole columns at once."""
-        from pandera.pandas import Check, DataFrameSchema  # noqa: PLC0415 - heavy, wanted by readers only
-        from pandera.pandas import Column as Checked  # noqa: PLC0415
+        from pandera.pandas import Check, DataFrameSchema
+        from pandera.pandas import Column as Checked
 
         def checks_of(column: Column) -> list[Any]:
             found = []

@@ -23,7 +23,7 @@ def test_every_command_stands_in_the_readme(command: str) -> None:
 
 
 def test_every_error_has_its_exit_code_in_the_help() -> None:
-    from network import errors  # noqa: PLC0415
+    from network import errors
 
     codes = {getattr(errors, name).exit_code for name in errors.__all__}
     for code in codes:
