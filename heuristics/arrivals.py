@@ -18,13 +18,12 @@ import numpy as np
 import numpy.typing as npt
 
 from heuristics.displacement import LegProducts
+from network.arrays import FloatArray, IntArray
 from network.model import BookingCurves, Network
 from network.runs import SortedRuns
 
 __all__ = ["PUBLISHED_DAYS", "ArrivalPlan", "Segment", "days_before_departure"]
 
-FloatArray = npt.NDArray[np.float64]
-IntArray = npt.NDArray[np.integer]
 
 HOURS = (0.5, 1, 2, 3, 4, 6, 8, 12, 16, 20)
 PUBLISHED_DAYS = (

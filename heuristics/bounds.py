@@ -43,13 +43,11 @@ from scipy.sparse import csr_array
 from heuristics.arrivals import ArrivalPlan
 from heuristics.displacement import LegProducts, leg_products
 from heuristics.dynamic import REQUESTS_PER_STEP, price_curves, run_periods
+from network.arrays import BoolArray, FloatArray
 from network.model import Network
 from network.runs import SortedRuns
 
 __all__ = ["RevenueBounds", "period_bounds", "poisson_bounds", "split_shares"]
-
-FloatArray = npt.NDArray[np.float64]
-BoolArray = npt.NDArray[np.bool_]
 
 
 @dataclass(frozen=True, eq=False)

@@ -13,12 +13,10 @@ import numpy as np
 import numpy.typing as npt
 
 from heuristics.ladder import TIE, tie_groups
+from network.arrays import FloatArray, IntArray
 from network.model import Network
 
 __all__ = ["LegProducts", "leg_products"]
-
-FloatArray = npt.NDArray[np.float64]
-IntArray = npt.NDArray[np.integer]
 
 
 @dataclass(frozen=True, eq=False)

@@ -22,16 +22,14 @@ from collections.abc import Iterable
 from dataclasses import dataclass
 
 import numpy as np
-import numpy.typing as npt
 
 from heuristics.arrivals import ArrivalPlan
+from network.arrays import FloatArray, IntArray
 from network.model import ranges
 from network.runs import SortedRuns
 
 __all__ = ["PriceCurves", "Requests", "SeatLine", "price_curves", "run_periods"]
 
-FloatArray = npt.NDArray[np.float64]
-IntArray = npt.NDArray[np.integer]
 
 REQUESTS_PER_STEP = 0.5
 """Requests that one step may expect on the busiest leg."""

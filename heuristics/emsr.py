@@ -16,12 +16,10 @@ import pandas as pd
 
 from heuristics.ladder import Ladder, leg_ladder
 from heuristics.littlewood import keeps_seat, littlewood_level, whole_seats
+from network.arrays import FloatArray, IntArray
 from network.demand import Demand, Family
 
 __all__ = ["JointLevels", "emsr_a", "emsr_b", "joint_levels"]
-
-FloatArray = npt.NDArray[np.float64]
-IntArray = npt.NDArray[np.integer]
 
 
 @dataclass(frozen=True, eq=False)

@@ -18,16 +18,13 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
-import numpy.typing as npt
 from scipy.optimize import minimize
 
 from heuristics.dynamic import Requests, SeatLine
+from network.arrays import FloatArray, IntArray
 from network.runs import SortedRuns
 
 __all__ = ["FareSplit", "SplitOptions", "Stage", "best_split", "split_bound"]
-
-FloatArray = npt.NDArray[np.float64]
-IntArray = npt.NDArray[np.integer]
 
 
 @dataclass(frozen=True, eq=False)

@@ -10,12 +10,11 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
+from network.arrays import FloatArray, IntArray
 from network.demand import Demand
 
 __all__ = ["TIE", "Ladder", "leg_ladder", "tie_groups"]
 
-FloatArray = npt.NDArray[np.float64]
-IntArray = npt.NDArray[np.integer]
 
 TIE = 1e-9
 """Fares closer than this share of the greatest fare of their leg count as equal."""

@@ -8,11 +8,11 @@ from __future__ import annotations
 import numpy as np
 import numpy.typing as npt
 
+from network.arrays import FloatArray
 from network.demand import Demand, Family
 
 __all__ = ["keeps_seat", "littlewood_level", "whole_seats"]
 
-FloatArray = npt.NDArray[np.float64]
 
 _SAME = 1e-12
 

@@ -12,11 +12,10 @@ import numpy as np
 import numpy.typing as npt
 
 from heuristics.ladder import TIE, leg_ladder
+from network.arrays import FloatArray
 from network.demand import Demand
 
 __all__ = ["NestedLevels", "optimal_levels"]
-
-FloatArray = npt.NDArray[np.float64]
 
 
 @dataclass(frozen=True, eq=False)

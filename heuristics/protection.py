@@ -18,13 +18,11 @@ from heuristics.displacement import LegProducts
 from heuristics.emsr import JointLevels, joint_levels
 from heuristics.ladder import Ladder
 from heuristics.virtual import virtual_classes
+from network.arrays import FloatArray, IntArray
 from network.demand import Demand, Family
 from network.errors import SettingError
 
 __all__ = ["LegControl", "LegProtection", "leg_protection", "seat_value_curve", "seat_values"]
-
-FloatArray = npt.NDArray[np.float64]
-IntArray = npt.NDArray[np.integer]
 
 
 @dataclass(frozen=True)

@@ -16,11 +16,10 @@ import numpy.typing as npt
 import pandas as pd
 
 from heuristics.ladder import Ladder
+from network.arrays import FloatArray, IntArray
 
 __all__ = ["virtual_classes"]
 
-FloatArray = npt.NDArray[np.float64]
-IntArray = npt.NDArray[np.integer]
 
 _NOBODY = 1e-9
 _STEPS_AT_ONCE = 50_000

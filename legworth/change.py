@@ -9,7 +9,7 @@ import numpy as np
 from heuristics.arrivals import days_before_departure
 from lp import LpOptions, Method, NetworkSolution, solve_network
 from network import Network, SettingError
-from network.model import FloatArray, IntArray
+from network.arrays import FloatArray, IntArray
 
 __all__ = ["Change", "ChangeStudy", "LegMove", "changed_network", "parse_changes", "study_change"]
 

@@ -5,15 +5,13 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-import numpy.typing as npt
 
 from heuristics import LegControl, LegProtection, leg_products, leg_protection
 from network import Network
-from network.model import FloatArray, IntArray
+from network.arrays import BoolArray, FloatArray, IntArray
 
 __all__ = ["Connections", "ControlComparison", "compare_controls", "leg_control"]
 
-BoolArray = npt.NDArray[np.bool_]
 
 EQUAL = 1e-9
 """Share of a fare within which it counts as equal to its displacement."""

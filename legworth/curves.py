@@ -15,7 +15,7 @@ from heuristics.bounds import poisson_bounds, split_shares
 from heuristics.dynamic import REQUESTS_PER_STEP, PriceCurves, price_curves
 from heuristics.fare_split import SplitOptions, Stage, best_split
 from network import Component, Network, components
-from network.model import FloatArray, IntArray
+from network.arrays import FloatArray, IntArray
 
 __all__ = ["CurveMethod", "NetworkCurves", "curves_table", "network_curves"]
 

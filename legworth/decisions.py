@@ -13,11 +13,10 @@ import pyarrow.compute as pc
 
 from legworth.price_table import PriceTable
 from network import Network
-from network.model import FloatArray, IntArray
+from network.arrays import BoolArray, FloatArray, IntArray
 
 __all__ = ["Decisions", "Reason", "Requests", "decide", "decisions_table"]
 
-BoolArray = npt.NDArray[np.bool_]
 
 EQUAL = 1e-9
 """Share of the money asked within which it counts as equal to the price."""

@@ -10,8 +10,8 @@ from pathlib import Path
 import numpy as np
 
 from network import InputError, Network, SettingError
+from network.arrays import FloatArray, IntArray
 from network.faults import Faults
-from network.model import FloatArray, IntArray
 from network.reading import TableData, read_table
 from network.routes import positions
 from network.schema import table_schema

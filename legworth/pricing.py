@@ -19,7 +19,7 @@ from legworth.curves import CurveMethod, curves_table, network_curves
 from legworth.results import result_tables
 from lp import LpOptions, Method, NetworkSolution, Solution, solve, solve_network
 from network import Component, Fault, Network, read_folder
-from network.model import FloatArray
+from network.arrays import FloatArray
 
 __all__ = ["PricedNetwork", "PricingOptions", "price_folder"]
 

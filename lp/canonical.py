@@ -37,8 +37,8 @@ from scipy.sparse import csr_array, vstack
 from lp.implied import implied_bounds, path_upper
 from lp.least_squares import least_norm
 from lp.problem import SeatProgram
+from network.arrays import FloatArray, IntArray
 from network.errors import SolverStoppedError
-from network.model import FloatArray, IntArray
 
 __all__ = ["OptimalDuals", "canonical_prices", "optimal_duals"]
 

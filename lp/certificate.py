@@ -16,8 +16,8 @@ from dataclasses import asdict, dataclass
 import numpy as np
 
 from lp.problem import SeatProgram
+from network.arrays import FloatArray
 from network.errors import NotCertifiedError
-from network.model import FloatArray
 
 __all__ = ["Certificate", "certify"]
 

@@ -20,7 +20,7 @@ from functools import cached_property
 import numpy as np
 
 from network import Network
-from network.model import FloatArray, IntArray
+from network.arrays import FloatArray, IntArray
 from network.runs import SortedRuns
 
 __all__ = ["TAIL", "SeatColumns", "deterministic_columns", "probabilistic_columns", "sampled_columns"]

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 from scipy.sparse import csr_array
 
-from network.model import FloatArray
+from network.arrays import FloatArray
 
 __all__ = ["Limits", "implied_bounds", "path_upper"]
 

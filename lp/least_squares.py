@@ -12,8 +12,8 @@ from scipy.sparse import csc_array, csr_array, eye_array, vstack
 from scipy.sparse.linalg import lsmr
 
 from lp.implied import implied_bounds
+from network.arrays import FloatArray
 from network.errors import SolverStoppedError
-from network.model import FloatArray
 
 __all__ = ["least_norm"]
 

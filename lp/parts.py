@@ -11,7 +11,7 @@ from joblib import Parallel, delayed
 from lp.solution import LpOptions, Solution
 from lp.solve import solve
 from network import Component, Network, components
-from network.model import FloatArray
+from network.arrays import FloatArray
 
 __all__ = ["NetworkSolution", "solve_network"]
 

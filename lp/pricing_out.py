@@ -19,8 +19,9 @@ from scipy.sparse.linalg import lsmr
 
 from lp.problem import SeatProgram
 from lp.solvers import OpenProgram, SolverOptions, solve_open
+from network.arrays import FloatArray, IntArray
 from network.errors import SolverStoppedError
-from network.model import FloatArray, IntArray, ranges
+from network.model import ranges
 
 __all__ = ["FENCE", "PricedOut", "solve_priced_out"]
 

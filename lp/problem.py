@@ -9,7 +9,7 @@ from scipy.sparse import csr_array
 
 from lp.columns import SeatColumns
 from network import Network
-from network.model import FloatArray
+from network.arrays import FloatArray
 
 __all__ = ["SeatProgram"]
 

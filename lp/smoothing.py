@@ -17,7 +17,7 @@ import numpy as np
 from scipy.sparse.linalg import LinearOperator, cg
 
 from lp.problem import SeatProgram
-from network.model import FloatArray, IntArray
+from network.arrays import FloatArray, IntArray
 
 __all__ = ["WARM_WINDOWS", "WINDOWS", "SmoothedDual", "smoothed_prices"]
 

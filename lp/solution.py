@@ -8,8 +8,8 @@ from enum import StrEnum
 from lp.certificate import Certificate
 from lp.columns import TAIL
 from lp.solvers import SolverOptions
+from network.arrays import FloatArray
 from network.errors import SettingError
-from network.model import FloatArray
 
 __all__ = ["LpOptions", "Method", "Solution"]
 

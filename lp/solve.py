@@ -16,7 +16,7 @@ from lp.smoothing import WARM_WINDOWS, WINDOWS, smoothed_prices
 from lp.solution import LpOptions, Method, Solution
 from lp.solvers import solver_version
 from network import Network
-from network.model import FloatArray
+from network.arrays import FloatArray
 
 __all__ = ["Optimum", "Phase", "optimise", "solve"]
 

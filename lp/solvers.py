@@ -17,8 +17,8 @@ from typing import Literal
 import numpy as np
 import pulp
 
+from network.arrays import FloatArray, IntArray
 from network.errors import SettingError, SolverMissingError, SolverStoppedError
-from network.model import FloatArray, IntArray
 
 __all__ = ["SOLVERS", "OpenProgram", "SolverName", "SolverOptions", "solve_open", "solver_version"]
 

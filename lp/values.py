@@ -20,7 +20,7 @@ from lp.smoothing import smoothed_prices
 from lp.solution import LpOptions, Method
 from lp.solvers import SolverOptions
 from network import Network
-from network.model import FloatArray
+from network.arrays import FloatArray
 
 __all__ = ["SeatValue", "SeatValues"]
 

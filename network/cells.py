@@ -10,12 +10,12 @@ import numpy.typing as npt
 import pandas as pd
 from pandera.errors import SchemaErrors
 
+from network.arrays import BoolArray
 from network.faults import Faults
 from network.schema import Column, TableSchema
 
 __all__ = ["RawTable", "TableData", "typed_table"]
 
-BoolArray = npt.NDArray[np.bool_]
 
 NUMBER = r"[+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]+)?"
 INSTANT = (

@@ -15,11 +15,11 @@ import numpy as np
 import numpy.typing as npt
 from scipy import special
 
+from network.arrays import FloatArray
 from network.families import LAWS, SURE, Family, Law
 
 __all__ = ["Demand", "Family"]
 
-FloatArray = npt.NDArray[np.float64]
 IndexArray = npt.NDArray[np.intp]
 Place = slice | npt.NDArray[np.bool_]
 

@@ -13,9 +13,10 @@ import numpy as np
 import numpy.typing as npt
 from scipy import special, stats
 
+from network.arrays import FloatArray
+
 __all__ = ["LAWS", "SURE", "Family", "Law"]
 
-FloatArray = npt.NDArray[np.float64]
 
 SURE = -1
 """Key in `LAWS` of demand that is its mean without doubt."""

@@ -8,10 +8,11 @@ from pathlib import Path
 
 import numpy as np
 
+from network.arrays import IntArray
 from network.demand import Demand
 from network.errors import InputError
 from network.faults import Fault, Faults
-from network.model import IntArray, Legs, Network
+from network.model import Legs, Network
 from network.products import assemble_curves, assemble_products
 from network.reading import TableData, read_table
 from network.routes import Paths, assemble_legs, assemble_paths, assemble_stations

@@ -8,7 +8,8 @@ import networkx as nx
 import numpy as np
 from scipy.sparse.csgraph import connected_components
 
-from network.model import IntArray, Network
+from network.arrays import IntArray
+from network.model import Network
 
 __all__ = ["Component", "components", "route_graph"]
 

@@ -12,17 +12,12 @@ from datetime import datetime
 from functools import cached_property
 
 import numpy as np
-import numpy.typing as npt
 from scipy.sparse import csr_array
 
+from network.arrays import FloatArray, IntArray, NameArray, TimeArray
 from network.demand import Demand
 
-__all__ = ["BookingCurves", "FloatArray", "IntArray", "Legs", "Network", "Stations", "ranges"]
-
-FloatArray = npt.NDArray[np.float64]
-IntArray = npt.NDArray[np.integer]
-NameArray = npt.NDArray[np.object_]
-TimeArray = npt.NDArray[np.datetime64]
+__all__ = ["BookingCurves", "Legs", "Network", "Stations", "ranges"]
 
 
 def _freeze(record: object) -> None:

@@ -6,8 +6,9 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from network.arrays import FloatArray, IntArray, NameArray
 from network.faults import Faults
-from network.model import BookingCurves, FloatArray, IntArray, NameArray
+from network.model import BookingCurves
 from network.reading import TableData
 from network.routes import Paths, positions
 from network.settings import NetworkSettings

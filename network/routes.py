@@ -7,8 +7,9 @@ from dataclasses import dataclass
 import numpy as np
 import pandas as pd
 
+from network.arrays import IntArray, NameArray
 from network.faults import Faults
-from network.model import IntArray, Legs, NameArray, Stations
+from network.model import Legs, Stations
 from network.reading import TableData
 from network.settings import NetworkSettings
 

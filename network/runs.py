@@ -6,12 +6,11 @@ from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
-import numpy.typing as npt
+
+from network.arrays import FloatArray, IntArray
 
 __all__ = ["SortedRuns"]
 
-FloatArray = npt.NDArray[np.float64]
-IntArray = npt.NDArray[np.integer]
 
 FEW_STEPS = 3
 """Places by which an answer may lie beside a near one before it is found by bisection."""

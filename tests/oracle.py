@@ -16,7 +16,7 @@ from scipy.sparse import csr_array
 
 from heuristics.displacement import LegProducts
 from network import BookingCurves, Network
-from network.model import FloatArray
+from network.arrays import FloatArray
 from tests.networks import Plan
 
 __all__ = [

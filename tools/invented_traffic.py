@@ -13,8 +13,9 @@ from pathlib import Path
 from typing import Literal
 
 import numpy as np
-import numpy.typing as npt
 import pandas as pd
+
+from network.arrays import FloatArray, IntArray
 
 __all__ = [
     "FloatArray",
@@ -30,8 +31,6 @@ __all__ = [
     "write_folder",
 ]
 
-FloatArray = npt.NDArray[np.float64]
-IntArray = npt.NDArray[np.int64]
 TableFormat = Literal["csv", "parquet"]
 
 EARTH_RADIUS_KM = 6371.0088

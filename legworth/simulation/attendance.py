@@ -14,7 +14,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from network import Network, SettingError
-from network.model import FloatArray, IntArray
+from network.arrays import FloatArray, IntArray
 
 __all__ = ["Attendance", "rates_by_class"]
 

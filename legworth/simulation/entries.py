@@ -6,7 +6,6 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
-import numpy.typing as npt
 
 from legworth.simulation.forecast import at_instant
 from legworth.simulation.methods import METHODS, Method
@@ -14,11 +13,10 @@ from legworth.simulation.play import Bookings, play
 from legworth.simulation.requests import RequestPaths
 from legworth.simulation.rules import Rule, Situation
 from network import Network, SettingError
-from network.model import FloatArray, IntArray
+from network.arrays import BoolArray, FloatArray, IntArray
 
 __all__ = ["Entry", "Schedule", "entries_of", "play_anew", "play_schedule", "prepare_schedule"]
 
-BoolArray = npt.NDArray[np.bool_]
 
 AGAIN = "+"
 """Ends the name of a method that is prepared anew at every reading."""

@@ -19,7 +19,7 @@ import numpy.typing as npt
 from heuristics.arrivals import days_before_departure
 from legworth.simulation.requests import NOTHING_LEFT, first_departure
 from network import BookingCurves, Demand, Family, Network, SettingError
-from network.model import FloatArray, IntArray
+from network.arrays import FloatArray, IntArray
 
 __all__ = ["STRESSES", "Stress", "at_instant", "demand_times", "reading_instants", "wrong_forecast"]
 

@@ -21,7 +21,7 @@ from scipy.sparse import csc_array
 
 from lp import SeatProgram, certify, sampled_columns
 from network import Network, SolverStoppedError
-from network.model import FloatArray, IntArray
+from network.arrays import FloatArray, IntArray
 
 __all__ = ["Hindsight"]
 

@@ -10,11 +10,10 @@ import numpy.typing as npt
 from legworth.simulation.requests import RequestPaths
 from legworth.simulation.rules import Situation
 from network import Network
-from network.model import FloatArray, IntArray
+from network.arrays import BoolArray, FloatArray, IntArray
 
 __all__ = ["BINS", "Book", "Tally", "tally"]
 
-BoolArray = npt.NDArray[np.bool_]
 
 BINS = 40
 """Equal stretches of the horizon by which the build-up of bookings is told."""

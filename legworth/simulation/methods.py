@@ -21,7 +21,7 @@ from legworth.simulation.rules import CLOSED, EQUAL, PriceRule, Rule, SeatRule, 
 from lp import LpOptions, SolverOptions, solve
 from lp import Method as Program
 from network import Network
-from network.model import FloatArray, IntArray
+from network.arrays import FloatArray, IntArray
 
 __all__ = ["LEG_LEVEL", "METHODS", "Method"]
 

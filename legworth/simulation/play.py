@@ -9,11 +9,10 @@ import numpy.typing as npt
 
 from legworth.simulation.requests import RequestPaths
 from legworth.simulation.rules import Rule, Situation
-from network.model import IntArray
+from network.arrays import BoolArray, IntArray
 
 __all__ = ["Bookings", "play"]
 
-BoolArray = npt.NDArray[np.bool_]
 
 TOGETHER = 256
 """Requests of every path that are prepared together, so that the figures in work stay near the processor."""

@@ -25,16 +25,14 @@ from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
-import numpy.typing as npt
 
 from heuristics.arrivals import days_before_departure
 from legworth.simulation.attendance import Attendance
 from network import Network
-from network.model import FloatArray, IntArray
+from network.arrays import BoolArray, FloatArray, IntArray
 
 __all__ = ["RequestPaths", "draw_requests", "first_departure"]
 
-BoolArray = npt.NDArray[np.bool_]
 
 ATTENDANCE = 1
 """Ends the name of the streams from which cancellations and no-shows are drawn."""

@@ -12,16 +12,15 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
-import numpy.typing as npt
 
 from heuristics.arrivals import days_before_departure
 from heuristics.dynamic import PriceCurves
 from network import Network
-from network.model import FloatArray, IntArray, ranges
+from network.arrays import BoolArray, FloatArray, IntArray
+from network.model import ranges
 
 __all__ = ["CLOSED", "Judge", "PriceRule", "Rule", "SeatRule", "SeatTable", "Situation"]
 
-BoolArray = npt.NDArray[np.bool_]
 
 Judge = Callable[[int, IntArray], BoolArray]
 """Answers the n-th request of every path, (P,), given the seats left on the legs of each, (W, P)."""

@@ -17,7 +17,7 @@ from legworth.simulation.settings import BASELINE, SimulationOptions
 from legworth.simulation.tasks import Part, Played, Task, cut_tasks, prepare_part, run_task
 from legworth.simulation.trace import Trace
 from network import Component, Network, SettingError, components
-from network.model import FloatArray
+from network.arrays import FloatArray
 
 __all__ = ["Simulation", "simulate"]
 

@@ -13,7 +13,7 @@ from legworth.simulation.bounds import Bound
 from legworth.simulation.settings import BASELINE
 from legworth.simulation.study import Simulation
 from network import Network, table_schema
-from network.model import FloatArray
+from network.arrays import FloatArray
 
 __all__ = ["confidence", "load_factor", "result_table", "tightest"]
 

@@ -25,7 +25,7 @@ from legworth.simulation.settings import SimulationOptions
 from legworth.simulation.trace import Trace, trace_prices
 from lp import Method as Program
 from network import Network
-from network.model import FloatArray, IntArray
+from network.arrays import FloatArray, IntArray
 
 __all__ = ["Part", "Played", "Task", "cut_tasks", "prepare_part", "run_task"]
 

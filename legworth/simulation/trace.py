@@ -10,7 +10,7 @@ import numpy.typing as npt
 from legworth.simulation.entries import Schedule
 from legworth.simulation.requests import RequestPaths
 from legworth.simulation.rules import Situation
-from network.model import FloatArray
+from network.arrays import FloatArray
 
 __all__ = ["INSTANTS", "Trace", "trace_prices"]
 

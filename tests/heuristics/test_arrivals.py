@@ -13,7 +13,7 @@ from hypothesis import strategies as st
 from heuristics import leg_products
 from heuristics.arrivals import ArrivalPlan, days_before_departure
 from network import Network
-from network.model import FloatArray
+from network.arrays import FloatArray
 from tests.networks import Plan, examples, one_leg, plans
 from tests.oracle import Readings, departing
 

@@ -15,7 +15,7 @@ from heuristics.bounds import RevenueBounds, _legs_apart, period_bounds, poisson
 from heuristics.fare_split import FareSplit, SplitOptions, Stage, best_split, split_bound
 from lp import LpOptions, Method, solve
 from network import Network
-from network.model import FloatArray
+from network.arrays import FloatArray
 from tests.networks import Plan, examples, hub_plan, plans
 from tests.oracle import (
     Case,

@@ -16,7 +16,7 @@ from heuristics import dynamic, leg_products, optimal_levels
 from heuristics.arrivals import PUBLISHED_DAYS, ArrivalPlan
 from heuristics.dynamic import PriceCurves, price_curves, run_periods
 from network import Demand, Network
-from network.model import FloatArray
+from network.arrays import FloatArray
 from network.runs import SortedRuns
 from tests.networks import Plan, Product, examples, hub_plan, one_leg
 from tests.oracle import Readings, departing, leg_trail, rows_of

@@ -14,7 +14,7 @@ from heuristics import LegProducts, leg_products
 from heuristics.bounds import split_shares
 from heuristics.fare_split import FareSplit, SplitOptions, Stage, best_split, split_bound
 from lp import LpOptions, Method, solve
-from network.model import FloatArray
+from network.arrays import FloatArray
 from tests.networks import examples
 from tests.oracle import Case, drawn_case, least_split_bound, leg_trails, network_value
 

@@ -14,7 +14,7 @@ from scipy.sparse import csc_array, csr_array, eye_array, hstack, vstack
 
 from lp import SeatProgram, deterministic_columns, probabilistic_columns
 from network import Network
-from network.model import FloatArray
+from network.arrays import FloatArray
 
 __all__ = ["OptimalFace", "Reference", "programs", "reference", "value"]
 

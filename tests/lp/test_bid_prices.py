@@ -14,7 +14,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from lp import LpOptions, Method, SeatProgram, optimise, solve
-from network.model import FloatArray
+from network.arrays import FloatArray
 from tests.lp.reference import OptimalFace, programs, value
 from tests.networks import FAMILIES, Plan, Product, degenerate_plans, examples, one_leg, plans
 

@@ -11,7 +11,7 @@ from hypothesis import strategies as st
 
 from lp import SeatProgram, certify, deterministic_columns
 from network import NotCertifiedError
-from network.model import FloatArray
+from network.arrays import FloatArray
 from tests.lp.reference import OptimalFace, Reference, programs, reference
 from tests.networks import FAMILIES, Plan, degenerate_plans, examples, plans, sure_plan
 

@@ -9,7 +9,7 @@ from scipy.sparse import csr_array
 
 from lp.implied import implied_bounds
 from lp.least_squares import least_norm
-from network.model import FloatArray
+from network.arrays import FloatArray
 
 MONEY = 1000.0
 

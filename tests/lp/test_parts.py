@@ -9,7 +9,7 @@ from hypothesis import strategies as st
 
 from lp import LpOptions, Method, NetworkSolution, SolverOptions, solve, solve_network
 from network import Component, Network, SolverStoppedError
-from network.model import FloatArray
+from network.arrays import FloatArray
 from tests.networks import Plan, degenerate_plans, examples, hub_plan, plans
 
 

@@ -8,7 +8,7 @@ import numpy as np
 from hypothesis import given
 from hypothesis import strategies as st
 
-from network.model import FloatArray, IntArray
+from network.arrays import FloatArray, IntArray
 from network.runs import SortedRuns
 from tests.networks import examples
 

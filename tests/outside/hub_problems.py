@@ -18,7 +18,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from network import Network
-from network.model import FloatArray
+from network.arrays import FloatArray
 from tests.networks import Plan
 
 __all__ = ["PROBLEMS", "HubProblem"]

@@ -13,7 +13,7 @@ from heuristics.bounds import RevenueBounds, period_bounds, split_shares
 from heuristics.fare_split import FareSplit, SplitOptions, Stage, best_split
 from lp import LpOptions, Method, Solution, solve
 from network import Network
-from network.model import FloatArray
+from network.arrays import FloatArray
 from tests.oracle import leg_trails
 from tests.outside.hub_problems import PROBLEMS, HubProblem
 

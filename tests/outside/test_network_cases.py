@@ -16,7 +16,7 @@ import pytest
 from lp import SOLVERS, LpOptions, Method, SeatProgram, Solution, SolverOptions, certify, deterministic_columns, solve
 from lp.solvers import SolverName
 from network import Network
-from network.model import FloatArray
+from network.arrays import FloatArray
 from tests.lp.reference import OptimalFace, reference
 from tests.networks import Plan, sure_plan
 from tests.outside.hub_problems import PROBLEMS, HubProblem

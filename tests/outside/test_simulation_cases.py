@@ -18,7 +18,7 @@ from legworth.simulation.hindsight import Hindsight
 from legworth.simulation.requests import RequestPaths
 from legworth.simulation.rules import Situation
 from network import Network
-from network.model import FloatArray
+from network.arrays import FloatArray
 from tests.oracle import departing
 from tests.outside.hub_problems import PERIODS, PROBLEMS, HubProblem
 

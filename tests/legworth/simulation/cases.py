@@ -8,7 +8,7 @@ import numpy as np
 
 from legworth.simulation.requests import RequestPaths
 from network import Network
-from network.model import FloatArray, IntArray
+from network.arrays import FloatArray, IntArray
 from tests.networks import hub_plan, one_leg
 from tests.oracle import Readings, departing
 

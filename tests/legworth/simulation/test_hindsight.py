@@ -9,7 +9,7 @@ from scipy.optimize import Bounds, LinearConstraint, milp
 from legworth.simulation.hindsight import Hindsight
 from legworth.simulation.requests import draw_requests
 from network import Network
-from network.model import IntArray
+from network.arrays import IntArray
 from tests.legworth.simulation.cases import hub_in_time
 from tests.networks import sure_plan
 

@@ -18,7 +18,7 @@ from legworth.simulation.requests import RequestPaths, draw_requests
 from legworth.simulation.rules import PriceRule, Rule, SeatRule, Situation
 from lp import Method as Program
 from network import Network
-from network.model import IntArray
+from network.arrays import IntArray
 from tests.legworth.simulation.cases import hub_in_time, leg_in_time, plain_play, revenue_of
 
 QUICK = [name for name in METHODS if name not in ("randomised", "fare-splits")]
