@@ -122,3 +122,20 @@ def test_displacement_by_hand() -> None:
 def test_samples_have_no_exact_value() -> None:
     with pytest.raises(ValueError, match="not for samples"):
         SeatValues.of(hub_plan(1, spokes=2).network(), LpOptions(Method.RANDOMISED))
+
+
+@pytest.mark.parametrize("seed", range(4))
+def test_one_seat_displaces_what_the_prices_before_and_after_say(seed: int) -> None:
+    # V is concave: V(c) - V(c - a) is at least p.a for every optimal dual p at c, at most p.a for every one at c - a.
+    network = hub_plan(seed).network()
+    before = solve(network)
+    values = SeatValues.of(network, start=before.bid_price)
+    for itinerary in range(0, network.n_itineraries, 7):
+        path = network.path_leg[network.path_start[itinerary] : network.path_start[itinerary + 1]]
+        seats = network.remaining.copy()
+        seats[path] -= 1
+        after = solve(network.with_remaining(seats), start=before.bid_price)
+        exact = values.displacement(itinerary, 1)
+        for prices in (before.bid_price, before.next_seat):
+            assert exact >= prices[path].sum() - 1e-6
+        assert exact <= after.next_seat[path].sum() + 1e-6
