@@ -22,7 +22,7 @@ from network.arrays import FloatArray, IntArray
 from network.model import BookingCurves, Network
 from network.runs import SortedRuns
 
-__all__ = ["PUBLISHED_DAYS", "ArrivalPlan", "Segment", "days_before_departure"]
+__all__ = ["DAY", "PUBLISHED_DAYS", "ArrivalPlan", "Segment", "days_before_departure"]
 
 
 HOURS = (0.5, 1, 2, 3, 4, 6, 8, 12, 16, 20)
@@ -35,6 +35,7 @@ PUBLISHED_DAYS = (
 """Days before departure at which price curves are published: dense where prices fall fast."""
 
 DAY = 86_400.0
+"""Seconds."""
 
 
 @dataclass(frozen=True, eq=False)

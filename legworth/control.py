@@ -10,11 +10,11 @@ from heuristics import LegControl, LegProtection, leg_products, leg_protection
 from network import Network
 from network.arrays import BoolArray, FloatArray, IntArray
 
-__all__ = ["Connections", "ControlComparison", "compare_controls", "leg_control"]
+__all__ = ["EQUAL", "Connections", "ControlComparison", "compare_controls", "leg_control"]
 
 
 EQUAL = 1e-9
-"""Share of a fare within which it counts as equal to its displacement."""
+"""Share of the money asked within which it counts as equal to the price of the seats."""
 
 
 @dataclass(frozen=True, eq=False)

@@ -11,17 +11,13 @@ import pandas as pd
 import pyarrow as pa
 import pyarrow.compute as pc
 
+from heuristics.arrivals import DAY
+from legworth.control import EQUAL
 from legworth.price_table import PriceTable
 from network import Network
 from network.arrays import BoolArray, FloatArray, IntArray
 
 __all__ = ["Decisions", "Reason", "Requests", "decide", "decisions_table"]
-
-
-EQUAL = 1e-9
-"""Share of the money asked within which it counts as equal to the price."""
-
-DAY = 86_400.0
 
 UNPRICED, SHORT, EMPTY, DEPARTED = 1e15, 2e15, 3e15, 4e15
 """Weights of a leg without price, with too few seats, with none, or departed: far above any price."""

@@ -241,4 +241,4 @@ def money(value: float) -> str:
 
 def price_text(value: float) -> str:
     """Two decimals, thousands apart."""
-    return f"{value:,.2f}"
+    return f"{round(value, 2) + 0.0:,.2f}"

@@ -123,12 +123,7 @@ def _instants(
     unreadable = present & (local_time.isna().to_numpy() | (np.abs(minutes) > GREATEST_OFFSET))
     without = present & ~unreadable & parts[3].isna().to_numpy()
     for bad, problem in ((unreadable, "is not a date and time"), (without, "has no offset from UTC")):
-        raw.note(
-            faults,
-            np.flatnonzero(bad),
-            column.name,
-            lambda row, problem=problem: f"{_quote(values.iloc[row])} {problem}; {EXAMPLE}",  # type: ignore[misc]
-        )
+        raw.note(faults, np.flatnonzero(bad), column.name, _quoting(values, f"{problem}; {EXAMPLE}"))
     utc = local_time - pd.to_timedelta(minutes, unit="min")
     return utc.astype("datetime64[s]").mask(unreadable | without), minutes, unreadable | without
 
@@ -175,12 +170,7 @@ def _check_limits(raw: RawTable, frame: pd.DataFrame, reported: dict[str, BoolAr
             "pattern": "has white space where none may be, or is blank; use names without spaces"
             + (", one space between them" if column.name == "legs" else ""),
         }[str(check)]
-        raw.note(
-            faults,
-            rows,
-            column.name,
-            lambda row, values=values, problem=problem: f"{_quote(values.iloc[row])} {problem}",  # type: ignore[misc]
-        )
+        raw.note(faults, rows, column.name, _quoting(values, problem))
         if column.numeric:
             frame[column.name] = values.mask(np.isin(np.arange(len(frame)), rows))
 
@@ -208,6 +198,11 @@ def _check_key(raw: RawTable, frame: pd.DataFrame, faults: Faults) -> None:
 
 def _plain(value: object) -> str:
     return f"{value:.10g}" if isinstance(value, float) else str(value)
+
+
+def _quoting(values: pd.Series, problem: str) -> Callable[[int], str]:
+    """Say of a row that its value has this problem."""
+    return lambda row: f"{_quote(values.iloc[row])} {problem}"
 
 
 def _quote(value: object) -> str:

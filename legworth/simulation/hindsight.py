@@ -55,7 +55,8 @@ class Hindsight:
         self._network = network
         # All products at a width of one: the order of their columns is that of any demand.
         self._columns = sampled_columns(network, np.ones(network.n_products))
-        self._solver: Any = highspy.Highs()  # type: ignore[no-untyped-call]
+        make: Any = highspy.Highs  # it carries no types
+        self._solver = make()
         self._solver.setOptionValue("output_flag", False)
         self._solver.setOptionValue("threads", 1)
         if len(self._columns):

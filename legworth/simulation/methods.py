@@ -16,8 +16,9 @@ from heuristics import LegControl, LegProtection, leg_products, leg_protection
 from heuristics.arrivals import ArrivalPlan
 from heuristics.dynamic import price_curves
 from heuristics.protection import seat_values
+from legworth.control import EQUAL
 from legworth.curves import CurveMethod, network_curves
-from legworth.simulation.rules import CLOSED, EQUAL, PriceRule, Rule, SeatRule, SeatTable, Situation
+from legworth.simulation.rules import CLOSED, PriceRule, Rule, SeatRule, SeatTable, Situation
 from lp import LpOptions, SolverOptions, solve
 from lp import Method as Program
 from network import Network

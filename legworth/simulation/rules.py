@@ -15,6 +15,7 @@ import numpy as np
 
 from heuristics.arrivals import days_before_departure
 from heuristics.dynamic import PriceCurves
+from legworth.control import EQUAL
 from network import Network
 from network.arrays import BoolArray, FloatArray, IntArray
 from network.model import ranges
@@ -30,9 +31,6 @@ CLOSED = np.iinfo(np.int32).max
 
 SOON = 1e-6
 """Days that count as no time."""
-
-EQUAL = 1e-9
-"""Share of a fare within which it counts as equal to a sum of prices."""
 
 
 @dataclass(frozen=True, eq=False)

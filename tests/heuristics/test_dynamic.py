@@ -146,7 +146,10 @@ def legs() -> st.SearchStrategy[Leg]:
     """Draw legs; some have no seats, no demand or no worth."""
     row = st.tuples(st.integers(0, 20).map(lambda n: 10.0 * n), st.integers(0, 12).map(lambda n: n / 2))
     rows = st.lists(st.tuples(row, st.integers(-1, 2)), min_size=1, max_size=5)
-    build = lambda seats, rows, days: Leg(seats, tuple(r for r, _ in rows), days, tuple(c for _, c in rows))  # noqa: E731
+
+    def build(seats: int, rows: list[tuple[tuple[float, float], int]], days: float) -> Leg:
+        return Leg(seats, tuple(r for r, _ in rows), days, tuple(c for _, c in rows))
+
     return st.builds(build, st.integers(0, 15), rows, st.integers(0, 120).map(lambda n: n / 3))
 
 

@@ -130,7 +130,7 @@ def test_the_loop_with_cancellations_answers_as_a_plain_one(name: str) -> None:
 def _accepts(rule: object, situation: Situation, product: int, at: float, left: np.ndarray, legs: np.ndarray) -> bool:
     if isinstance(rule, SeatRule):
         return bool(np.all(left[legs] >= rule.need[0, product, : len(legs)]))
-    table = rule.table  # type: ignore[attr-defined]
+    table = rule.table
     asked = sum(table.price(int(k), left[k : k + 1], float(situation.days_now[k]) - at)[0] for k in legs)
     return bool(situation.fare[product] * (1 + 1e-9) >= asked)
 
@@ -170,6 +170,6 @@ def test_rates_not_understood(text: str) -> None:
 def test_limits() -> None:
     for wrong in ({"cancelled": (("*", 1.5),)}, {"authorised": 0.9}, {"denied_cost": -1.0}):
         with pytest.raises(SettingError):
-            replace(Attendance(), **wrong)  # type: ignore[arg-type]
+            replace(Attendance(), **wrong)
     with pytest.raises(SettingError, match="no fare class 'Z'"):
         Attendance(cancelled=(("Z", 0.1),)).rates(hub_in_time(3))

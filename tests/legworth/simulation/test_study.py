@@ -12,6 +12,7 @@ import pytest
 from legworth.simulation import BASELINE, Simulation, SimulationOptions, result_table, simulate
 from legworth.simulation.entries import entries_of
 from legworth.simulation.files import write_simulation
+from legworth.simulation.forecast import Stress
 from legworth.simulation.page import simulation_page
 from legworth.simulation.report import simulation_as_json
 from legworth.simulation.stress import under_stress
@@ -121,8 +122,6 @@ def test_share_of_bound_of_few_paths_goes_by_their_own_hindsight(found: Simulati
 
 
 def test_right_forecast_under_neutral_stress_is_the_right_forecast(network: Network, found: Simulation) -> None:
-    from legworth.simulation.forecast import Stress  # noqa: PLC0415
-
     options = replace(OPTIONS, methods=METHODS, reoptimised_paths=0)
     same = simulate(network, options, Stress("as it is"))
     assert same.bounds == []
