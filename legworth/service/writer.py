@@ -1,0 +1,91 @@
+"""One thread that writes the ledger: orders that wait together share one transaction, and so one write to the disk."""
+
+from __future__ import annotations
+
+import queue
+import threading
+from concurrent.futures import Future
+
+from legworth.service.errors import LedgerError
+from legworth.service.ledger import Ledger
+from legworth.service.orders import Order, Outcome
+
+__all__ = ["LedgerWriter"]
+
+MOST_TOGETHER = 256
+"""Orders in one transaction at most, so that none waits long."""
+
+
+class LedgerWriter:
+    """Carries out orders from many threads, in the order in which they come.
+
+    Parameters
+    ----------
+    ledger
+        Where they are carried out.
+    most_waiting
+        Orders that may wait; further ones are turned away at once.
+    """
+
+    def __init__(self, ledger: Ledger, most_waiting: int = 10_000) -> None:
+        self._ledger = ledger
+        self._waiting: queue.Queue[tuple[Order, Future[Outcome]] | None] = queue.Queue(most_waiting)
+        self._closing = threading.Lock()
+        self._closed = False
+        self._thread = threading.Thread(target=self._write, name="ledger", daemon=True)
+        self._thread.start()
+
+    def submit(self, order: Order) -> Future[Outcome]:
+        """Hand an order in; the future holds its outcome once that is on the disk, or the error.
+
+        Raises
+        ------
+        LedgerError
+            If too many orders wait already, or the writer is closed.
+        """
+        answer: Future[Outcome] = Future()
+        with self._closing:
+            if self._closed:
+                raise LedgerError("the service is stopping; send the order again under the same key")
+            try:
+                self._waiting.put_nowait((order, answer))
+            except queue.Full as error:
+                raise LedgerError("too many orders wait; send the order again under the same key") from error
+        return answer
+
+    def close(self) -> None:
+        """Carry out what waits, then stop."""
+        with self._closing:
+            if self._closed:
+                return
+            self._closed = True
+        self._waiting.put(None)
+        self._thread.join()
+
+    def _write(self) -> None:
+        while (first := self._waiting.get()) is not None:
+            together = [first]
+            last = False
+            while len(together) < MOST_TOGETHER and not self._waiting.empty():
+                following = self._waiting.get()
+                if following is None:
+                    last = True
+                    break
+                together.append(following)
+            self._carry_out(together)
+            if last:
+                return
+
+    def _carry_out(self, together: list[tuple[Order, Future[Outcome]]]) -> None:
+        wanted = [(order, answer) for order, answer in together if answer.set_running_or_notify_cancel()]
+        try:
+            outcomes = self._ledger.carry_out([order for order, _ in wanted])
+        except Exception as error:  # whoever waits must hear of it, and the thread must live on
+            for _, answer in wanted:
+                answer.set_exception(error)
+            return
+        for (_, answer), outcome in zip(wanted, outcomes, strict=True):
+            if isinstance(outcome, Exception):
+                answer.set_exception(outcome)
+            else:
+                answer.set_result(outcome)
