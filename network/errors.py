@@ -5,10 +5,14 @@
     LegworthError                exit 1, HTTP 500   anything this project raises on purpose
     |-- InputError               exit 2, HTTP 422   the tables or the request are wrong; lists every fault
     |-- SettingError             exit 2, HTTP 422   an option or a setting is out of its limits
-    `-- SolveError               exit 3, HTTP 503   no certified optimum, so no bid price
-        |-- SolverMissingError   the solver named is not installed or cannot be started
-        |-- SolverStoppedError   the solver ended without an optimum (time limit, infeasible, crash)
-        `-- NotCertifiedError    the solver claims an optimum that our own certificate does not confirm
+    |   `-- StoreError           exit 2, HTTP 503   the store of nights cannot be used so: no space, no such night
+    |       |-- StoreBusyError   exit 2, HTTP 503   another process is putting a night into it
+    |       `-- NightDamagedError exit 2, HTTP 503  a night is missing, unreadable or not what its manifest says
+    |-- SolveError               exit 3, HTTP 503   no certified optimum, so no bid price
+    |   |-- SolverMissingError   the solver named is not installed or cannot be started
+    |   |-- SolverStoppedError   the solver ended without an optimum (time limit, infeasible, crash)
+    |   `-- NotCertifiedError    the solver claims an optimum that our own certificate does not confirm
+    `-- NightStopped             exit 4, HTTP 409   a check stopped the night; the last one stays in force
 
 Exit code 0 means that everything asked for was done; 130 that the user interrupted it.
 """
@@ -24,11 +28,15 @@ if TYPE_CHECKING:
 __all__ = [
     "InputError",
     "LegworthError",
+    "NightDamagedError",
+    "NightStopped",
     "NotCertifiedError",
     "SettingError",
     "SolveError",
     "SolverMissingError",
     "SolverStoppedError",
+    "StoreBusyError",
+    "StoreError",
 ]
 
 
@@ -63,6 +71,20 @@ class SettingError(LegworthError):
     http_status = 422
 
 
+class StoreError(SettingError):
+    """The store of nights cannot be used as asked: no space, no such night, not a store."""
+
+    http_status = 503
+
+
+class StoreBusyError(StoreError):
+    """Another process is putting a night into the store."""
+
+
+class NightDamagedError(StoreError):
+    """A night is missing, unreadable, or not what its manifest says."""
+
+
 class SolveError(LegworthError):
     """No certified optimum was reached, so there is no bid price."""
 
@@ -80,3 +102,24 @@ class SolverStoppedError(SolveError):
 
 class NotCertifiedError(SolveError):
     """The solver claims an optimum that the certificate does not confirm."""
+
+
+class NightStopped(LegworthError):
+    """A check found tonight's prices too odd to go into force by themselves; the last night stays in force.
+
+    Parameters
+    ----------
+    night
+        Name of the night that was stopped.
+    reasons
+        One line a check that stopped it: what was found, the limit, and what to look at first.
+    """
+
+    exit_code = 4
+    http_status = 409
+
+    def __init__(self, night: str, reasons: Sequence[str]) -> None:
+        self.night, self.reasons = night, tuple(reasons)
+        super().__init__(
+            "\n".join([f"night {night} is stopped and not published; the last one stays in force", *reasons])
+        )

@@ -1,0 +1,181 @@
+"""The commands of ``legworth nights``, as they are typed."""
+
+from __future__ import annotations
+
+import csv
+import io
+import json
+from pathlib import Path
+
+import pytest
+
+from legworth.store import Check, Forced, Store
+from tests.commands import Outcome, run
+from tests.legworth.store.small_nights import PARTS, publish, publish_priced
+
+
+@pytest.fixture
+def store(tmp_path: Path) -> Store:
+    store = Store.open(tmp_path / "store", create=True)
+    first = publish_priced(store, day=3)
+    publish_priced(store, day=4, factor=1.5, leave_out=("2030-03-01", "2030-03-03"))
+    assert first.number == 1
+    return store
+
+
+def nights(store: Store, *arguments: str) -> Outcome:
+    return run("nights", "--store", store.path, *arguments)
+
+
+def test_list_shows_every_night_and_which_is_in_force(store: Store) -> None:
+    found = nights(store, "list")
+    assert found.code == 0
+    lines = [line for line in found.out.splitlines() if "2030-" in line]
+    assert len(lines) == 2
+    assert "00001-2030-02-28" in lines[0]
+    assert "yes" in lines[1]
+    assert "yes" not in lines[0]
+    document = json.loads(nights(store, "list", "--json").out)
+    assert document["in_force"] == "00002-2030-03-01"
+    assert [night["legs"] for night in document["nights"]] == [5, 1]
+    (store.path / "nights" / "night=00002-2030-03-01" / "manifest.json").write_text("{")
+    damaged = nights(store, "list")
+    assert damaged.code == 0
+    assert "is damaged" in damaged.err
+    assert "damaged: " in damaged.out
+    assert json.loads(nights(store, "list", "--json").out)["in_force"] is None
+
+
+def test_show_tells_what_a_night_holds_and_what_became_of_it(store: Store) -> None:
+    publish(
+        store,
+        1.0,
+        day=5,
+        checks=(Check(name="bid prices moved", limit=0.2, found=0.5, passed=False, look_at=("L1", "L2")),),
+        forced=Forced(who="night desk", reason="new timetable"),
+    )
+    found = nights(store, "show")
+    assert found.code == 0
+    for text in (
+        "Night 00003-2030-03-02, in force",
+        "6 legs",
+        "bid prices moved",
+        "L1, L2",
+        "force by night desk: new",
+    ):
+        assert text in found.out
+    document = json.loads(nights(store, "show", "00001-2030-02-28", "--json").out)
+    assert document["in_force"] is False
+    assert document["manifest"]["rows"]["legs"] == 5
+    assert [entry["event"] for entry in document["history"]] == ["publish"]
+
+
+def test_compare_shows_moves_legs_and_revenue_like_for_like(store: Store) -> None:
+    document = json.loads(nights(store, "compare", "00001-2030-02-28", "--json").out)
+    assert document["legs_in_both"] == document["legs_moved"] == 1
+    assert document["moved"][0]["leg"] == "L4"
+    assert document["moved"][0]["after"] == pytest.approx(1.5 * document["moved"][0]["before"])
+    assert document["departed"] == [], "no leg leaves before the snapshot of 2030-03-01T02:30Z"
+    assert document["gone"] == ["L1", "L2", "L3", "L5"]
+    assert (document["revenue_before"], document["revenue_after"]) == (1000.0, 1500.0)
+    back = json.loads(nights(store, "compare", "00002-2030-03-01", "00001-2030-02-28", "--json").out)
+    assert back["added"] == ["L1", "L2", "L3", "L5"]
+    publish_priced(store, day=5, leave_out=("2030-03-01",))
+    found = nights(store, "compare", "00001-2030-02-28", "--top", "1")
+    assert found.code == 0
+    assert "3 legs departed: L1, L2, L3" in found.out
+    assert "0 of 2 legs that both have changed their bid price" in found.out
+    assert "Revenue to come on the 2 parts that both have: 2,000 then, 2,000 now, +0" in found.out
+
+
+def test_restore_needs_a_reason_and_says_who(store: Store) -> None:
+    assert nights(store, "restore", "00001-2030-02-28").code == 2
+    assert nights(store, "restore", "00001-2030-02-28", "--reason", " ").code == 2
+    done = nights(store, "restore", "00001-2030-02-28", "--reason", "old demand")
+    assert (done.code, done.out) == (0, "Night 00001-2030-02-28 is in force.\n")
+    assert "restore by " in nights(store, "show").out
+    again = json.loads(nights(store, "restore", "00002-2030-03-01", "--reason", "right again", "--json").out)
+    assert again["in_force"] == "00002-2030-03-01"
+
+
+def test_query_prints_a_table_csv_or_json(store: Store) -> None:
+    ask = "SELECT leg, bid_price, remaining FROM bid_prices WHERE night = '00001-2030-02-28' ORDER BY leg"
+    shown = nights(store, "query", ask, "--rows", "2")
+    assert "L1" in shown.out
+    assert "and 3 more rows" in shown.out
+    rows = list(csv.DictReader(io.StringIO(nights(store, "query", ask, "--format", "csv").out)))
+    assert [row["leg"] for row in rows] == ["L1", "L2", "L3", "L4", "L5"]
+    document = json.loads(nights(store, "query", ask, "--json").out)
+    assert [float(row["bid_price"]) for row in rows] == [row["bid_price"] for row in document["rows"]]
+    whole = "SELECT NULL AS nothing, 1.5 AS price, TIMESTAMPTZ '2030-01-01 00:00:00+00' AS at, ['nan'::DOUBLE] AS odd"
+    assert nights(store, "query", whole).code == 0
+    assert json.loads(nights(store, "query", whole, "--json").out)["rows"][0]["odd"] == [None]
+    refused = nights(store, "query", "DELETE FROM nights", "--json")
+    assert refused.code == 2
+    assert json.loads(refused.out)["ok"] is False
+
+
+def test_verify_ends_with_2_where_anything_is_damaged(store: Store) -> None:
+    sound = nights(store, "verify")
+    assert (sound.code, sound.out) == (0, "2 nights verified, 0 damaged\n")
+    path = store.nights()[0].folder / "part=2030-03-01" / "legs.parquet"
+    path.write_bytes(path.read_bytes()[:-1] + b"?")
+    damaged = nights(store, "verify")
+    assert damaged.code == 2
+    assert "00001-2030-02-28: part=2030-03-01/legs.parquet has been changed" in damaged.out
+    document = json.loads(nights(store, "verify", "--json").out)
+    assert document["ok"] is False
+    assert len(document["nights"]["00001-2030-02-28"]) == 1
+    assert nights(store, "verify", "00002-2030-03-01").code == 0
+    (store.path / "in_force").write_text("?")
+    assert nights(store, "verify").code == 2
+
+
+def test_hand_over_is_valid_from_the_instant_of_publication_or_restoring(store: Store, tmp_path: Path) -> None:
+    folder = tmp_path / "prices"
+    done = nights(store, "hand-over", "--to", str(folder))
+    assert done.code == 0
+    assert "1 bid prices and " in done.out
+    note = json.loads((folder / "hand_over.json").read_text())
+    assert note["night"] == "00002-2030-03-01"
+    assert note["valid_from"][:16] == store.history()[-1].at.isoformat()[:16]
+    store.restore("00001-2030-02-28", "desk", "why not")
+    document = json.loads(
+        nights(
+            store, "hand-over", "--to", str(folder), "--valid-from", "2030-03-01T06:00+01:00", "--by-part", "--json"
+        ).out
+    )
+    assert document["rows"]["bid_prices"] == 5
+    assert json.loads((folder / "hand_over.json").read_text())["valid_from"] == "2030-03-01T05:00:00Z"
+    assert (folder / "price_curves" / "2030-03-01.csv").exists()
+    for wrong in ("tomorrow", "2030-03-01T06:00"):
+        refused = nights(store, "hand-over", "--to", str(folder), "--valid-from", wrong)
+        assert refused.code == 2
+        assert "write it as" in refused.err
+
+
+@pytest.mark.parametrize(
+    "arguments",
+    [("list",), ("show",), ("compare", "x"), ("query", "SELECT 1"), ("verify",), ("hand-over", "--to", "x")],
+)
+def test_a_store_must_be_named_and_be_one(tmp_path: Path, arguments: tuple[str, ...]) -> None:
+    unnamed = run("nights", *arguments)
+    assert unnamed.code == 2
+    assert "name the store" in unnamed.err
+    wrong = run("nights", "--store", tmp_path / "nowhere", *arguments)
+    assert wrong.code == 2
+    assert "is no store of nights" in wrong.err
+    assert not (tmp_path / "nowhere").exists()
+
+
+def test_an_empty_store_has_no_night_in_force(tmp_path: Path) -> None:
+    store = Store.open(tmp_path / "store", create=True)
+    assert nights(store, "list").code == 0
+    shown = nights(store, "show")
+    assert shown.code == 2
+    assert "no night is in force" in shown.err
+    same = publish(store, 1.0)
+    refused = nights(store, "compare", same.name, same.name)
+    assert refused.code == 2
+    assert "is given twice" in refused.err
+    assert set(store.nights()[0].parts()) == set(PARTS)
