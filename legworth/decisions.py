@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from enum import IntEnum
+from string import Formatter
 
 import numpy as np
 import numpy.typing as npt
@@ -17,7 +18,7 @@ from legworth.price_table import PriceTable
 from network import Network
 from network.arrays import BoolArray, FloatArray, IntArray
 
-__all__ = ["Decisions", "Reason", "Requests", "decide", "decisions_table"]
+__all__ = ["SENTENCES", "Decisions", "Reason", "Requests", "decide", "decisions_table"]
 
 UNPRICED, SHORT, EMPTY, DEPARTED = 1e15, 2e15, 3e15, 4e15
 """Weights of a leg without price, with too few seats, with none, or departed: far above any price."""
@@ -36,6 +37,23 @@ class Reason(IntEnum):
     NO_PRICE = 7
     FARE_BELOW_PRICE = 8
     FARE_REACHES_PRICE = 9
+
+
+SENTENCES = {
+    Reason.UNKNOWN_ITINERARY: "Refused: the itinerary is not known.",
+    Reason.UNKNOWN_PRODUCT: "Refused: the itinerary is not sold in this fare class.",
+    Reason.NO_FARE: "Refused: neither a fare nor a fare class is given.",
+    Reason.NO_PASSENGERS: "Refused: nobody is to travel; ask for at least one seat.",
+    Reason.DEPARTED: "Refused: {binding} has departed.",
+    Reason.NO_SEATS: "Refused: {binding} has no seats left.",
+    Reason.TOO_FEW_SEATS: "Refused: {binding} has fewer than {party} seats left.",
+    Reason.NO_PRICE: "Refused: {binding} has no price; price the network again.",
+    Reason.FARE_BELOW_PRICE: "Refused: {asked} asked is below the price of the seats, {price} ({prices}); "
+    "{binding} costs most.",
+    Reason.FARE_REACHES_PRICE: "Accepted: {asked} asked reaches the price of the seats, {price} ({prices}); "
+    "{binding} costs most.",
+}
+"""The answer in words; money of the whole party, and the price of the party on each leg in brackets."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -95,12 +113,22 @@ class Decisions:
         return np.equal(self.reason, Reason.FARE_REACHES_PRICE)
 
 
-def decide(network: Network, prices: PriceTable, requests: Requests) -> Decisions:
+def decide(network: Network, prices: PriceTable, requests: Requests, remaining: IntArray | None = None) -> Decisions:
     """Judge every request by itself against the seats left now.
 
     A request is accepted when its itinerary is known and still to depart, the party fits into every leg, and
     the fares of the party reach the price of its seats on all legs together.
+
+    Parameters
+    ----------
+    network, prices
+        What is sold, and at which prices.
+    requests
+        What is asked.
+    remaining
+        (L,) seats left now, if they are not those of the network's snapshot.
     """
+    remaining = network.remaining if remaining is None else remaining
     known = requests.itinerary >= 0
     itinerary = np.where(known, requests.itinerary, 0)
     fare = np.where(
@@ -117,7 +145,7 @@ def decide(network: Network, prices: PriceTable, requests: Requests) -> Decision
     departs = network.legs.departs.astype("datetime64[s]").astype(np.int64)
     days = (departs[leg] - requests.moment[owner]) / DAY
     seats = requests.seats[owner]
-    left = network.remaining[leg]
+    left = remaining[leg]
     fits = (left >= seats) & (left > 0) & (days > 0) & (seats > 0)
     leg_price = np.full(len(leg), np.nan)
     leg_price[fits] = prices.party_price(leg[fits], days[fits], left[fits], seats[fits])
@@ -216,28 +244,19 @@ def _joined_prices(found: Decisions) -> pa.Array:
 
 def _sentences(found: Decisions, requests: Requests, binding: pa.Array, prices: pa.Array) -> pa.Array:
     """One sentence a request, by reason."""
-    party = pc.cast(pa.array(requests.seats), pa.string())
-    asked = _money(found.fare * requests.seats)
-    price = _money(found.displacement)
-
-    def text(*parts: object) -> pa.Array:
-        filled = [pc.fill_null(part, "") if isinstance(part, pa.Array) else pa.scalar(str(part)) for part in parts]
-        return pc.binary_join_element_wise(*filled, "")
-
-    compare = (price, " (", prices, "); ", binding, " costs most.")
-    sentences = {
-        Reason.UNKNOWN_ITINERARY: text("Refused: the itinerary is not known."),
-        Reason.UNKNOWN_PRODUCT: text("Refused: the itinerary is not sold in this fare class."),
-        Reason.NO_FARE: text("Refused: neither a fare nor a fare class is given."),
-        Reason.NO_PASSENGERS: text("Refused: nobody is to travel; ask for at least one seat."),
-        Reason.DEPARTED: text("Refused: ", binding, " has departed."),
-        Reason.NO_SEATS: text("Refused: ", binding, " has no seats left."),
-        Reason.TOO_FEW_SEATS: text("Refused: ", binding, " has fewer than ", party, " seats left."),
-        Reason.NO_PRICE: text("Refused: ", binding, " has no price; price the network again."),
-        Reason.FARE_BELOW_PRICE: text("Refused: ", asked, " asked is below the price of the seats, ", *compare),
-        Reason.FARE_REACHES_PRICE: text("Accepted: ", asked, " asked reaches the price of the seats, ", *compare),
+    words = {
+        "party": pc.cast(pa.array(requests.seats), pa.string()),
+        "asked": _money(found.fare * requests.seats),
+        "price": _money(found.displacement),
+        "prices": prices,
+        "binding": binding,
     }
+    filled = {name: pc.fill_null(column, "") for name, column in words.items()}
     chosen = pa.array([""] * len(found.reason))
-    for reason, sentence in sentences.items():
-        chosen = pc.if_else(pa.array(found.reason == reason), sentence, chosen)
+    for reason, sentence in SENTENCES.items():
+        parts: list[pa.Array | pa.Scalar] = []
+        for plain, name, _, _ in Formatter().parse(sentence):
+            parts += [pa.scalar(plain)] + ([filled[name]] if name else [])
+        text = pc.binary_join_element_wise(*parts, "")
+        chosen = pc.if_else(pa.array(found.reason == reason), text, chosen)
     return chosen

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+from bisect import bisect_right
 from dataclasses import dataclass
 from functools import cached_property
 from pathlib import Path
@@ -74,6 +75,33 @@ class PriceTable:
         single = np.flatnonzero(known)[party[known] == 1]
         total[single] = self.price[last[party[known] == 1] - 1]
         return total
+
+    def one_party_price(self, leg: int, days: float, remaining: int, party: int) -> float:
+        """Price of one party on one leg: `party_price` without arrays, for an answer while somebody waits."""
+        begin, end = self._blocks_of[leg], self._blocks_of[leg + 1]
+        if begin == end:
+            return float(self.bid_price[leg]) * party
+        # Days fall within a leg: the block in force is the last whose days are not below the present ones.
+        block = max(bisect_right(self._falling_days, -days, begin, end) - 1, begin)
+        start, stop = self._seats_of[block], self._seats_of[block + 1]
+        surplus = min(max(start + remaining - stop, 0), party)
+        last = min(start + remaining, stop)
+        if party == 1:
+            return float(self.price[last - 1])
+        first = max(last - (party - surplus), start)
+        return float(self._sums[last] - self._sums[first] + surplus * self.price[stop - 1])
+
+    @cached_property
+    def _blocks_of(self) -> list[int]:
+        return [int(block) for block in self.first_block]
+
+    @cached_property
+    def _seats_of(self) -> list[int]:
+        return [int(seat) for seat in self.first_seat]
+
+    @cached_property
+    def _falling_days(self) -> list[float]:
+        return [-float(days) for days in self.days]
 
     def _block(self, leg: IntArray, days: FloatArray) -> IntArray:
         """(m,) block in force, -1 for a leg without curve."""

@@ -15,7 +15,7 @@ from network.reading import read_file
 from network.routes import positions
 from network.schema import table_schema
 
-__all__ = ["one_request", "read_requests"]
+__all__ = ["located", "one_request", "read_requests"]
 
 
 def read_requests(path: Path, network: Network) -> tuple[pd.DataFrame, Requests]:
@@ -42,7 +42,7 @@ def read_requests(path: Path, network: Network) -> tuple[pd.DataFrame, Requests]
     moment = frame["moment"].to_numpy(dtype="datetime64[s]")
     seconds = np.where(np.isnat(moment), network.as_of.timestamp(), moment.astype(np.int64).astype(np.float64))
     seats = frame["seats"].fillna(1).to_numpy(dtype=np.int64)
-    return asked, _located(network, frame["itinerary"], frame["fare_class"], frame["fare"].to_numpy(), seats, seconds)
+    return asked, located(network, frame["itinerary"], frame["fare_class"], frame["fare"].to_numpy(), seats, seconds)
 
 
 def one_request(
@@ -67,10 +67,10 @@ def one_request(
     asked = asked.astype("category")
     money = np.array([np.nan if fare is None else fare])
     when = np.array([instant.timestamp()])
-    return asked, _located(network, asked["itinerary"], asked["fare_class"], money, np.array([seats]), when)
+    return asked, located(network, asked["itinerary"], asked["fare_class"], money, np.array([seats]), when)
 
 
-def _located(
+def located(
     network: Network,
     itinerary: pd.Series,
     fare_class: pd.Series,
@@ -78,7 +78,7 @@ def _located(
     seats: np.ndarray,
     moment: np.ndarray,
 ) -> Requests:
-    """Look itineraries and products up."""
+    """Look itineraries and products up by name; an unknown one is told as `Requests` says."""
     at, _ = positions(itinerary, network.itinerary)
     classes = np.array(network.fare_classes, dtype=object)
     of_class, unknown = positions(fare_class, classes)

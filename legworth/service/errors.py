@@ -4,7 +4,15 @@ from __future__ import annotations
 
 from network.errors import LegworthError
 
-__all__ = ["KeyReusedError", "LedgerError", "UnknownLegError", "UnknownSaleError"]
+__all__ = [
+    "KeyReusedError",
+    "LedgerError",
+    "NoNightError",
+    "RefusedError",
+    "UnknownError",
+    "UnknownLegError",
+    "UnknownSaleError",
+]
 
 
 class KeyReusedError(LegworthError):
@@ -13,19 +21,39 @@ class KeyReusedError(LegworthError):
     http_status = 409
 
 
-class UnknownLegError(LegworthError):
-    """A leg that the ledger does not know."""
-
-    http_status = 404
-
-
-class UnknownSaleError(LegworthError):
-    """A cancellation of a sale that never was."""
-
-    http_status = 404
-
-
 class LedgerError(LegworthError):
     """The database did not take an order, as far as is known; sending it again under its key is safe."""
 
     http_status = 503
+
+
+class NoNightError(LegworthError):
+    """The store has no night in force."""
+
+    http_status = 503
+
+
+class UnknownError(LegworthError):
+    """Something named in a request is not on sale, or not there."""
+
+    http_status = 404
+
+
+class ForbiddenError(LegworthError):
+    """A token does not permit what was asked."""
+
+    http_status = 403
+
+
+class RefusedError(LegworthError):
+    """A token is missing or unknown."""
+
+    http_status = 401
+
+
+class UnknownLegError(UnknownError):
+    """A leg that the ledger does not know."""
+
+
+class UnknownSaleError(UnknownError):
+    """A cancellation of a sale that never was."""

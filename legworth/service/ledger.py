@@ -10,6 +10,7 @@ seat, a sale takes all its legs or none, and an order that is sent again under t
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable, Sequence
+from dataclasses import dataclass
 from typing import TypeVar
 
 from sqlalchemy import Connection, bindparam, func, insert, select, update
@@ -20,12 +21,28 @@ from legworth.service.ledger_tables import durable_engine, journal, metadata, ov
 from legworth.service.orders import Batch, Cancellation, Order, Outcome, Sale, SeatCount, answer_order, present
 from network import SettingError
 
-__all__ = ["Ledger"]
+__all__ = ["CarriedOut", "Ledger"]
 
 ATTEMPTS = 5
 """Times that a batch is tried when another writer got in its way."""
 
 T = TypeVar("T")
+
+
+@dataclass(frozen=True)
+class CarriedOut:
+    """What became of some orders.
+
+    Attributes
+    ----------
+    outcomes
+        For every order its outcome, or the error that kept it from being judged; such an order leaves no trace.
+    counts
+        Counts of the legs that moved, as they now stand.
+    """
+
+    outcomes: list[Outcome | Exception]
+    counts: list[SeatCount]
 
 
 class Ledger:
@@ -87,17 +104,17 @@ class Ledger:
 
         return self._in_transaction(add)
 
-    def overwrite(self, counts: Sequence[SeatCount], who: str, why: str) -> int:
+    def overwrite(self, counts: Sequence[SeatCount], who: str, why: str) -> list[SeatCount]:
         """Replace counts by those of the carrier's own inventory; every leg that moves gets an audit row.
 
         Returns
         -------
-        int
-            Legs whose count moved or that are new.
+        list of SeatCount
+            The counts that moved or are new.
         """
         wanted = {count.leg: count for count in counts}
 
-        def replace(connection: Connection) -> int:
+        def replace(connection: Connection) -> list[SeatCount]:
             before = _locked(connection, wanted)
             moved = [count for leg, count in sorted(wanted.items()) if before.get(leg) != count]
             now = present()
@@ -118,17 +135,12 @@ class Ledger:
                 connection.execute(insert(seat_counts), fresh)
             if rows:
                 connection.execute(insert(overwritings), rows)
-            return len(rows)
+            return moved
 
         return self._in_transaction(replace)
 
-    def carry_out(self, orders: Sequence[Order]) -> list[Outcome | Exception]:
+    def carry_out(self, orders: Sequence[Order]) -> CarriedOut:
         """Carry out orders in one transaction, one after the other.
-
-        Returns
-        -------
-        list
-            For every order its outcome, or the error that kept it from being judged; such an order leaves no trace.
 
         Raises
         ------
@@ -138,7 +150,7 @@ class Ledger:
         """
         return self._in_transaction(lambda connection: self._carry_out(connection, orders))
 
-    def _carry_out(self, connection: Connection, orders: Sequence[Order]) -> list[Outcome | Exception]:
+    def _carry_out(self, connection: Connection, orders: Sequence[Order]) -> CarriedOut:
         named = {order.sale for order in orders if isinstance(order, Cancellation)}
         sold = select(journal.c.key, journal.c.legs, journal.c.seats).where(
             journal.c.key.in_(sorted(named)), journal.c.kind == "sale", journal.c.accepted
@@ -163,10 +175,11 @@ class Ledger:
                 found.append(answer_order(batch, order))
             except Exception as error:  # one bad order must not undo the others
                 found.append(error)
-        _write_counts(connection, [batch.counts[leg] for leg in sorted(batch.changed)])
+        changed = [batch.counts[leg] for leg in sorted(batch.changed)]
+        _write_counts(connection, changed)
         if batch.entries:
             connection.execute(insert(journal), batch.entries)
-        return found
+        return CarriedOut(found, changed)
 
     def _in_transaction(self, work: Callable[[Connection], T]) -> T:
         """Do some work in a transaction, again if another writer got in the way."""

@@ -12,7 +12,18 @@ from typing import Any
 from legworth.service.errors import KeyReusedError, LedgerError, UnknownLegError, UnknownSaleError
 from network import SettingError
 
-__all__ = ["Batch", "Cancellation", "Judge", "Order", "Outcome", "Sale", "SeatCount", "answer_order", "present"]
+__all__ = [
+    "Batch",
+    "Cancellation",
+    "Judge",
+    "Order",
+    "Outcome",
+    "Overwriting",
+    "Sale",
+    "SeatCount",
+    "answer_order",
+    "present",
+]
 
 Judge = Callable[[Mapping[str, int]], dict[str, Any]]
 """Takes the seats left on every leg of an order and answers, with ``accepted`` as one of its entries."""
@@ -70,6 +81,15 @@ class Cancellation:
     def request(self) -> Mapping[str, Any]:
         """What was asked, to tell a retry from another order under the same key."""
         return {"sale": self.sale, "seats": self.seats}
+
+
+@dataclass(frozen=True)
+class Overwriting:
+    """Counts of the carrier's own inventory, which replace those of the ledger."""
+
+    counts: tuple[SeatCount, ...]
+    who: str
+    why: str
 
 
 @dataclass(frozen=True)

@@ -4,16 +4,20 @@ from __future__ import annotations
 
 import queue
 import threading
+from collections.abc import Callable, Sequence
 from concurrent.futures import Future
+from typing import Any
 
 from legworth.service.errors import LedgerError
 from legworth.service.ledger import Ledger
-from legworth.service.orders import Order, Outcome
+from legworth.service.orders import Order, Outcome, Overwriting, SeatCount
 
 __all__ = ["LedgerWriter"]
 
 MOST_TOGETHER = 256
 """Orders in one transaction at most, so that none waits long."""
+
+_Waiting = tuple[Order | Overwriting, "Future[Any]"]
 
 
 class LedgerWriter:
@@ -25,15 +29,28 @@ class LedgerWriter:
         Where they are carried out.
     most_waiting
         Orders that may wait; further ones are turned away at once.
+    written
+        Called, in the order of the transactions, with the counts that each has moved, before its orders are answered.
     """
 
-    def __init__(self, ledger: Ledger, most_waiting: int = 10_000) -> None:
+    def __init__(
+        self,
+        ledger: Ledger,
+        most_waiting: int = 10_000,
+        written: Callable[[Sequence[SeatCount]], None] = lambda counts: None,
+    ) -> None:
         self._ledger = ledger
-        self._waiting: queue.Queue[tuple[Order, Future[Outcome]] | None] = queue.Queue(most_waiting)
+        self._written = written
+        self._waiting: queue.Queue[_Waiting | None] = queue.Queue(most_waiting)
         self._closing = threading.Lock()
         self._closed = False
         self._thread = threading.Thread(target=self._write, name="ledger", daemon=True)
         self._thread.start()
+
+    @property
+    def waiting(self) -> int:
+        """Orders that wait, about."""
+        return self._waiting.qsize()
 
     def submit(self, order: Order) -> Future[Outcome]:
         """Hand an order in; the future holds its outcome once that is on the disk, or the error.
@@ -43,7 +60,14 @@ class LedgerWriter:
         LedgerError
             If too many orders wait already, or the writer is closed.
         """
-        answer: Future[Outcome] = Future()
+        return self._enter(order)
+
+    def overwrite(self, order: Overwriting) -> Future[list[SeatCount]]:
+        """Hand counts in; the future holds those that moved, once they are on the disk; raises as `submit` does."""
+        return self._enter(order)
+
+    def _enter(self, order: Order | Overwriting) -> Future[Any]:
+        answer: Future[Any] = Future()
         with self._closing:
             if self._closed:
                 raise LedgerError("the service is stopping; send the order again under the same key")
@@ -76,15 +100,39 @@ class LedgerWriter:
             if last:
                 return
 
-    def _carry_out(self, together: list[tuple[Order, Future[Outcome]]]) -> None:
-        wanted = [(order, answer) for order, answer in together if answer.set_running_or_notify_cancel()]
+    def _carry_out(self, together: list[_Waiting]) -> None:
+        """Carry out orders in runs between the overwritings."""
+        run: list[tuple[Order, Future[Any]]] = []
+        for order, answer in together:
+            if not answer.set_running_or_notify_cancel():
+                continue
+            if isinstance(order, Overwriting):
+                self._finish(run)
+                run = []
+                self._overwrite(order, answer)
+            else:
+                run.append((order, answer))
+        self._finish(run)
+
+    def _overwrite(self, order: Overwriting, answer: Future[Any]) -> None:
         try:
-            outcomes = self._ledger.carry_out([order for order, _ in wanted])
+            moved = self._ledger.overwrite(order.counts, order.who, order.why)
+            self._written(moved)
+            answer.set_result(moved)
         except Exception as error:  # whoever waits must hear of it, and the thread must live on
-            for _, answer in wanted:
+            answer.set_exception(error)
+
+    def _finish(self, run: Sequence[tuple[Order, Future[Any]]]) -> None:
+        if not run:
+            return
+        try:
+            carried = self._ledger.carry_out([order for order, _ in run])
+            self._written(carried.counts)
+        except Exception as error:  # whoever waits must hear of it, and the thread must live on
+            for _, answer in run:
                 answer.set_exception(error)
             return
-        for (_, answer), outcome in zip(wanted, outcomes, strict=True):
+        for (_, answer), outcome in zip(run, carried.outcomes, strict=True):
             if isinstance(outcome, Exception):
                 answer.set_exception(outcome)
             else:

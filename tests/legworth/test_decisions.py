@@ -206,6 +206,20 @@ def test_a_party_pays_seat_by_seat_and_seats_beyond_the_curve_cost_its_last(
     assert found.tolist() == [total]
 
 
+@pytest.mark.parametrize("kind", ["none", "decomposition"])
+def test_one_price_equals_prices_in_bulk(folder: Path, priced: dict[str, Path], kind: str) -> None:
+    table = read_prices(priced[kind], read_folder(folder).network)
+    draw = np.random.default_rng(3)
+    leg = draw.integers(0, len(table.bid_price), 500)
+    party = draw.integers(1, 9, 500)
+    remaining = party + draw.integers(0, 30, 500)
+    days = draw.exponential(20.0, 500)
+    days[:60] = draw.choice(table.days, 60) if table.has_curves else 1.0
+    found = table.party_price(leg, days, remaining, party)
+    single = [table.one_party_price(*each) for each in zip(leg, days, remaining, party, strict=True)]
+    np.testing.assert_array_equal(found, single)
+
+
 def test_prices_of_another_snapshot_or_currency_are_noticed(
     folder: Path, priced: dict[str, Path], tmp_path: Path
 ) -> None:
