@@ -24,6 +24,12 @@ INSTANT = (
 )
 GREATEST_OFFSET = 14 * 60
 """Minutes from UTC beyond which no clock on Earth is set (W3C XML Schema Part 2, 3.2.7.3)."""
+CHECKS = ("not_nullable", "finite", "limits", "pattern")
+"""The checks of a column, the one that tells most first."""
+
+ROWS_AT_ONCE = 1_000_000
+"""Rows whose limits are checked together, so that what the checks need in between stays small."""
+
 EXAMPLE = "write it as 2027-03-01T06:40+01:00"
 
 
@@ -31,7 +37,8 @@ EXAMPLE = "write it as 2027-03-01T06:40+01:00"
 class TableData:
     """One table as read.
 
-    ``frame`` holds numbers as float64 or int64, text as categories, and every datetime column as two:
+    ``frame`` holds numbers as float64 or int64, text (dates and truth values too) as categories, and every datetime
+    column as two:
     the instant in UTC and, under the name with ``_offset``, its offset in minutes. ``line_of`` gives
     the line (CSV) or row (Parquet) of a row position.
     """
@@ -82,7 +89,7 @@ def typed_table(raw: RawTable, faults: Faults) -> TableData:
         else:
             columns[column.name], bad = values.astype("category"), np.zeros(length, dtype=bool)
         reported[column.name] = bad | raw.at_fault
-    frame = pd.DataFrame(columns)
+    frame = pd.DataFrame(columns, copy=False)
     _check_limits(raw, frame, reported, faults)
     _check_key(raw, frame, faults)
     return TableData(raw.schema, raw.file, frame, raw.line_of)
@@ -150,16 +157,17 @@ def _zoned_instants(
 
 def _check_limits(raw: RawTable, frame: pd.DataFrame, reported: dict[str, BoolArray], faults: Faults) -> None:
     """Note every cell that breaks a limit which its schema declares, and empty it if it is a number."""
-    try:
-        raw.schema.checks.validate(frame, lazy=True)
-    except SchemaErrors as errors:
-        cases = errors.failure_cases
-    else:
-        return
-    for (name, check), group in cases.groupby(["column", "check"], sort=False):
-        column, values = raw.schema.column(str(name)), frame[str(name)]
-        rows = np.sort(group["index"].to_numpy(dtype=np.int64))
-        rows = rows[~reported[column.name][rows]]
+    cases = []
+    for first in range(0, len(frame), ROWS_AT_ONCE):
+        try:
+            raw.schema.checks.validate(frame.iloc[first : first + ROWS_AT_ONCE], lazy=True)
+        except SchemaErrors as errors:
+            cases.append(errors.failure_cases)
+    groups = dict(list(pd.concat(cases).groupby(["column", "check"]))) if cases else {}
+    for name, check in sorted(groups, key=lambda case: (raw.schema.names.index(case[0]), CHECKS.index(case[1]))):
+        column, values = raw.schema.column(name), frame[name]
+        rows = np.sort(groups[name, check]["index"].to_numpy(dtype=np.int64))
+        rows = rows[~reported[name][rows]]
         reported[column.name][rows] = True
         if check == "not_nullable":
             raw.note(faults, rows, column.name, lambda _: "the value is missing; fill it in")
@@ -169,7 +177,7 @@ def _check_limits(raw: RawTable, frame: pd.DataFrame, reported: dict[str, BoolAr
             "limits": f"is outside its limits; it must be {column.limits} {column.unit}".rstrip(),
             "pattern": "has white space where none may be, or is blank; use names without spaces"
             + (", one space between them" if column.name == "legs" else ""),
-        }[str(check)]
+        }[check]
         raw.note(faults, rows, column.name, _quoting(values, problem))
         if column.numeric:
             frame[column.name] = values.mask(np.isin(np.arange(len(frame)), rows))
@@ -178,12 +186,18 @@ def _check_limits(raw: RawTable, frame: pd.DataFrame, reported: dict[str, BoolAr
 def _check_key(raw: RawTable, frame: pd.DataFrame, faults: Faults) -> None:
     """Note every row whose key repeats that of an earlier row."""
     key = list(raw.schema.key)
-    keys = frame[key]
-    repeated = keys.duplicated(keep="first").to_numpy() & keys.notna().all(axis=1).to_numpy()
-    if not repeated.any():
+    code = _key_codes(frame[key])
+    steps = np.diff(code)
+    if np.all(steps > 0):  # as in most tables, so that nothing need be sorted
         return
-    rows = list(keys.itertuples(index=False, name=None))
-    first = {values: row for row, values in reversed(list(enumerate(rows)))}
+    ordered = np.sort(code[code >= 0])
+    if not np.any(ordered[1:] == ordered[:-1]):
+        return
+    codes = pd.Series(code)
+    repeated = codes.duplicated(keep="first").to_numpy() & (code >= 0)
+    involved = np.flatnonzero(codes.duplicated(keep=False).to_numpy() & (code >= 0))
+    rows = dict(zip(involved.tolist(), frame[key].iloc[involved].itertuples(index=False, name=None), strict=True))
+    first = {values: row for row, values in reversed(rows.items())}
     place = "row" if raw.file.endswith(".parquet") else "line"
     raw.note(
         faults,
@@ -194,6 +208,24 @@ def _check_key(raw: RawTable, frame: pd.DataFrame, faults: Faults) -> None:
             f"{raw.line_of(first[rows[row]])}; keep one of the two"
         ),
     )
+
+
+def _key_codes(keys: pd.DataFrame) -> npt.NDArray[np.int64]:
+    """(n,) one whole number for each different key, -1 where a part of it is missing; rising if the rows are."""
+    answer = np.zeros(len(keys), dtype=np.int64)
+    whole = np.ones(len(keys), dtype=bool)
+    for name in keys.columns:
+        values = keys[name]
+        if isinstance(values.dtype, pd.CategoricalDtype):
+            code, size = values.cat.codes.to_numpy(), len(values.cat.categories)
+        else:
+            code, found = pd.factorize(values, sort=True)
+            size = len(found)
+        answer *= max(size, 1)
+        answer += code
+        whole &= code >= 0
+    answer[~whole] = -1
+    return answer
 
 
 def _plain(value: object) -> str:

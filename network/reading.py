@@ -6,6 +6,7 @@ that it is not, are the records read again one by one, to say which cell of whic
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from pathlib import Path
 
 import numpy as np
@@ -23,7 +24,9 @@ from network.schema import Column, TableSchema
 __all__ = ["TableData", "read_file", "read_table"]
 
 
-def read_table(folder: Path, schema: TableSchema, faults: Faults) -> TableData | None:
+def read_table(
+    folder: Path, schema: TableSchema, faults: Faults, known: Mapping[str, pd.Index[str]] | None = None
+) -> TableData | None:
     """Read one table of a network folder.
 
     Parameters
@@ -34,6 +37,9 @@ def read_table(folder: Path, schema: TableSchema, faults: Faults) -> TableData |
         Which table, and what its columns must be.
     faults
         Receives every fault found.
+    known
+        Names, each once, that columns of text are expected to hold. A large Parquet file is read faster with them, and
+        without a second copy of the names: its categories begin with these, whether they occur or not.
 
     Returns
     -------
@@ -42,13 +48,17 @@ def read_table(folder: Path, schema: TableSchema, faults: Faults) -> TableData |
         returned with those cells empty, so that other checks can go on.
     """
     path = _locate(folder, schema, faults)
-    return None if path is None else read_file(path, schema, faults)
+    return None if path is None else read_file(path, schema, faults, known)
 
 
-def read_file(path: Path, schema: TableSchema, faults: Faults) -> TableData | None:
+def read_file(
+    path: Path, schema: TableSchema, faults: Faults, known: Mapping[str, pd.Index[str]] | None = None
+) -> TableData | None:
     """Read one table from a file of any name; otherwise as `read_table`."""
-    read = _read_parquet if path.suffix == ".parquet" else _read_csv
-    raw = read(path, schema, faults)
+    if path.suffix == ".parquet":
+        raw = _read_parquet(path, schema, faults, known or {})
+    else:
+        raw = _read_csv(path, schema, faults)
     if raw is None:
         return None
     if len(raw.at_fault) == 0:
@@ -108,6 +118,8 @@ def _parse_typed(text: CsvText, schema: TableSchema) -> pa.Table | None:
         "integer": pa.int64(),
         "string": pa.dictionary(pa.int32(), pa.string()),
         "datetime": pa.string(),
+        "date": pa.string(),
+        "boolean": pa.string(),
     }
     try:
         table = pyarrow.csv.read_csv(
@@ -133,28 +145,39 @@ def _finite(values: pa.ChunkedArray) -> bool:
     return pyarrow.compute.all(pyarrow.compute.is_finite(values)).as_py() is not False
 
 
-def _read_parquet(path: Path, schema: TableSchema, faults: Faults) -> RawTable | None:
+def _read_parquet(
+    path: Path, schema: TableSchema, faults: Faults, known: Mapping[str, pd.Index[str]]
+) -> RawTable | None:
+    columns = {}
     try:
-        # Without partitioning=None a folder named like day=1 would add a column of that name.
-        table = pyarrow.parquet.read_table(path, partitioning=None)
-        names = tuple(table.column_names)
-    except (pa.ArrowException, OSError, ValueError) as error:
+        found = pyarrow.parquet.read_schema(path)
+        if not check_columns(path.name, 0, tuple(found.names), schema, faults):
+            return None
+        names = [field.name for field in found if _is_text(field.type) and schema.column(field.name).type == "string"]
+        with pyarrow.parquet.ParquetFile(path, read_dictionary=names) as file:
+            length = file.metadata.num_rows
+            # Column by column, so that no more than one is held twice.
+            for name in found.names:
+                values = file.read([name])[name]
+                column = schema.column(name)
+                try:
+                    values = _comparable(values, column)
+                    text = column.type == "string"
+                    columns[name] = _categories(values, known.get(name)) if text else values.to_pandas()
+                except (pa.ArrowException, KeyError, ValueError):
+                    problem = f"holds {values.type} values that cannot be taken as {column.type}; write the column anew"
+                    faults.add(path.name, 0, name, problem)
+    except (pa.ArrowException, OSError, ValueError, KeyError) as error:
         reason = next(iter(str(error).splitlines()), type(error).__name__)
         faults.add(path.name, 0, "", f"cannot be read as Parquet ({reason}); write it again, or give CSV")
         return None
-    if not check_columns(path.name, 0, names, schema, faults):
+    if len(columns) < len(found):
         return None
-    columns = {}
-    for name in names:
-        column, values = schema.column(name), table[name]
-        try:
-            columns[name] = _comparable(values, column).to_pandas()
-        except (pa.ArrowException, KeyError, ValueError):
-            problem = f"holds {values.type} values that cannot be taken as {column.type}; write the column anew"
-            faults.add(path.name, 0, name, problem)
-    if len(columns) < len(names):
-        return None
-    return RawTable(schema, path.name, columns, lambda row: row + 1, np.zeros(table.num_rows, dtype=bool))
+    return RawTable(schema, path.name, columns, lambda row: row + 1, np.zeros(length, dtype=bool))
+
+
+def _is_text(kind: pa.DataType) -> bool:
+    return bool(pa.types.is_string(kind) or pa.types.is_large_string(kind))
 
 
 def _comparable(values: pa.ChunkedArray, column: Column) -> pa.ChunkedArray:
@@ -164,6 +187,8 @@ def _comparable(values: pa.ChunkedArray, column: Column) -> pa.ChunkedArray:
     """
     values.validate(full=True)
     kind = values.type
+    if column.type == "string" and pa.types.is_dictionary(kind) and _is_text(kind.value_type):
+        return values
     if pa.types.is_dictionary(kind):
         values = values.cast(kind.value_type)
         kind = kind.value_type
@@ -175,5 +200,35 @@ def _comparable(values: pa.ChunkedArray, column: Column) -> pa.ChunkedArray:
         whole = column.type == "integer" and pa.types.is_integer(kind)
         return values.cast(pa.int64()) if whole else values.cast(pa.float64(), safe=False)
     text = values.cast(pa.string())
-    text = pyarrow.compute.if_else(pyarrow.compute.equal(text, ""), None, text)
-    return text.dictionary_encode() if column.type == "string" else text
+    if column.type == "string":
+        return text.dictionary_encode()
+    return pyarrow.compute.if_else(pyarrow.compute.equal(text, ""), None, text)
+
+
+def _categories(values: pa.ChunkedArray, known: pd.Index[str] | None) -> pd.Series:
+    """Text by category, those known first.
+
+    Every stretch of a file has a dictionary of its own; only the names in these are looked at, not the rows.
+    """
+    names = pa.chunked_array([chunk.dictionary for chunk in values.chunks], values.type.value_type)
+    encoded = names.cast(pa.large_string()).combine_chunks().dictionary_encode()
+    different = encoded.dictionary
+    held = np.full(len(different), -1, dtype=np.int32)
+    if known is not None:
+        place = pyarrow.compute.index_in(different, value_set=pa.array(known, pa.large_string()))
+        held = place.fill_null(-1).to_numpy(zero_copy_only=False).copy()
+    named = pyarrow.compute.not_equal(different, "").to_numpy(zero_copy_only=False)
+    new = np.flatnonzero((held < 0) & named)
+    held[new] = np.arange(len(new)) + (0 if known is None else len(known))
+    categories = pd.Index(different.take(pa.array(new)).to_pandas())
+    if known is not None:
+        categories = known.append(categories.astype(known.dtype)) if len(new) else known
+
+    code = np.append(held, np.int32(-1))[encoded.indices.fill_null(len(held)).to_numpy()]
+    codes, row, begin = np.empty(len(values), dtype=np.int32), 0, 0
+    for chunk in values.chunks:
+        # A missing value is the last of its stretch.
+        own = np.append(code[begin : begin + len(chunk.dictionary)], np.int32(-1))
+        codes[row : row + len(chunk)] = own[chunk.indices.fill_null(-1).to_numpy()]
+        row, begin = row + len(chunk), begin + len(chunk.dictionary)
+    return pd.Series(pd.Categorical.from_codes(codes, dtype=pd.CategoricalDtype(categories)))

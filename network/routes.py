@@ -6,14 +6,16 @@ from dataclasses import dataclass
 
 import numpy as np
 import pandas as pd
+import pyarrow as pa
+import pyarrow.compute
 
 from network.arrays import IntArray, NameArray
 from network.faults import Faults
-from network.model import Legs, Stations
+from network.model import Legs, Stations, ranges
 from network.reading import TableData
 from network.settings import NetworkSettings
 
-__all__ = ["Paths", "assemble_legs", "assemble_paths", "assemble_stations", "positions"]
+__all__ = ["Paths", "assemble_legs", "assemble_paths", "assemble_stations", "assemble_through", "positions"]
 
 
 @dataclass(frozen=True)
@@ -40,11 +42,14 @@ def positions(values: pd.Series, names: NameArray) -> tuple[IntArray, np.ndarray
     position, unknown
         Position of every value, -1 where it is missing or unknown, and True where it is unknown.
     """
-    codes = values.cat.codes.to_numpy().astype(np.int64)
-    index = pd.Index(names, dtype=object)
-    first = np.flatnonzero(~index.duplicated())
-    of_category = index[first].get_indexer(pd.Index(values.cat.categories.to_numpy(dtype=object)))
-    position = np.append(np.append(first, -1)[of_category], -1)[codes]
+    codes, categories = values.cat.codes.to_numpy(), values.cat.categories
+    if len(categories) >= len(names) > 0 and np.array_equal(categories[: len(names)].to_numpy(dtype=object), names):
+        position = np.where(codes < len(names), codes, -1)
+        return position, codes >= len(names)
+    known = pa.array(names, pa.large_string(), from_pandas=True)
+    found = pyarrow.compute.index_in(pa.array(categories, pa.large_string()), value_set=known)
+    of_category = found.fill_null(-1).to_numpy(zero_copy_only=False)
+    position = np.append(of_category, np.int32(-1))[codes]
     return position, (codes >= 0) & (position < 0)
 
 
@@ -117,6 +122,31 @@ def assemble_legs(table: TableData | None, stations: Stations | None, faults: Fa
     )
 
 
+def assemble_through(table: TableData | None, legs: Legs | None, faults: Faults) -> IntArray | None:
+    """Position of the leg that the same vehicle runs next, (L,), -1 where there is none.
+
+    Notes next legs that are unknown, begin at another station, or leave before the vehicle is there.
+    """
+    if table is None or legs is None:
+        return None
+    through, unknown = positions(table.frame["through"], legs.name)
+    named = np.flatnonzero(through >= 0)
+    ends, begins = legs.destination[named], legs.origin[through[named]]
+    elsewhere = (ends != begins) & (ends >= 0) & (begins >= 0)
+    early = (legs.departs[through[named]] < legs.arrives[named]) & ~elsewhere
+
+    def note(rows: IntArray, problem: str) -> None:
+        def quoting(row: int) -> str:
+            return f"{table.frame['through'].iloc[row]!r} {problem}"
+
+        faults.add_rows(table.file, rows, table.line_of, "through", quoting)
+
+    note(np.flatnonzero(unknown), "is not a leg; add it to legs.csv, correct the name or leave it blank")
+    note(named[elsewhere], "does not begin where this leg ends; correct the name or leave it blank")
+    note(named[early], "leaves before this leg arrives; correct the times, or leave the name blank")
+    return through
+
+
 def _names(table: Stations | Legs | None) -> NameArray:
     return np.zeros(0, dtype=object) if table is None else table.name
 
@@ -133,34 +163,57 @@ def _note_unknown_stations(table: TableData, column: str, unknown: np.ndarray, f
 
 
 def assemble_paths(
-    table: TableData | None, legs: Legs | None, stations: Stations | None, faults: Faults
+    table: TableData | None,
+    legs: Legs | None,
+    stations: Stations | None,
+    faults: Faults,
+    through: IntArray | None = None,
 ) -> Paths | None:
-    """Itineraries in file order; notes unknown or repeated legs, and legs that do not connect."""
+    """Itineraries in file order; notes unknown or repeated legs, and legs that do not connect.
+
+    No time is needed to connect where ``through``, (L,), says that the next leg is run by the same vehicle.
+    """
     if table is None:
         return None
-    text = table.frame["legs"].astype("str").fillna("")
-    split = [value.split() for value in text.tolist()]
-    length = np.array([len(names) for names in split], dtype=np.int64)
-    start = np.concatenate([[0], np.cumsum(length)])
-    flat = pd.Series([name for names in split for name in names], dtype="category")
-    leg, unknown = positions(flat, _names(legs))
-    owner = np.repeat(np.arange(len(split)), length)
-    names = flat.to_numpy(dtype=object)
+    start, names = _split_names(table.frame["legs"])
+    leg, unknown = positions(names, _names(legs))
+    owner = np.repeat(np.arange(len(table)), np.diff(start))
     if legs is not None:
         faults.add_rows(
             table.file,
             np.flatnonzero(unknown),
             lambda at: table.line_of(int(owner[at])),
             "legs",
-            lambda at: f"{names[at]!r} is not a leg; add it to legs.csv or correct the name",
+            lambda at: f"{names.iloc[at]!r} is not a leg; add it to legs.csv or correct the name",
         )
     if legs is not None and stations is not None:
-        _check_connections(table, legs, stations, leg, owner, faults)
-    return Paths(table.frame["itinerary"].to_numpy(dtype=object), start, leg.astype(np.int32))
+        _check_connections(table, legs, stations, leg, owner, through, faults)
+    return Paths(table.frame["itinerary"].to_numpy(dtype=object), start, leg)
+
+
+def _split_names(values: pd.Series) -> tuple[IntArray, pd.Series]:
+    """Split cells at white space: where the names of each cell begin, (n + 1,), and all names, by category."""
+    words = pyarrow.compute.utf8_split_whitespace(pa.array(values.cat.categories, pa.large_string()))
+    word, owner = words.flatten(), pyarrow.compute.list_parent_indices(words).to_numpy()
+    full = pyarrow.compute.not_equal(word, "")
+    length = np.bincount(owner[full.to_numpy(zero_copy_only=False)], minlength=len(words))
+    begin = np.cumsum(length) - length
+    codes = values.cat.codes.to_numpy()
+    filled = codes[codes >= 0]
+    count = np.where(codes >= 0, np.append(length, 0)[codes], 0)
+    of_category = word.filter(full).dictionary_encode().to_pandas()
+    names = of_category.iloc[ranges(begin[filled], length[filled])]
+    return np.concatenate([[0], np.cumsum(count)]), names
 
 
 def _check_connections(
-    table: TableData, legs: Legs, stations: Stations, leg: IntArray, owner: IntArray, faults: Faults
+    table: TableData,
+    legs: Legs,
+    stations: Stations,
+    leg: IntArray,
+    owner: IntArray,
+    through: IntArray | None,
+    faults: Faults,
 ) -> None:
     """Note consecutive legs of an itinerary that do not meet, or leave too little time to connect."""
     at = np.flatnonzero(owner[1:] == owner[:-1])
@@ -188,6 +241,8 @@ def _check_connections(
     minutes = (legs.departs[second] - legs.arrives[first]).astype("timedelta64[s]").astype(np.float64) / 60
     timed = ~np.isnat(legs.departs[second]) & ~np.isnat(legs.arrives[first])
     needed = stations.minimum_connection[legs.destination[first]]
+    if through is not None:
+        needed = np.where(through[first] == second, 0.0, needed)
     short = known & meets & timed & (minutes < needed)
     faults.add_rows(
         table.file,

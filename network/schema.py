@@ -20,7 +20,7 @@ if TYPE_CHECKING:
 
 __all__ = ["Column", "TableSchema", "input_schemas", "table_schema"]
 
-ColumnType = Literal["string", "number", "integer", "datetime", "boolean"]
+ColumnType = Literal["string", "number", "integer", "datetime", "date", "boolean"]
 INPUT_TABLES = ("stations", "legs", "itineraries", "fares", "demand", "booking_curves")
 
 

@@ -10,7 +10,10 @@ from typing import Annotated, Any, Literal
 
 from pydantic import AfterValidator, AwareDatetime, BaseModel, BeforeValidator, ConfigDict, Field, ValidationError
 
+from network.connection_settings import ConnectionRules
 from network.faults import Faults
+from network.refresh_settings import RefreshSettings
+from network.store_settings import StoreSettings
 
 __all__ = ["Defaults", "NetworkSettings", "read_settings"]
 
@@ -65,6 +68,13 @@ class NetworkSettings(BaseModel):
         Field(description="Fare classes, best first; without it, in the order in which fares.csv names them."),
     ] = ()
     defaults: Annotated[Defaults, Field(description="What holds where a table says nothing.")] = Defaults()
+    refresh: Annotated[RefreshSettings, Field(description="When a night may go into force by itself.")] = (
+        RefreshSettings()
+    )
+    store: Annotated[StoreSettings, Field(description="Which nights the store keeps.")] = StoreSettings()
+    connections: Annotated[ConnectionRules, Field(description="Rules by which legs are joined into itineraries.")] = (
+        ConnectionRules()
+    )
 
 
 def read_settings(folder: Path, faults: Faults) -> NetworkSettings | None:

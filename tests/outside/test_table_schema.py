@@ -7,7 +7,8 @@ Deliberate differences, each with its own test below:
 - an instant needs an offset from UTC, and must be written in ISO 8601: the standard's ``any`` format leaves both open;
 - a whole number may be written 80.0 or 8e1, as spreadsheets do; the standard wants digits alone;
 - digits may not be grouped by underscores; frictionless takes them because Python does;
-- a column may be left out where our own property ``optional`` says so, and columns may stand in any order.
+- a column may be left out where our own property ``optional`` says so (the reference gets the schema without it), and
+  columns may stand in any order.
 """
 
 from __future__ import annotations
@@ -43,6 +44,8 @@ def by_frictionless(
     resources = []
     for table in tables:
         schema = descriptor(package, table)
+        header = (path / f"{table}.csv").read_bytes().partition(b"\n")[0].decode().strip().replace('"', "").split(",")
+        schema["fields"] = [f for f in schema["fields"] if f["name"] in header or not f.get("optional")]
         if not keys:
             schema.pop("foreignKeys", None)
         resources.append({"name": table, "path": f"{table}.csv", "schema": schema, "encoding": "utf-8"})
