@@ -16,8 +16,11 @@ from heuristics.dynamic import REQUESTS_PER_STEP, PriceCurves, price_curves
 from heuristics.fare_split import SplitOptions, Stage, best_split
 from network import Component, Network, components
 from network.arrays import FloatArray, IntArray
+from network.model import ranges
 
 __all__ = ["CurveMethod", "NetworkCurves", "curves_table", "network_curves"]
+
+STRETCH = np.dtype([("leg", np.int64), ("days", np.float64), ("first", np.int64), ("seats", np.int64)])
 
 
 class CurveMethod(StrEnum):
@@ -38,7 +41,8 @@ class NetworkCurves:
     parts
         Legs of every component as positions in the whole network, and its curves.
     bounds
-        Upper bounds on expected revenue for Poisson requests at the mean rates, currency, by name.
+        Upper bounds on expected revenue for Poisson requests at the mean rates, currency, by name; none where they
+        were not asked for.
     """
 
     method: CurveMethod
@@ -52,6 +56,8 @@ def network_curves(
     method: CurveMethod = CurveMethod.DECOMPOSITION,
     options: SplitOptions | None = None,
     jobs: int = 1,
+    *,
+    bounds: bool = True,
 ) -> NetworkCurves:
     """Solve the leg dynamic programs of a network.
 
@@ -67,22 +73,29 @@ def network_curves(
         When the search for fare splits stops.
     jobs
         Components side by side (fare splits).
+    bounds
+        Whether the bounds for Poisson requests are worked out, which takes two more dynamic programs.
     """
+    known = _poisson_bounds(network, prices) if bounds else {}
+    if method is CurveMethod.DECOMPOSITION:
+        plan = ArrivalPlan.of(network, leg_products(network, prices))
+        curves = price_curves(plan, network.remaining)
+        return NetworkCurves(method, ((np.arange(network.n_legs), curves),), known)
     pieces = components(network)
-    found = [poisson_bounds(piece.network, prices[piece.legs]) for piece in pieces]
-    bounds = {
+    tasks = (delayed(_split_curves)(piece, prices[piece.legs], options or SplitOptions()) for piece in pieces)
+    parts = list(zip((piece.legs for piece in pieces), Parallel(n_jobs=jobs)(tasks), strict=True))
+    if bounds:
+        known["fare_splits"] = float(sum(curves.total.sum() for _, curves in parts))
+    return NetworkCurves(method, tuple(parts), known)
+
+
+def _poisson_bounds(network: Network, prices: FloatArray) -> dict[str, float]:
+    found = [poisson_bounds(piece.network, prices[piece.legs]) for piece in components(network)]
+    return {
         "decomposition": sum(bound.one_leg for bound in found),
         "legs_apart": sum(bound.legs_apart for bound in found),
         "split_by_price": sum(bound.split for bound in found),
     }
-    if method is CurveMethod.DECOMPOSITION:
-        plan = ArrivalPlan.of(network, leg_products(network, prices))
-        curves = price_curves(plan, network.remaining)
-        return NetworkCurves(method, ((np.arange(network.n_legs), curves),), bounds)
-    tasks = (delayed(_split_curves)(piece, prices[piece.legs], options or SplitOptions()) for piece in pieces)
-    parts = list(zip((piece.legs for piece in pieces), Parallel(n_jobs=jobs)(tasks), strict=True))
-    bounds["fare_splits"] = float(sum(curves.total.sum() for _, curves in parts))
-    return NetworkCurves(method, tuple(parts), bounds)
 
 
 def _split_curves(piece: Component, prices: FloatArray, options: SplitOptions) -> PriceCurves:
@@ -102,28 +115,36 @@ def _split_curves(piece: Component, prices: FloatArray, options: SplitOptions) -
 
 def curves_table(network: Network, curves: NetworkCurves) -> pd.DataFrame:
     """Label the curves as the schema ``price_curves`` declares: by leg, days falling, seats rising."""
-    leg, days, seat, price = [], [], [], []
-    for legs, part in curves.parts:
-        size = np.diff(part.seat_start)
-        owner = np.repeat(np.arange(len(legs)), size)
-        seats = np.arange(len(owner)) - part.seat_start[owner] + 1
-        for when, value in [(part.days_now[owner], part.now)] + [
-            (np.full(len(owner), day), value) for day, value in zip(part.days, part.value, strict=True)
-        ]:
-            earlier = (when > 0) & ((when < part.days_now[owner]) | (value is part.now))
-            shown = np.flatnonzero(~np.isnan(value) & earlier)
-            leg.append(legs[owner[shown]])
-            days.append(when[shown])
-            seat.append(seats[shown])
-            price.append(value[shown])
-    columns = [np.concatenate(parts) if parts else np.zeros(0) for parts in (leg, days, seat, price)]
-    order = np.lexsort((columns[2], -columns[1], columns[0]))
+    found = [_stretches(legs, part) for legs, part in curves.parts]
+    stretches = np.concatenate([part for part, _ in found]) if found else np.zeros(0, dtype=STRETCH)
+    prices = np.concatenate([np.zeros(0), *(values.ravel() for _, values in found)])
+    size = [values.size for _, values in found]
+    stretches["first"] += np.repeat(np.cumsum(size) - size, [len(part) for part, _ in found])
+    stretches = stretches[np.lexsort((-stretches["days"], stretches["leg"]))]
+    count = stretches["seats"]
     names = pd.Index(network.legs.name, dtype="str")
     return pd.DataFrame(
         {
-            "leg": pd.Categorical.from_codes(columns[0][order].astype(np.int64), categories=names),
-            "days_before": columns[1][order],
-            "remaining": columns[2][order].astype(np.int64),
-            "bid_price": np.maximum(columns[3][order], 0.0),
+            "leg": pd.Categorical.from_codes(np.repeat(stretches["leg"], count), categories=names),
+            "days_before": np.repeat(stretches["days"], count),
+            "remaining": ranges(np.ones_like(count), count),
+            "bid_price": np.maximum(prices[ranges(stretches["first"], count)], 0.0),
         }
     )
+
+
+def _stretches(legs: IntArray, curves: PriceCurves) -> tuple[np.ndarray, FloatArray]:
+    """Rows of the table that stand together, the seats of one leg at one time, and the prices that they point into.
+
+    A leg has a row for its snapshot and for every later day before departure that is published.
+    """
+    times = np.broadcast_to(curves.days[:, None], (len(curves.days), len(legs)))
+    when = np.concatenate([curves.days_now[None], times])
+    later = np.concatenate([np.ones((1, len(legs)), dtype=bool), times < curves.days_now])
+    row, leg = np.nonzero((when > 0) & later)
+    prices = np.concatenate([curves.now[None], curves.value])
+    stretches = np.zeros(len(row), dtype=STRETCH)
+    stretches["leg"], stretches["days"] = legs[leg], when[row, leg]
+    stretches["first"] = row * prices.shape[1] + curves.seat_start[leg]
+    stretches["seats"] = np.diff(curves.seat_start)[leg]
+    return stretches, prices

@@ -25,6 +25,7 @@ Exit codes:
   1    something failed that is not of the kinds below
   2    the tables, an option or a setting are wrong; every fault is listed
   3    no certified optimum was reached, so no price is given
+  4    a check stopped the night; the last night stays in force
   130  interrupted
 """
 

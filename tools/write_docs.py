@@ -13,8 +13,13 @@ from pydantic import BaseModel
 
 from legworth.cli import cli
 from legworth.results import result_schemas
+from legworth.service.settings import ServiceSettings
 from network.schema import TableSchema, input_schemas, table_schema
 from network.settings import NetworkSettings
+
+TAKEN = ("requests", "history", "adjustments", "flights", "seats")
+GIVEN = ("decisions", "simulation", "estimates", "leg_totals", "proof")
+"""Tables that commands take and give beside those of a network folder and its results."""
 
 DOCS = Path(__file__).parent.parent / "docs"
 
@@ -40,17 +45,21 @@ def tables_document() -> str:
         "| --- | --- | --- |",
         *_settings(NetworkSettings, ""),
         "",
+        "## Settings of the service",
+        "",
+        "For `legworth serve --settings FILE`, a TOML file.",
+        "",
+        "| setting | default | meaning |",
+        "| --- | --- | --- |",
+        *_settings(ServiceSettings, ""),
+        "",
         "# What goes in",
         "",
     ]
-    for schema in (*input_schemas().values(), table_schema("legworth", "requests")):
+    for schema in (*input_schemas().values(), *(table_schema("legworth", name) for name in TAKEN)):
         lines += _table(schema)
     lines += ["# What comes out", ""]
-    for schema in (
-        *result_schemas().values(),
-        table_schema("legworth", "decisions"),
-        table_schema("legworth", "simulation"),
-    ):
+    for schema in (*result_schemas().values(), *(table_schema("legworth", name) for name in GIVEN)):
         lines += _table(schema)
     return "\n".join(lines).rstrip() + "\n"
 
@@ -58,13 +67,20 @@ def tables_document() -> str:
 def commands_document() -> str:
     """The help text of every command."""
     lines = ["# Commands", "", "Written from `--help` by `python -m tools.write_docs`; do not edit.", ""]
-    for name, command in [("", cli), *sorted(cli.commands.items())]:
-        title = f"legworth {name}".strip()
+    for title, command in _commands("legworth", cli):
         context = click.Context(
             command, info_name=title, max_content_width=100, terminal_width=100, help_option_names=["-h", "--help"]
         )
         lines += [f"## {title}", "", "```text", command.get_help(context), "```", ""]
     return "\n".join(lines).rstrip() + "\n"
+
+
+def _commands(title: str, command: click.Command) -> Iterator[tuple[str, click.Command]]:
+    """A command and, if it is a group, those within it."""
+    yield title, command
+    if isinstance(command, click.Group):
+        for name, within in sorted(command.commands.items()):
+            yield from _commands(f"{title} {name}", within)
 
 
 def _settings(model: type[BaseModel], prefix: str) -> Iterator[str]:
