@@ -13,8 +13,13 @@ import click
 
 from legworth import __version__
 from legworth.control_commands import change, connection, decide
+from legworth.estimate_command import estimate
+from legworth.nights_commands import nights
 from legworth.options import EXIT_CODES, print_json
 from legworth.pricing_commands import check, compare, price
+from legworth.refresh_command import refresh
+from legworth.schedule_command import schedule
+from legworth.service_commands import serve, tokens
 from legworth.simulate_command import simulate
 
 if TYPE_CHECKING:
@@ -33,7 +38,21 @@ def cli() -> None:
     """
 
 
-for command in (check, price, compare, decide, connection, change, simulate):
+for command in (
+    check,
+    price,
+    compare,
+    decide,
+    connection,
+    change,
+    schedule,
+    simulate,
+    refresh,
+    nights,
+    serve,
+    tokens,
+    estimate,
+):
     cli.add_command(command)
 
 

@@ -1,0 +1,111 @@
+"""An estimate on disk: all its files, or none; what people had put there before is kept."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import shutil
+import tempfile
+from pathlib import Path
+from typing import Any
+
+import pandas as pd
+
+from legworth.writing import TableFormat, write_table
+from network import SettingError
+
+__all__ = ["DOCUMENT", "PAGE", "write_estimate"]
+
+DOCUMENT, PAGE = "estimate.json", "estimate.html"
+KEPT = ("demand", "booking_curves")
+"""Tables of a folder that people may have written themselves."""
+
+
+def write_estimate(
+    out: Path, tables: dict[str, pd.DataFrame], document: dict[str, Any], page: str, table_format: TableFormat = "csv"
+) -> list[Path]:
+    """Write an estimate into a folder.
+
+    All files are written aside first and moved into place at the end, booking curves before the demand that
+    names them, so that a run that fails leaves the folder as it was. Demand and booking curves that stand there and
+    are not known from ``estimate.json`` as those of an earlier estimate are kept, under their names with ``.before`` at
+    the end.
+
+    Parameters
+    ----------
+    out
+        The folder; made if it is not there.
+    tables
+        Tables by name.
+    document
+        Written as ``estimate.json``, with the SHA-256 of the tables added under ``files``.
+    page
+        Written as ``estimate.html``.
+    table_format
+        Format of the tables.
+
+    Returns
+    -------
+    list of Path
+        The files in their places.
+
+    Raises
+    ------
+    SettingError
+        If the folder cannot be written.
+    """
+    names = [f"{name}.{table_format}" for name in ("booking_curves", "demand", "estimates")]
+    for name in (*names, DOCUMENT, PAGE):
+        if (out / name).is_dir():
+            raise SettingError(f"{out / name} is a folder, where a result is to go; move it away")
+    made = not out.exists()
+    try:
+        out.mkdir(parents=True, exist_ok=True)
+        aside = Path(tempfile.mkdtemp(prefix=".unfinished-", dir=out))
+        try:
+            for name in names:
+                write_table(aside / name, tables[name.partition(".")[0]])
+            document = {**document, "files": {name: _digest(aside / name) for name in names}}
+            text = json.dumps(document, indent=2, ensure_ascii=False, allow_nan=False)
+            (aside / DOCUMENT).write_text(text + "\n", encoding="utf-8")
+            (aside / PAGE).write_text(page, encoding="utf-8")
+            _keep(out)
+            for name in (*names, DOCUMENT, PAGE):
+                (aside / name).replace(out / name)
+            # A folder may hold a table in one format only.
+            other = "parquet" if table_format == "csv" else "csv"
+            for name in names:
+                (out / name).with_suffix(f".{other}").unlink(missing_ok=True)
+        finally:
+            shutil.rmtree(aside, ignore_errors=True)
+            if made and not any(out.iterdir()):
+                out.rmdir()
+    except OSError as error:
+        raise SettingError(f"cannot write to {out} ({error.strerror}); free space or name another folder") from error
+    return [out / name for name in (*names, DOCUMENT, PAGE)]
+
+
+def _keep(out: Path) -> None:
+    """Keep copies of tables that people wrote."""
+    known = _known(out / DOCUMENT)
+    for name in KEPT:
+        for ending in ("csv", "parquet"):
+            path = out / f"{name}.{ending}"
+            if path.is_file() and known.get(path.name) != _digest(path):
+                copy = out / f".{path.name}.keeping"
+                shutil.copy2(path, copy)
+                copy.replace(out / f"{path.name}.before")
+
+
+def _known(document: Path) -> dict[str, str]:
+    """SHA-256 of the tables of an earlier estimate by name; none if there is no such document."""
+    try:
+        files = json.loads(document.read_text(encoding="utf-8"))["files"]
+    except (OSError, ValueError, KeyError, TypeError):
+        return {}
+    return {str(name): str(digest) for name, digest in files.items()} if isinstance(files, dict) else {}
+
+
+def _digest(path: Path) -> str:
+    with path.open("rb") as file:
+        return hashlib.file_digest(file, "sha256").hexdigest()
