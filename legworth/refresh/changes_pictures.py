@@ -2,16 +2,10 @@
 
 from __future__ import annotations
 
-import base64
-import io
-import warnings
 from collections.abc import Sequence
-from dataclasses import dataclass
 
-import matplotlib as mpl
 import numpy as np
 from matplotlib.artist import Artist
-from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
 from matplotlib.patches import Patch
@@ -20,8 +14,9 @@ from matplotlib.ticker import FuncFormatter, MaxNLocator
 from legworth.refresh.changes_causes import How
 from legworth.refresh.changes_prices import DateMoves, PriceMove
 from legworth.refresh.changes_words import STEPS, rounded_steps, signed
+from legworth.themed_svg import INK, LINE, Picture, bare_axes, svg_data
 
-__all__ = ["Picture", "calendar_picture", "cause_picture"]
+__all__ = ["calendar_picture", "cause_picture"]
 
 LABELS = {
     "seats": "seats sold, added or taken away",
@@ -37,22 +32,11 @@ COLOURS = {
     "neighbours": ("#6c727a", "#a4abb4"),
     "rise": ("#a33a1d", "#f0937a"),
     "fall": ("#14705d", "#62c4ae"),
-    "ink": ("#2b2f33", "#e4e7ea"),
-    "line": ("#8b9198", "#7d848c"),
 }
 LIGHT = {name: light for name, (light, _) in COLOURS.items()}
 SHOWN, SHOWN_NARROW = 12, 8
 MOST_BARS = 92
 """Dates shown one by one; longer calendars are shown by week."""
-
-
-@dataclass(frozen=True)
-class Picture:
-    """A picture for wide and for narrow screens, each as a data URI, and what it shows in words."""
-
-    wide: str
-    narrow: str
-    about: str
 
 
 def cause_picture(moves: Sequence[PriceMove], currency: str) -> Picture | None:
@@ -86,8 +70,8 @@ def _causes(moves: Sequence[PriceMove], currency: str, width: float) -> str:
         begin = np.cumsum(side, axis=1) - side
         for k, name in enumerate(STEPS):
             axes.barh(place, sign * side[:, k], left=sign * begin[:, k], height=0.62, color=LIGHT[name], linewidth=0)
-    axes.plot([move.move for move in moves], place, "D", color=LIGHT["ink"], markersize=5, linestyle="none")
-    axes.axvline(0.0, color=LIGHT["line"], linewidth=0.8)
+    axes.plot([move.move for move in moves], place, "D", color=INK[0], markersize=5, linestyle="none")
+    axes.axvline(0.0, color=LINE[0], linewidth=0.8)
     axes.set_yticks(place, [_label(move, narrow=width < 6) for move in moves])
     axes.set_ylim(-0.6, len(moves) - 0.4)
     axes.set_xlabel(f"change of the bid price, {currency} a seat")
@@ -97,10 +81,10 @@ def _causes(moves: Sequence[PriceMove], currency: str, width: float) -> str:
     axes.xaxis.set_major_formatter(FuncFormatter(lambda value, _: signed(value, decimals)))
     used = [k for k in range(len(STEPS)) if np.any(effects[:, k])]
     handles: list[Artist] = [Patch(color=LIGHT[STEPS[k]], label=LABELS[STEPS[k]]) for k in used]
-    handles.append(Line2D([], [], color=LIGHT["ink"], marker="D", linestyle="none", label="whole move"))
+    handles.append(Line2D([], [], color=INK[0], marker="D", linestyle="none", label="whole move"))
     figure.legend(handles=handles, loc="outside upper left", ncols=1 if width < 6 else 3, frameon=False)
-    _bare(axes)
-    return _data_uri(figure)
+    bare_axes(axes)
+    return svg_data(figure, COLOURS)
 
 
 def _label(move: PriceMove, *, narrow: bool) -> str:
@@ -120,49 +104,12 @@ def _calendar(dates: Sequence[DateMoves], currency: str, width: float) -> str:
     axes = figure.subplots()
     axes.bar(day, up, width=bar, color=LIGHT["rise"], linewidth=0, label="dearer")
     axes.bar(day, -down, width=bar, color=LIGHT["fall"], linewidth=0, label="cheaper")
-    axes.axhline(0.0, color=LIGHT["line"], linewidth=0.8)
+    axes.axhline(0.0, color=LINE[0], linewidth=0.8)
     ticks = day[np.unique(np.linspace(0, len(day) - 1, 3 if width < 6 else 7).round().astype(np.int64))]
     axes.set_xticks(ticks, [date.strftime("%d %b %Y" if weekly else "%d %b") for date in ticks.tolist()])
     axes.yaxis.set_major_locator(MaxNLocator(4))
     axes.yaxis.set_major_formatter(FuncFormatter(lambda value, _: signed(value, 0)))
     axes.set_xlabel("week of departure" if weekly else "date of departure")
     figure.legend(loc="outside upper left", ncols=2, frameon=False, title=f"price moves times seats left, {currency}")
-    _bare(axes)
-    return _data_uri(figure)
-
-
-def _bare(axes: Axes) -> None:
-    for side in ("top", "right"):
-        axes.spines[side].set_visible(False)
-    for side in ("left", "bottom"):
-        axes.spines[side].set_color(LIGHT["line"])
-    axes.tick_params(colors=LIGHT["ink"])
-    for text in (axes.xaxis.label, axes.yaxis.label, axes.xaxis.get_offset_text()):
-        text.set_color(LIGHT["ink"])
-    figure = axes.get_figure()
-    for legend in figure.legends if figure is not None else ():
-        for text in legend.get_texts():
-            text.set_color(LIGHT["ink"])
-
-
-def _data_uri(figure: Figure) -> str:
-    """SVG without date or random names, its colours named, as a data URI."""
-    text = io.StringIO()
-    # A context would have to be given literal keys to please type checkers that know all of them.
-    with mpl.rc_context(), warnings.catch_warnings():
-        mpl.rcParams["svg.hashsalt"] = "legworth"
-        mpl.rcParams["svg.fonttype"] = "none"
-        mpl.rcParams["text.parse_math"] = False
-        warnings.filterwarnings("ignore", message="Glyph .* missing from font")
-        figure.savefig(text, format="svg", transparent=True, metadata={"Date": None, "Creator": None})
-    found = text.getvalue()
-    found = found[found.index("<svg") :]
-    for name, (light, _) in COLOURS.items():
-        found = found.replace(light, f"var(--{name})")
-    light, dark = ("".join(f"--{name}:{pair[k]};" for name, pair in COLOURS.items()) for k in range(2))
-    style = (
-        f"<style>:root{{{light}}}@media(prefers-color-scheme:dark){{:root{{{dark}}}}}text{{fill:var(--ink)}}</style>"
-    )
-    end = found.index(">") + 1
-    data = base64.b64encode(f"{found[:end]}{style}{found[end:]}".encode()).decode("ascii")
-    return f"data:image/svg+xml;base64,{data}"
+    bare_axes(axes)
+    return svg_data(figure, COLOURS)

@@ -5,8 +5,9 @@ from __future__ import annotations
 import json
 import traceback
 
-from legworth.refresh.changes import find_changes
+from legworth.refresh.changes import ChangesOptions, find_changes
 from legworth.refresh.changes_page import changes_page
+from legworth.refresh.changes_prices import ExplainOptions
 from legworth.refresh.checks import CERTIFICATES, NightLegs, check_line, check_night
 from legworth.refresh.work import Work
 from legworth.store import Check, Forced, Manifest, Night, PartEntry
@@ -53,7 +54,8 @@ def report_changes(work: Work, manifest: Manifest, last: Night | None) -> None:
     A fault in this report must not keep certified prices from the desk, so it is noted and the night goes on.
     """
     try:
-        changes = find_changes(work.aside, last, manifest)
+        explain = ExplainOptions(lp=work.options.pricing.lp, jobs=work.options.pricing.jobs)
+        changes = find_changes(work.aside, last, manifest, ChangesOptions(explain=explain))
         document = json.dumps(changes.as_dict(), indent=1, ensure_ascii=False, allow_nan=False, default=str)
         page = changes_page(changes)
     except Exception as error:  # of any kind, see above
