@@ -16,6 +16,7 @@ __all__ = [
     "ConnectionStudy",
     "Displaced",
     "PartyLine",
+    "displaced_products",
     "itineraries_between",
     "itinerary_named",
     "study_connection",
@@ -207,13 +208,23 @@ def _study(
             for product in products
         ),
         parties=tuple(parties),
-        displaced=_displaced(network, set(path.tolist()), fewer),
+        displaced=displaced_products(network, set(path.tolist()), fewer),
         displaced_by=parties[-1].seats if parties else 0,
     )
 
 
-def _displaced(network: Network, path: set[int], fewer: np.ndarray) -> tuple[Displaced, ...]:
-    """Products with the greatest change in expected passengers, most displaced first."""
+def displaced_products(network: Network, path: set[int], fewer: np.ndarray) -> tuple[Displaced, ...]:
+    """Products with the greatest change in expected passengers, most displaced first.
+
+    Parameters
+    ----------
+    network
+        The network.
+    path
+        Positions of the legs that the party takes; those that a product shares are named.
+    fewer
+        (J,) passengers that every product loses, negative where it gains.
+    """
     greatest = np.argsort(-np.abs(fewer), kind="stable")[:MOST_DISPLACED]
     chosen = sorted((p for p in greatest.tolist() if abs(fewer[p]) >= NOTICED), key=lambda p: -fewer[p])
     rows = []

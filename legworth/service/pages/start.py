@@ -1,0 +1,143 @@
+"""Start page, and search: state of the night, what to look at first, and the way to a leg, itinerary or station."""
+
+from __future__ import annotations
+
+import asyncio
+import json
+from collections.abc import Sequence
+from typing import Annotated, Any
+
+from fastapi import Query, Request
+from starlette.responses import JSONResponse, RedirectResponse, Response
+
+from legworth.refresh.checks import check_line
+from legworth.service.interface import state_of
+from legworth.service.pages.changes import read_changes
+from legworth.service.pages.night_index import NightIndex, Row
+from legworth.service.pages.rendering import address
+from legworth.service.pages.routes import page_router, planner_of
+from legworth.store import Store
+from legworth.store.manifest import Check, night_number
+
+__all__ = ["check_lines", "pages"]
+
+FIRST = 6
+MOST_FOUND = 60
+MOST_SUGGESTED = 12
+
+pages = page_router()
+Words = Annotated[str, Query(max_length=200)]
+
+
+def check_lines(checks: Sequence[Check]) -> list[tuple[bool, str]]:
+    """Every check in one line, failed ones first, and whether it passed."""
+    return sorted(((check.passed, check_line(check)) for check in checks), key=lambda line: line[0])
+
+
+@pages.get("/")
+async def start(request: Request) -> Response:
+    """State of the night, and what to look at first."""
+    planner = await planner_of(request)
+    found = await asyncio.to_thread(_first, planner.index, state_of(request).store)
+    return await planner.page("start.html", **found)
+
+
+def _first(index: NightIndex, store: Store) -> dict[str, Any]:
+    index.need_disagreements()
+    manifest = index.night.manifest
+    changes = read_changes(index.night)
+    moves = ((changes.get("prices") or {}).get("moves") or [])[:FIRST]
+    checks = check_lines(manifest.checks)
+    total = index.one("SELECT count(*) AS products, coalesce(sum(at_stake), 0) AS money FROM disagreements")
+    return {
+        "manifest": manifest,
+        "failed": [line for passed, line in checks if not passed],
+        "checks": len(checks),
+        "stopped": _stopped(store, index.night.number),
+        "moves": moves,
+        "total": total,
+        "disagreements": index.disagreements("true", (), "at_stake DESC, number, fare_class", FIRST),
+        "dearest": index.rows(
+            "SELECT leg, origin, destination, departs, bid_price, expected_sales FROM legs "
+            f"ORDER BY bid_price DESC, leg LIMIT {FIRST}"
+        ),
+        "sizes": index.one(
+            "SELECT count(*) AS legs, count(DISTINCT date) AS dates, min(date) AS first, max(date) AS last FROM legs"
+        ),
+    }
+
+
+def _stopped(store: Store, number: int) -> list[tuple[str, list[str]]]:
+    """Nights after the one in force that a check stopped, and why."""
+    found = []
+    for path in sorted((store.path / "stopped").glob("*.json")):
+        if (night_number(path.stem) or 0) <= number:
+            continue
+        try:
+            said = json.loads(path.read_bytes())
+            reasons = [str(reason) for reason in said.get("reasons", [])]
+        except (OSError, ValueError, AttributeError):
+            reasons = ["its record cannot be read"]
+        found.append((path.stem, reasons))
+    return found
+
+
+@pages.get("/search")
+async def search(request: Request, q: Words = "") -> Response:
+    """Go to the one thing that has this name, or list what has it in its name."""
+    planner = await planner_of(request)
+    words = q.strip()
+    straight = await asyncio.to_thread(_straight, planner.index, words)
+    if straight is not None:
+        return RedirectResponse(straight, 303)
+    found = await asyncio.to_thread(_found, planner.index, words, MOST_FOUND)
+    return await planner.page("search.html", q=words, most=MOST_FOUND, **found)
+
+
+@pages.get("/suggest.json")
+async def suggest(request: Request, q: Words = "") -> Response:
+    """Names that begin or go on so, for the search box."""
+    planner = await planner_of(request)
+    if not q.strip():
+        return JSONResponse([])
+    found = await asyncio.to_thread(_found, planner.index, q.strip(), MOST_SUGGESTED)
+    names = [(row["leg"], f"leg, {row['origin']} to {row['destination']}") for row in found["legs"]]
+    names += [(row["itinerary"], f"itinerary, {row['origin']} to {row['destination']}") for row in found["itineraries"]]
+    names = [(row["station"], f"station, {row['name']}") for row in found["stations"]] + names
+    return JSONResponse([{"name": name, "about": about} for name, about in names[:MOST_SUGGESTED]])
+
+
+def _straight(index: NightIndex, words: str) -> str | None:
+    """Address of the one leg, itinerary or pair of stations of this name."""
+    if index.one("SELECT leg FROM legs WHERE leg = ?", words):
+        return address("/leg", name=words)
+    if index.one("SELECT itinerary FROM itineraries WHERE itinerary = ?", words):
+        return address("/itinerary", name=words)
+    for mark in (None, "-"):
+        ends = words.split(mark)
+        if len(ends) == 2 and all(end in index.stations for end in ends):
+            return address("/pair", from_=ends[0], to=ends[1])
+    return None
+
+
+def _found(index: NightIndex, words: str, most: int) -> dict[str, list[Row]]:
+    if not words:
+        return {"legs": [], "itineraries": [], "stations": []}
+    legs = (
+        "SELECT leg, origin, destination, departs FROM legs WHERE contains(lower(leg), lower(?)) "
+        f"ORDER BY NOT starts_with(lower(leg), lower(?)), date, leg LIMIT {most}"
+    )
+    itineraries = (
+        "SELECT itinerary, origin, destination, departs, legs FROM itineraries "
+        "WHERE contains(lower(itinerary), lower(?)) "
+        f"ORDER BY NOT starts_with(lower(itinerary), lower(?)), date, itinerary LIMIT {most}"
+    )
+    stations = (
+        "SELECT station, name FROM stations WHERE contains(lower(station), lower(?)) "
+        f"OR contains(lower(name), lower(?)) ORDER BY station LIMIT {most}"
+    )
+    return {
+        "legs": index.rows(legs, words, words),
+        "itineraries": index.rows(itineraries, words, words),
+        "stations": index.rows(stations, words, words),
+    }
