@@ -76,6 +76,9 @@ def means(simulated: SimulatedHistory) -> None:
         click.echo(f"    within two standard errors: {truth.within:.1%} of {network.n_products:,} products")
         if closing == "shared":
             _line("    deviation of a departure", [*spread, truth.deviation_of()])
+    truth, _ = mean_truth(simulated, simulated.flags_alone(), as_of)
+    _line("estimate without open_share", [*(truth.bias_of(at) for at in range(len(classes))), truth.bias])
+    click.echo(f"    within two standard errors: {truth.within:.1%} of {network.n_products:,} products")
     true = truth.true
     for label, naive in naive_means(simulated, as_of).items():
         known = ~np.isnan(naive)

@@ -46,7 +46,7 @@ DATE = click.DateTime(formats=["%Y-%m-%d"])
 )
 @click.option("--seats", type=TABLE, help="Table of seats by equipment; for GTFS by trip, route or route type.")
 @click.option(
-    "--service-types", metavar="LETTERS", help="SSIM service types taken; if left out, passenger services BGJQRSUV."
+    "--service-types", metavar="LETTERS", help="SSIM service types taken; if left out, passenger services BGJQRSU."
 )
 @click.option("--cabins", metavar="LETTERS", help="SSIM cabins whose seats count; all if left out.")
 @click.option("--partner-legs", is_flag=True, help="Keep SSIM codeshare legs whose operating leg is not in the file.")

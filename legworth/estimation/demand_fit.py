@@ -6,8 +6,9 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from legworth.estimation.closing import CLOSINGS, Closing, ClosingWays, SeenDemand
+from legworth.estimation.closing import ClosingWays, SeenDemand
 from legworth.estimation.curves import Shapes
+from legworth.estimation.demand_options import DemandOptions
 from legworth.estimation.dispersion import Persistence
 from legworth.estimation.evidence import (
     class_dispersion,
@@ -19,7 +20,6 @@ from legworth.estimation.evidence import (
 from legworth.estimation.history import BookingHistory
 from legworth.estimation.increments import Increments
 from legworth.estimation.market_kinds import ONE_KIND, kinds_of_market
-from legworth.estimation.pickup import PICKUPS, Pickup
 from legworth.estimation.pools import Pools
 from legworth.estimation.rates import RateModel, Sight, fit_rates, refit_rates, settle, sight
 from legworth.estimation.regression import Effects
@@ -27,58 +27,13 @@ from legworth.estimation.shrinkage import ShrunkRates
 from network.arrays import FloatArray, IntArray, TimeArray
 from network.errors import SettingError
 
-__all__ = ["DemandFit", "DemandOptions", "fit_demand"]
+__all__ = ["DemandFit", "fit_demand"]
 
 SAMPLE = 1_500_000
 """Rows from which curves, closing and persistence are fitted; rates, effects and dispersion use all."""
 
 TURNS = 3
 """Turns of rates and curves, effects, dispersion, shrinkage."""
-
-
-@dataclass(frozen=True)
-class DemandOptions:
-    """How demand is estimated.
-
-    Attributes
-    ----------
-    closing
-        How an interval in which a class was closed is read. ``shared``: the class closed at an unknown instant of it
-        because seats ran out for all (leg control); ``limit``: it closed on its own bookings, so they are a lower
-        bound (the textbook's censored count); ``discard``: such intervals are left out; ``ignore``: the flag is not
-        looked at, which is biased low.
-    pickup
-        ``combined``: bookings so far inform demand to come as far as history says they do; ``additive``: they do not;
-        ``multiplicative``: demand to come is in proportion to them.
-    half_life
-        Age in days at which a departure counts half; None for no ageing.
-    weekday, season
-        Whether effects of the weekday and of the time of year are fitted; they need 5 weeks and 330 days of departures.
-    seed
-        Seed of the choice of series where history is too long for all of it to shape the curves.
-
-    Raises
-    ------
-    SettingError
-        If one is out of its limits.
-    """
-
-    closing: Closing = "shared"
-    pickup: Pickup = "combined"
-    half_life: float | None = 365.0
-    weekday: bool = True
-    season: bool = True
-    seed: int = 1
-
-    def __post_init__(self) -> None:
-        if self.closing not in CLOSINGS:
-            raise SettingError(f"closing {self.closing!r} is unknown; choose {', '.join(CLOSINGS)}")
-        if self.pickup not in PICKUPS:
-            raise SettingError(f"pickup {self.pickup!r} is unknown; choose {', '.join(PICKUPS)}")
-        if self.half_life is not None and not self.half_life > 0:
-            raise SettingError(f"half_life must be above 0 days, got {self.half_life}")
-        if self.seed < 0:
-            raise SettingError(f"seed must not be negative, got {self.seed}")
 
 
 @dataclass(frozen=True, eq=False)
@@ -183,7 +138,7 @@ def fit_demand(
     Raises
     ------
     SettingError
-        If no reading is known by then.
+        If no reading is known by then, or none shows an open class.
     """
     options = options or DemandOptions()
     day = as_of.astype("datetime64[D]")
@@ -199,6 +154,7 @@ def fit_demand(
     else:
         fitted = _fit(increments.take(sampled), series.take(sampled), model, pools, options)
         model, view, effects = _widen(increments, series, fitted, options)
+    notes = _notes(model, view, history.fare_classes, day, settled=fitted.settled)
     model = replace(model, dispersion=class_dispersion(model, view, options.seed))
     model = replace(model, dispersion=products_dispersion(model, view))
     model = refit_rates(model, view)
@@ -218,8 +174,35 @@ def fit_demand(
         persistence=fitted.persistence,
         observations=seen.observations,
         passengers=seen.exposure.ravel() * rates.rate,
-        warnings=fitted.warnings,
+        warnings=notes,
     )
+
+
+def _notes(
+    model: RateModel, view: Sight, fare_classes: tuple[str, ...], day: np.datetime64, *, settled: bool
+) -> tuple[str, ...]:
+    """Say what was not to be had, in sentences."""
+    reach = np.bincount(model.fare_class[view.product], view.reach, minlength=len(fare_classes))
+    never = [name for name, seen in zip(fare_classes, reach, strict=True) if seen <= 0]
+    if len(never) == len(fare_classes):
+        raise SettingError(
+            f"no class was open in any reading known by {day}, so that nothing is known of demand; open must be true "
+            "where a class was for sale"
+        )
+    notes = [
+        f"Class {name} was never open in this history: nothing is known of its demand, and 0 was written, which keeps "
+        "no seats for it; give its demand by adjustments or take more history"
+        for name in never
+    ]
+    blind = np.unique(np.flatnonzero(np.any(model.shapes.blind, axis=1)) % len(fare_classes))
+    hardly = [fare_classes[at] for at in blind if fare_classes[at] not in never]
+    if hardly:
+        notes.append(
+            f"Hardly ever open in some interval: {', '.join(hardly)}; that part of the booking curves is borrowed"
+        )
+    if not settled:
+        notes.append("Booking curves had not settled when the limit of rounds was reached; history may be too thin")
+    return tuple(notes)
 
 
 def _pair_curves(model: RateModel, pools: Pools) -> IntArray:
@@ -268,7 +251,7 @@ class _Fitted:
     effects: Effects
     kinds: tuple[str, ...]
     persistence: tuple[Persistence, ...]
-    warnings: tuple[str, ...]
+    settled: bool
 
 
 def _fit(increments: Increments, series: _Series, model: RateModel, pools: Pools, options: DemandOptions) -> _Fitted:
@@ -286,13 +269,7 @@ def _fit(increments: Increments, series: _Series, model: RateModel, pools: Pools
         model = refit_rates(model, view)
         model = replace(model, dispersion=class_dispersion(model, view, options.seed))
         model = replace(model, prior=evidence(model, view).shrunk(pools).rate)
-    warnings = []
-    if not settled:
-        warnings.append("booking curves had not settled when the limit of rounds was reached; history may be too thin")
-    if np.any(model.shapes.blind):
-        warnings.append("some classes were hardly ever open in an interval; their booking curves borrow that part")
-    lasting = persistence_of(increments, model, view)
-    return _Fitted(model, view, effects, kinds, lasting, tuple(warnings))
+    return _Fitted(model, view, effects, kinds, persistence_of(increments, model, view), settled)
 
 
 def _widen(

@@ -7,7 +7,8 @@ from datetime import datetime
 
 import numpy as np
 
-from legworth.estimation.demand_fit import DemandFit, DemandOptions, fit_demand
+from legworth.estimation.demand_fit import DemandFit, fit_demand
+from legworth.estimation.demand_options import DemandOptions
 from legworth.estimation.departures import network_departures
 from legworth.estimation.forecasts import Forecast, forecast
 from legworth.estimation.history import BookingHistory

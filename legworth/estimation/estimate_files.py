@@ -11,6 +11,7 @@ from typing import Any
 
 import pandas as pd
 
+from legworth.placing import place_together
 from legworth.writing import TableFormat, write_table
 from network import SettingError
 
@@ -70,12 +71,10 @@ def write_estimate(
             (aside / DOCUMENT).write_text(text + "\n", encoding="utf-8")
             (aside / PAGE).write_text(page, encoding="utf-8")
             _keep(out)
-            for name in (*names, DOCUMENT, PAGE):
-                (aside / name).replace(out / name)
             # A folder may hold a table in one format only.
             other = "parquet" if table_format == "csv" else "csv"
-            for name in names:
-                (out / name).with_suffix(f".{other}").unlink(missing_ok=True)
+            gone = [Path(name).with_suffix(f".{other}").name for name in names]
+            place_together(aside, out, (*names, DOCUMENT, PAGE), gone)
         finally:
             shutil.rmtree(aside, ignore_errors=True)
             if made and not any(out.iterdir()):

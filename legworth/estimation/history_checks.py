@@ -40,7 +40,8 @@ def check_sequences(readings: Readings, now: float, faults: Faults, *, may_reope
         Receives what is found. Of a series whose rows repeat or are out of order nothing else is told.
     """
     found = _Found(readings, faults)
-    spoiled = found.repeats() | found.disorder()
+    repeated = found.repeats()
+    spoiled = repeated | found.disorder(~repeated)
     found.future(now)
     sound = ~spoiled[readings.series]
     found.falls(sound)
@@ -86,8 +87,8 @@ class _Found:
         )
         return np.bincount(readings.series[same], minlength=len(readings.start) - 1) > 0
 
-    def disorder(self) -> BoolArray:
-        """(S,) series whose rows run neither towards departure nor away from it."""
+    def disorder(self, sound: BoolArray) -> BoolArray:
+        """(S,) series, of those sound so far, whose rows run neither towards departure nor away from it."""
         readings = self.readings
         row, days = readings.row, readings.days_before
         assert row is not None
@@ -96,7 +97,7 @@ class _Found:
         sooner = self.follows & (row < row[self.before]) & (days != days[self.before])
         down = np.bincount(readings.series[later], minlength=n_series)
         up = np.bincount(readings.series[sooner], minlength=n_series)
-        mixed = (down > 0) & (up > 0)
+        mixed = sound & (down > 0) & (up > 0)
         if not mixed.any():
             return mixed
         odd = np.where((down >= up)[readings.series], sooner, later) & mixed[readings.series]

@@ -157,16 +157,7 @@ def estimate_folder(
     demand = Demand.of(estimate.mean, estimate.deviation)
     adjusted = apply_adjustments(demand, rows[0], rows[1], departures.date[at])
     clock.lap("adjust")
-    backtest = None
-    if options.backtest.snapshots:
-        backtest = run_backtest(
-            readings.history,
-            Pools.of(readings.history, network, departures.history_name),
-            np.datetime64(network.as_of.date(), "D"),
-            options.demand,
-            options.backtest,
-            lambda done, _: tell(2 + done, steps),
-        )
+    backtest = _tested(readings.history, network, departures, options, lambda done, _: tell(2 + done, steps))
     scores = None if backtest is None else score_backtest(backtest)
     clock.lap("test")
     tell(steps, steps)
@@ -190,6 +181,17 @@ def estimate_folder(
         warnings=(*read.warnings, *readings.warnings, *rows[2]),
         seconds=clock.seconds,
     )
+
+
+def _tested(
+    history: BookingHistory, network: Network, departures: Departures, options: EstimateOptions, progress: Progress
+) -> Backtest | None:
+    """Test on the past; None where that is not wanted or history is too short."""
+    if not options.backtest.snapshots:
+        return None
+    pools = Pools.of(history, network, departures.history_name)
+    day = np.datetime64(network.as_of.date(), "D")
+    return run_backtest(history, pools, day, options.demand, options.backtest, progress)
 
 
 class _Clock:

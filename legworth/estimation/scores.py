@@ -42,7 +42,8 @@ class Score:
     coverage
         Share of the outcomes within the interval.
     compared
-        Forecasts that both rivals could make; the figures below are of these alone.
+        Forecasts that both rivals could make, or the average alone where no departure has one of last year; the figures
+        below are of these alone.
     error_same, error_last_year, error_average, bias_same, bias_last_year, bias_average
         Error and bias of the estimate and of its rivals.
     """
@@ -170,7 +171,8 @@ def _score(label: str, held: HeldOut, chosen: BoolArray | None = None) -> Score:
 
 
 def _scored(label: str, sums: _Sums) -> Score:
-    both = ~np.isnan(sums.last_year) & ~np.isnan(sums.average)
+    has_last_year = bool(np.any(~np.isnan(sums.last_year)))
+    both = ~np.isnan(sums.average) & (~np.isnan(sums.last_year) | (not has_last_year))
     came = sums.came[both]
     total, compared = float(sums.came.sum()), float(came.sum())
 
@@ -191,10 +193,10 @@ def _scored(label: str, sums: _Sums) -> Score:
         coverage=float(sums.inside.mean()) if sums.inside is not None and len(sums.inside) else None,
         compared=int(both.sum()),
         error_same=error(sums.mean),
-        error_last_year=error(sums.last_year),
+        error_last_year=error(sums.last_year) if has_last_year else None,
         error_average=error(sums.average),
         bias_same=bias(sums.mean),
-        bias_last_year=bias(sums.last_year),
+        bias_last_year=bias(sums.last_year) if has_last_year else None,
         bias_average=bias(sums.average),
     )
 

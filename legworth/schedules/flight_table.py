@@ -159,6 +159,7 @@ class _Rows:
     def stations(self, places: Places) -> tuple[Places, IntArray, IntArray]:
         """All stations, and the positions of both ends; notes unknown ones and rows that end where they begin."""
         names = {column: self.text(column) for column in ("origin", "destination")}
+        lacking = np.zeros(len(self.bad), dtype=bool)
         for column, found in names.items():
             if places.complete:
                 unknown = (places.locate(found) < 0) & ~self.bad
@@ -167,9 +168,10 @@ class _Rows:
                     return f"{found[row]!r} is not in the table of stations; add it or correct the name"
 
                 self.note(np.flatnonzero(unknown), column, problem)
-                self.bad |= unknown
+                lacking |= unknown
             else:
                 places = places.with_names(found[~self.bad])
+        self.bad |= lacking
         origin, destination = (places.locate(found) for found in names.values())
         loop = (origin == destination) & ~self.bad
         self.note(np.flatnonzero(loop), "destination", lambda _: "the leg ends where it begins; correct one of the two")

@@ -14,6 +14,7 @@ from pathlib import Path
 import numpy as np
 import pandas as pd
 
+from legworth.placing import place_together
 from legworth.schedules.connection_tables import itinerary_table, wanted_pairs
 from legworth.schedules.connections import Connections, build_connections
 from legworth.schedules.timetable import Timetable
@@ -210,7 +211,7 @@ def _without_itinerary(out: Path, itineraries: NameArray) -> dict[str, int]:
 
 
 def _write(out: Path, tables: dict[str, pd.DataFrame], settings: str | None) -> None:
-    """Write all files aside, then move them into place; tables of the same names in Parquet go."""
+    """Write all files aside, then move them into place together; tables of the same names in Parquet go."""
     made = not out.exists()
     try:
         out.mkdir(parents=True, exist_ok=True)
@@ -225,10 +226,7 @@ def _write(out: Path, tables: dict[str, pd.DataFrame], settings: str | None) -> 
             for name in names:
                 if (out / name).is_dir():
                     raise SettingError(f"{out / name} is a folder, where a table is to go; move it away")
-            for name in names:
-                (aside / name).replace(out / name)
-            for name in tables:
-                (out / f"{name}.parquet").unlink(missing_ok=True)
+            place_together(aside, out, names, [f"{name}.parquet" for name in tables])
         finally:
             shutil.rmtree(aside, ignore_errors=True)
             if made and not any(out.iterdir()):

@@ -185,7 +185,7 @@ def departures_of(
 def _note_unknown_clocks(legs: PeriodicLegs, places: Places, faults: Faults) -> None:
     zone, _ = places.zones
     for end, column in ((legs.departs, legs.columns.departs_variation), (legs.arrives, legs.columns.arrives_variation)):
-        missing = (end.variation == NO_VARIATION) & (end.station >= 0)
+        missing = (end.variation == NO_VARIATION) & (end.station >= 0) & (legs.weekdays > 0)
         missing &= np.append(zone, -1)[end.station] < 0
         names = places.name
 

@@ -22,6 +22,8 @@ __all__ = ["ScheduleFormat", "ScheduleOptions", "read_schedule"]
 
 ScheduleFormat = Literal["ssim", "gtfs", "csv"]
 
+NAMES: dict[str, str] = {"ssim": "an airline schedule", "gtfs": "a GTFS feed", "csv": "a plain table of flights"}
+
 
 @dataclass(frozen=True)
 class ScheduleOptions:
@@ -62,7 +64,7 @@ def read_schedule(path: Path, places: Places, seats: Mapping[str, int], options:
     InputError
         With everything that is wrong, by line and column.
     SettingError
-        If the dates make too many legs, or none.
+        If the dates make too many legs, or none, or an option is for another format.
     """
     faults = Faults()
     try:
@@ -89,6 +91,7 @@ def _read(
     if not path.exists():
         raise InputError([Fault(str(path), 0, "", "there is no such file; name a schedule")])
     kind = options.schedule_format or _format_of(path)
+    _refuse_options_of_others(path, kind, options)
     if kind == "gtfs":
         return read_gtfs(path, options.window, places, seats, options.gtfs, faults)
     if path.is_dir():
@@ -96,6 +99,23 @@ def _read(
     if kind == "csv":
         return read_flight_table(path, options.window, places, seats, faults)
     return read_ssim(path.name, path.read_bytes(), options.window, places, seats, options.ssim, faults)
+
+
+def _refuse_options_of_others(path: Path, kind: ScheduleFormat, options: ScheduleOptions) -> None:
+    """Refuse what is asked of another format, since it would not be done."""
+    usual, given = SsimOptions(), options.ssim
+    asked = (
+        ("--service-types", "ssim", given.service_types != usual.service_types),
+        ("--cabins", "ssim", given.cabins != usual.cabins),
+        ("--partner-legs", "ssim", given.partner_legs != usual.partner_legs),
+        ("--kinds", "gtfs", options.gtfs != GtfsOptions()),
+    )
+    for option, of, is_given in asked:
+        if is_given and kind != of:
+            raise SettingError(
+                f"{option} is for {NAMES[of]}, and {path.name} is read as {NAMES[kind]}; leave it out, or name the "
+                "format with --format"
+            )
 
 
 def _format_of(path: Path) -> ScheduleFormat:

@@ -51,6 +51,8 @@ def print_schedule(out: Path, timetable: Timetable, made: MadeFolder) -> None:
     facts.add_row("Legs", f"{len(timetable):,}", f"{timetable.capacity.sum():,} seats, departing {first} to {last}")
     facts.add_row("Stations", f"{len(timetable.places):,}", _without(timetable))
     for reason, count in timetable.left_out.items():
+        if not count:
+            continue
         facts.add_row("Left out", f"{count:,}", reason)
     if made.connections is not None:
         changes = made.connections.as_dict()["by_vehicles"]

@@ -25,9 +25,9 @@ from network.model import ranges
 
 __all__ = ["PASSENGER_SERVICES", "SsimOptions", "read_ssim"]
 
-PASSENGER_SERVICES = "BGJQRSUV"
+PASSENGER_SERVICES = "BGJQRSU"
 """Service types that are sold by the seat: scheduled and additional passenger services, shuttles, mixed aircraft, and
-surface vehicles (from memory)."""
+passengers in surface vehicles. V, surface vehicles too, is cargo and mail in lorries (from memory)."""
 
 LONGEST_LEG = 24
 """Hours; no scheduled flight takes longer."""
@@ -86,7 +86,7 @@ def read_ssim(
     records = read_records(file, data, faults)
     if records is None:
         return None
-    found = read_legs(records, window, places, options.cabins, faults)
+    found = read_legs(records, window, places, options.service_types, options.cabins, faults)
     segments = read_segments(records, faults).among(found.kept)
     left_out: dict[str, int] = {}
     onward = _next_record(found.legs) if segments.restrictions else np.full(len(found.legs), -1)

@@ -27,7 +27,7 @@ from legworth.schedules.ssim_fields import (
 )
 from legworth.schedules.ssim_layout import FLIGHT_LEG
 from legworth.schedules.ssim_records import SsimRecords
-from network.arrays import IntArray, NameArray
+from network.arrays import BoolArray, IntArray, NameArray
 from network.faults import Faults
 
 __all__ = ["SsimLegs", "read_legs"]
@@ -60,7 +60,9 @@ class SsimLegs:
     places: Places
 
 
-def read_legs(records: SsimRecords, window: Window, places: Places, cabins: str, faults: Faults) -> SsimLegs:
+def read_legs(
+    records: SsimRecords, window: Window, places: Places, services: str, cabins: str, faults: Faults
+) -> SsimLegs:
     """Read carrier, leg and trailer records.
 
     Parameters
@@ -71,6 +73,8 @@ def read_legs(records: SsimRecords, window: Window, places: Places, cabins: str,
         Dates wanted; years of two digits are taken in the century closest to them.
     places
         Known stations; others are added, or faults if the table is complete.
+    services
+        Letters of the service types taken; the stations of others need not be in the table.
     cabins
         Letters of the cabins whose seats count; all if empty.
     faults
@@ -80,7 +84,7 @@ def read_legs(records: SsimRecords, window: Window, places: Places, cabins: str,
     found = records.take(records.type == b"3")
     read = FieldReader(found, faults)
     flight, own = _flights(read)
-    service, services = read.words(FLIGHT_LEG["service_type"], r"[A-Z]", "is not a service type; write one letter")
+    service, names = read.words(FLIGHT_LEG["service_type"], r"[A-Z]", "is not a service type; write one letter")
     period = read_period(read, FLIGHT_LEG["period_from"], FLIGHT_LEG["period_to"], window.first)
     weekdays = read.values(
         FLIGHT_LEG["days_of_operation"],
@@ -88,7 +92,8 @@ def read_legs(records: SsimRecords, window: Window, places: Places, cabins: str,
         "does not hold days of operation; write each day's number in its own place, like '1 3 5 7'",
     )
     weeks = read.values(FLIGHT_LEG["frequency_rate"], frequency, "is not a frequency rate; write 2 or a blank")
-    places, stations = _stations(read, places, faults)
+    taken = np.isin(np.array([*names, ""], dtype=str)[service], list(services))
+    places, stations = _stations(read, places, taken, faults)
     departs, arrives = _ends(read, stations)
     equipment, types = read.words(
         FLIGHT_LEG["aircraft_type"], r"[A-Z0-9]{3}", "is not an aircraft type; write three letters or digits"
@@ -119,8 +124,8 @@ def read_legs(records: SsimRecords, window: Window, places: Places, cabins: str,
         kind=_kind(read),
     )
     good = np.flatnonzero(~read.bad)
-    names = np.array([*services, ""], dtype=str)[service]
-    return SsimLegs(found.take(good), good, legs.take(good), names[good], places)
+    kinds = np.array([*names, ""], dtype=str)[service]
+    return SsimLegs(found.take(good), good, legs.take(good), kinds[good], places)
 
 
 def _flights(read: FieldReader) -> tuple[NameArray, NameArray]:
@@ -154,26 +159,30 @@ def _variation(read: FieldReader) -> IntArray:
     return 100 * hundreds + units
 
 
-def _stations(read: FieldReader, places: Places, faults: Faults) -> tuple[Places, tuple[IntArray, IntArray]]:
-    """Positions of the stations of both ends among all known; the new ones are added, or noted."""
+def _stations(
+    read: FieldReader, places: Places, taken: BoolArray, faults: Faults
+) -> tuple[Places, tuple[IntArray, IntArray]]:
+    """Positions of the stations of both ends among all known; the new ones are added, or noted for legs taken."""
     positions = []
+    lacking = np.zeros(len(read.bad), dtype=bool)
     for name in ("departure_station", "arrival_station"):
         field = FLIGHT_LEG[name]
         of, names = read.words(field, "[A-Z]{3}", "is not a station; write three letters")
         texts = np.array(names, dtype=object)
         if places.complete:
-            unknown = (places.locate(texts) < 0)[of] & ~read.bad if len(texts) else np.zeros(0, dtype=bool)
+            unknown = (places.locate(texts) < 0)[of] & ~read.bad & taken if len(texts) else np.zeros(0, dtype=bool)
 
             def problem(row: int, texts: NameArray = texts, of: IntArray = of) -> str:
                 return f"{texts[of[row]]!r} is not in the table of stations; add it or correct the name"
 
             read.records.note(faults, np.flatnonzero(unknown), field.column, problem)
-            read.bad |= unknown
+            lacking |= unknown
         else:
             places = places.with_names(np.array([text for text in names if text], dtype=object))
         positions.append((of, texts))
+    read.bad |= lacking
     located = [places.locate(texts)[of] if len(texts) else of for of, texts in positions]
-    loop = ~read.bad & (located[0] == located[1])
+    loop = ~read.bad & taken & (located[0] == located[1])
     read.records.note(
         faults,
         np.flatnonzero(loop),

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from functools import cache
 
 import numpy as np
@@ -180,6 +181,18 @@ def test_a_long_history_is_tested_by_whole_city_pairs() -> None:
     assert len(kept) == found.pairs
     whole = np.isin(pair[drawn().history.series_itinerary], list(kept))
     assert found.history.n_series == whole.sum()
+
+
+def test_a_history_shorter_than_a_year_is_held_against_the_average() -> None:
+    found = backtested()
+    nothing = np.full(len(found.held), np.nan)
+    score = score_backtest(replace(found, held=replace(found.held, last_year=nothing))).every
+    can = ~np.isnan(found.held.average)
+    came = found.held.came[can]
+    assert score.compared == can.sum() > 500
+    assert (score.error_last_year, score.bias_last_year) == (None, None)
+    assert score.error_average == pytest.approx(np.abs(found.held.average[can] - came).sum() / came.sum())
+    assert score.error_same == pytest.approx(np.abs(found.held.mean[can] - came).sum() / came.sum())
 
 
 def test_too_short_a_history_is_not_tested() -> None:

@@ -12,7 +12,8 @@ import pytest
 from scipy import optimize
 
 from legworth.estimation.closing import Closing, SeenDemand
-from legworth.estimation.demand_fit import DemandFit, DemandOptions, fit_demand
+from legworth.estimation.demand_fit import DemandFit, fit_demand
+from legworth.estimation.demand_options import DemandOptions
 from legworth.estimation.dispersion import coverage
 from legworth.estimation.estimate import estimate_demand
 from legworth.estimation.forecasts import find_series, forecast
@@ -211,6 +212,23 @@ def test_a_product_closed_all_along_falls_back_to_its_pool_and_is_flagged() -> N
     assert found.deviation[0] ** 2 / found.mean[0] > 1
 
 
+def test_a_class_that_was_never_open_is_named_and_a_history_without_open_classes_refused() -> None:
+    """Of such a class nothing is known, not even by its pool; demand of none keeps no seats, so it must be told."""
+    drawn = draw_history(4, n_itineraries=12, n_pairs=3, n_dates=90, seats=None)
+    history = drawn.history
+    rows = np.repeat(history.series_class == 0, np.diff(history.start))
+    closed = replace(history, booked=np.where(rows, 0.0, history.booked), open=history.open & ~rows)
+    fit = fit_demand(closed, drawn.pools, AS_OF, STILL)
+    assert [note.startswith(f"Class {CLASSES[0]} was never open") for note in fit.warnings] == [True]
+    rate = fit.rates.rate.reshape(drawn.rate.shape)
+    assert np.all(rate[:, 0] == 0)
+    assert np.all(rate[:, 1:] > 0)
+    with pytest.raises(SettingError, match="no class was open in any reading"):
+        fit_demand(
+            replace(history, booked=0 * history.booked, open=np.zeros_like(history.open)), drawn.pools, AS_OF, STILL
+        )
+
+
 def test_a_class_closed_towards_departure_everywhere_is_told() -> None:
     drawn = draw_history(4, n_itineraries=12, n_pairs=3, n_dates=90, seats=None)
     late = np.tile(DAYS < 5, len(drawn.history.departure)) & np.repeat(drawn.history.series_class == 2, len(DAYS))
@@ -218,7 +236,9 @@ def test_a_class_closed_towards_departure_everywhere_is_told() -> None:
     booked = np.where(late, by_five, drawn.history.booked)
     closed = replace(drawn.history, booked=booked, open=drawn.history.open & ~late)
     fit = fit_demand(closed, drawn.pools, AS_OF, STILL)
-    assert any("hardly ever open" in warning for warning in fit.warnings)
+    assert fit.warnings == (
+        f"Hardly ever open in some interval: {CLASSES[2]}; that part of the booking curves is borrowed",
+    )
     assert fit.model.shapes.blind[2].any()
     assert not fit.model.shapes.blind[:2].any()
     assert np.all(fit.model.shapes.share > 0)

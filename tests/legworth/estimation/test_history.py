@@ -132,6 +132,10 @@ CONTRADICTIONS = {
         ["2030-02-20,NOR-HUB,A,7,3,true", "2030-02-20,NOR-HUB,A,7,3,true"],
         "history.csv:3: days_before: a reading of this departure at 7 days stands already in line 2; keep one of ",
     ),
+    "twice, far apart": (
+        [f"2030-02-20,NOR-HUB,A,{day},3,true" for day in (14, 7, 3, 14)],
+        "history.csv:5: days_before: a reading of this departure at 14 days stands already in line 2; keep one of ",
+    ),
     "after departure": (
         ["2030-02-20,NOR-HUB,A,-1,3,true"],
         "history.csv:2: days_before: -1 was read after departure, when no class is open; remove the row or correct it",

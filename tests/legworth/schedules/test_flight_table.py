@@ -195,6 +195,8 @@ def test_stations_that_the_table_does_not_have(tmp_path: Path) -> None:
     _, faults = read(table_of(ROWS[:2], tmp_path), complete=True, BER="Europe/Berlin")
     assert [(fault.line, fault.column) for fault in faults.errors] == [(2, "destination"), (3, "origin")]
     assert "'NYC' is not in the table of stations" in str(faults.errors[0])
+    _, faults = read(table_of(ROWS[2:3], tmp_path), complete=True, BER="Europe/Berlin")
+    assert [fault.column for fault in faults.errors] == ["destination", "origin"]
 
 
 def test_overlapping_periods_of_a_flight(tmp_path: Path) -> None:

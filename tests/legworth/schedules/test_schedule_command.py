@@ -304,6 +304,35 @@ def test_paths_that_cannot_be(what: str, file: Path, tmp_path: Path) -> None:
     assert made(source, out).code == 2
 
 
+@pytest.mark.parametrize(
+    ("given", "kind", "told"),
+    [
+        (("--kinds", "rail"), "ssim", "--kinds is for a GTFS feed, and winter.ssim is read as an airline schedule"),
+        (("--kinds", "rail"), "csv", "--kinds is for a GTFS feed, and flights.csv is read as a plain table"),
+        (("--cabins", "C"), "csv", "--cabins is for an airline schedule, and flights.csv is read as a plain table"),
+        (
+            ("--service-types", "J"),
+            "gtfs",
+            "--service-types is for an airline schedule, and feed.zip is read as a GTFS",
+        ),
+        (("--partner-legs",), "gtfs", "--partner-legs is for an airline schedule, and feed.zip is read as a GTFS feed"),
+    ],
+)
+def test_options_of_another_format_are_refused(
+    given: tuple[str, ...], kind: str, told: str, file: Path, tmp_path: Path
+) -> None:
+    """They would change nothing, which nobody would notice."""
+    if kind == "csv":
+        file = tmp_path / "flights.csv"
+        file.write_text("\n".join([HEADER, *ROWS]), encoding="utf-8")
+    elif kind == "gtfs":
+        file = as_zip(FEED, tmp_path / "feed.zip")
+    outcome = made(file, tmp_path / "made", *given)
+    assert outcome.code == 2
+    assert told in outcome.err
+    assert not (tmp_path / "made").exists()
+
+
 def test_a_folder_is_no_airline_schedule(tmp_path: Path) -> None:
     outcome = made(tmp_path, tmp_path / "made", "--format", "ssim")
     assert outcome.code == 2

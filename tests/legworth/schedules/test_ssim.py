@@ -269,10 +269,12 @@ def test_cabins_that_count() -> None:
 
 
 def test_services_without_passengers_are_left_out() -> None:
-    legs = [Leg(), Leg(number=2, service="F", configuration=""), Leg(number=3, service="P")]
+    """F and V are cargo, by aircraft and by lorry; P is positioning (from memory)."""
+    legs = [Leg(), *(Leg(number=2 + at, service=code, configuration="") for at, code in enumerate("FPV"))]
     timetable = sound(file_of(legs), ONE_DAY)
     assert timetable.name.tolist() == ["ZQ123-0301"]
-    assert timetable.left_out == {"leg records of service type F": 1, "leg records of service type P": 1}
+    assert timetable.left_out == {f"leg records of service type {code}": 1 for code in "FPV"}
+    legs[2] = Leg(number=3, service="P")
     assert len(sound(file_of(legs), ONE_DAY, options=SsimOptions(service_types="JP"))) == 2
 
 

@@ -199,6 +199,20 @@ def test_unknown_stations_are_faults_only_with_a_complete_table() -> None:
     assert "'CCC' is not in the table of stations" in str(faults.errors[0])
 
 
+def test_both_unknown_stations_of_a_leg_are_told_at_once_and_those_of_legs_not_taken_not_at_all() -> None:
+    legs = [Leg(origin="XXA", destination="XXB"), Leg(number=2, service="F", origin="XXC", destination="XXD")]
+    unclocked = Leg(number=3, service="F", departs_variation=None, arrives_variation=None)
+    faults = Faults()
+    places = places_with({"AAA": "", "BBB": ""}, complete=True)
+    assert read_ssim("w.ssim", file_of([*legs, unclocked]), MARCH, places, {}, SsimOptions(), faults) is None
+    assert [f.column for f in faults.errors] == ["37-39 departure station", "55-57 arrival station"]
+    faults = Faults()
+    found = read_ssim("w.ssim", file_of([Leg(), legs[1], unclocked]), MARCH, places, {}, SsimOptions(), faults)
+    assert not faults.found
+    assert found is not None
+    assert found.left_out == {"leg records of service type F": 2}
+
+
 BERLIN = Leg(origin="BER", destination="NYC", departs=150, arrives=400, departs_variation=None, arrives_variation=None)
 
 
