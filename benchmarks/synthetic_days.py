@@ -18,6 +18,7 @@ import click
 import numpy as np
 import pandas as pd
 
+from network.arrays import NameArray
 from tools.invented_traffic import (
     FloatArray,
     IntArray,
@@ -29,7 +30,7 @@ from tools.invented_traffic import (
     write_folder,
 )
 
-__all__ = ["SIZES", "DaySize", "write_day"]
+__all__ = ["CLASSES", "CLASS_CURVES", "SIZES", "Day", "DaySize", "instants", "invented_day", "leg_names", "write_day"]
 
 
 @dataclass(frozen=True)
@@ -44,6 +45,10 @@ class DaySize:
         Legs a day from each hub to each other hub.
     legs, itineraries
         Legs of the day, an even number, and itineraries, the legs alone among them.
+    first_bank, last_bank
+        Middles of the first and the last bank, minutes after midnight.
+    longest_connection, widest_detour
+        Minutes, and length of the way as a multiple of the great circle.
     """
 
     hubs: int
@@ -52,15 +57,31 @@ class DaySize:
     trunks: int
     legs: int
     itineraries: int
+    first_bank: int = 8 * 60
+    last_bank: int = 20 * 60
+    longest_connection: int = 240
+    widest_detour: float = 1.8
 
 
 SIZES = {
     "small": DaySize(hubs=1, spokes=48, banks=2, trunks=0, legs=160, itineraries=1_625),
+    "regional": DaySize(
+        hubs=1,
+        spokes=60,
+        banks=2,
+        trunks=0,
+        legs=200,
+        itineraries=6_000,
+        first_bank=10 * 60,
+        last_bank=15 * 60 + 30,
+        longest_connection=480,
+        widest_detour=2.5,
+    ),
     "middle": DaySize(hubs=2, spokes=60, banks=3, trunks=3, legs=500, itineraries=8_000),
     "broad": DaySize(hubs=2, spokes=90, banks=4, trunks=4, legs=1_000, itineraries=26_000),
     "large": DaySize(hubs=2, spokes=120, banks=6, trunks=4, legs=1_826, itineraries=87_120),
 }
-"""The four sizes; with `CLASSES` they give 13,000, 64,000, 208,000 and 696,960 products."""
+"""The sizes; with `CLASSES` they give 13,000, 48,000, 64,000, 208,000 and 696,960 products."""
 
 CLASSES = ("A", "B", "C", "D", "E", "F", "G", "H")
 LADDER = np.array([1.0, 0.84, 0.70, 0.58, 0.48, 0.39, 0.32, 0.26])
@@ -73,14 +94,10 @@ CURVES = {
 }
 READING_DAYS = (90, 45, 28, 14, 7, 3, 1, 0)
 
-FIRST_BANK, LAST_BANK = 8 * 60, 20 * 60
-"""Middles of the first and the last bank, minutes after midnight."""
 BLOCK_SPEED = 700
 """Kilometres per hour; `GROUND_MINUTES` come on top."""
 GROUND_MINUTES = 30
 MINIMUM_CONNECTION = 40
-LONGEST_CONNECTION = 240
-WIDEST_DETOUR = 1.8
 LOAD = 1.1
 THROUGH_SHARE = 0.5
 """Part of the passengers of a leg that connects."""
@@ -120,6 +137,38 @@ class _Legs:
     km: FloatArray
 
 
+@dataclass(frozen=True, eq=False)
+class Day:
+    """A day of operation before a seat is sold, the legs alone first among the itineraries.
+
+    Attributes
+    ----------
+    stations
+        Table ``stations``.
+    origin, destination, start, end
+        (L,) station names, and minutes after midnight.
+    capacity
+        (L,) seats.
+    paths
+        (I, 3) legs of every itinerary, padded with -1.
+    fares
+        (I, C) currency.
+    mean, deviation
+        (I, C) passengers.
+    """
+
+    stations: pd.DataFrame
+    origin: NameArray
+    destination: NameArray
+    start: IntArray
+    end: IntArray
+    capacity: IntArray
+    paths: IntArray
+    fares: FloatArray
+    mean: FloatArray
+    deviation: FloatArray
+
+
 def write_day(folder: Path, size: str, seed: int = 1, table_format: TableFormat = "csv") -> dict[str, int]:
     """Write one synthetic day as a network folder.
 
@@ -139,8 +188,14 @@ def write_day(folder: Path, size: str, seed: int = 1, table_format: TableFormat 
     dict of int
         Rows of every table written.
     """
-    rng = np.random.default_rng(seed)
-    plan = SIZES[size]
+    day = invented_day(SIZES[size], np.random.default_rng(seed))
+    tables = {"stations": day.stations, "legs": _leg_table(day), **_product_tables(day)}
+    write_folder(folder, SETTINGS.format(size=size, seed=seed), tables, table_format)
+    return {name: len(table) for name, table in tables.items()}
+
+
+def invented_day(plan: DaySize, rng: np.random.Generator) -> Day:
+    """Invent a day of a given size."""
     stations = _stations(plan, rng)
     legs = _legs(plan, stations, rng)
     paths, prior, direct = _itineraries(plan, stations, legs)
@@ -157,13 +212,19 @@ def write_day(folder: Path, size: str, seed: int = 1, table_format: TableFormat 
     spread = np.where(
         rng.random(shape) < STEADY_PART, 0.0, rng.uniform(0.25, 0.8, shape) * np.maximum(mean, 0.3) ** -0.15
     )
-    tables = {
-        "stations": _station_table(stations),
-        "legs": _leg_table(stations, legs, capacity),
-        **_product_tables(paths, _fares(paths, legs, direct, rng), mean, over_dispersed(mean, spread).round(4)),
-    }
-    write_folder(folder, SETTINGS.format(size=size, seed=seed), tables, table_format)
-    return {name: len(table) for name, table in tables.items()}
+    name = np.array(stations.name, dtype=object)
+    return Day(
+        stations=_station_table(stations),
+        origin=name[legs.o],
+        destination=name[legs.d],
+        start=legs.start,
+        end=legs.end,
+        capacity=capacity,
+        paths=paths,
+        fares=_fares(paths, legs, direct, rng),
+        mean=mean,
+        deviation=over_dispersed(mean, spread).round(4),
+    )
 
 
 def _stations(plan: DaySize, rng: np.random.Generator) -> _Stations:
@@ -184,7 +245,7 @@ def _legs(plan: DaySize, stations: _Stations, rng: np.random.Generator) -> _Legs
     n_slots = plan.hubs * plan.banks
     trips = np.full(n_slots, (plan.legs - len(others) * plan.trunks) // 2 // n_slots)
     trips[: (plan.legs - len(others) * plan.trunks) // 2 % n_slots] += 1
-    middles = np.linspace(FIRST_BANK, LAST_BANK, plan.banks)
+    middles = np.linspace(plan.first_bank, plan.last_bank, plan.banks)
     o, d, minute, inbound = [], [], [], []
     for slot, n in enumerate(trips):
         bank, hub = divmod(slot, plan.hubs)
@@ -218,9 +279,9 @@ def _itineraries(plan: DaySize, stations: _Stations, legs: _Legs) -> tuple[IntAr
     (pull of both ends over distance), less for each stop, for detours and for time spent waiting.
     """
     n = len(legs.o)
-    minimum = np.full(len(stations.name), LONGEST_CONNECTION + 1)
+    minimum = np.full(len(stations.name), plan.longest_connection + 1)
     minimum[: plan.hubs] = MINIMUM_CONNECTION
-    paths = journeys(legs.o, legs.d, legs.start, legs.end, minimum, maximum=LONGEST_CONNECTION)
+    paths = journeys(legs.o, legs.d, legs.start, legs.end, minimum, maximum=plan.longest_connection)
     count = (paths >= 0).sum(axis=1)
     first, last = paths[:, 0], paths[np.arange(len(paths)), count - 1]
     direct = great_circle(*stations.at[legs.o[first]].T, *stations.at[legs.d[last]].T)
@@ -230,7 +291,7 @@ def _itineraries(plan: DaySize, stations: _Stations, legs: _Legs) -> tuple[IntAr
     pull = stations.pull[legs.o[first]] * stations.pull[legs.d[last]]
     weight = np.sqrt(pull) / (300 + direct) ** 0.5
     weight *= np.exp(-1.2 * np.maximum(count - 2, 0) - (km / direct - 1) - waiting / 120)
-    through = np.flatnonzero((count > 1) & (km <= WIDEST_DETOUR * direct))
+    through = np.flatnonzero((count > 1) & (km <= plan.widest_detour * direct))
     best = through[np.argsort(-weight[through], kind="stable")[: plan.itineraries - n]]
     keep = np.concatenate([np.arange(n), best[np.lexsort(paths[best].T[::-1])]])
     return paths[keep], weight[keep], direct[keep]
@@ -259,28 +320,25 @@ def _station_table(stations: _Stations) -> pd.DataFrame:
     )
 
 
-def _leg_table(stations: _Stations, legs: _Legs, capacity: IntArray) -> pd.DataFrame:
+def _leg_table(day: Day) -> pd.DataFrame:
     """Return ``legs``, nothing sold."""
-    name = np.array(stations.name)
     return pd.DataFrame(
         {
-            "leg": _leg_names(len(legs.o)),
-            "origin": name[legs.o],
-            "destination": name[legs.d],
-            "departs": _instants(legs.start),
-            "arrives": _instants(legs.end),
-            "capacity": capacity,
+            "leg": leg_names(len(day.origin)),
+            "origin": day.origin,
+            "destination": day.destination,
+            "departs": instants(day.start),
+            "arrives": instants(day.end),
+            "capacity": day.capacity,
             "sold": 0,
         }
     )
 
 
-def _product_tables(
-    paths: IntArray, fares: FloatArray, mean: FloatArray, deviation: FloatArray
-) -> dict[str, pd.DataFrame]:
+def _product_tables(day: Day) -> dict[str, pd.DataFrame]:
     """Return ``itineraries``, ``fares``, ``demand`` and ``booking_curves``."""
-    n_legs = int((paths[:, 1] < 0).sum())
-    leg = np.array([*_leg_names(n_legs), ""], dtype=object)
+    paths = day.paths
+    leg = np.array([*leg_names(len(day.origin)), ""], dtype=object)
     legs = leg[paths[:, 0]]
     for step in (1, 2):
         legs = legs + np.where(paths[:, step] >= 0, " ", "") + leg[paths[:, step]]
@@ -293,18 +351,20 @@ def _product_tables(
     readings = [(name, *row) for name in CURVES for row in zip(READING_DAYS, CURVES[name], strict=True)]
     return {
         "itineraries": pd.DataFrame({"itinerary": itinerary, "legs": legs}),
-        "fares": pd.DataFrame(product | {"fare": fares.ravel().astype(np.int64)}),
-        "demand": pd.DataFrame(product | {"mean": mean.ravel(), "deviation": deviation.ravel(), "curve": curve}),
+        "fares": pd.DataFrame(product | {"fare": day.fares.ravel().astype(np.int64)}),
+        "demand": pd.DataFrame(
+            product | {"mean": day.mean.ravel(), "deviation": day.deviation.ravel(), "curve": curve}
+        ),
         "booking_curves": pd.DataFrame(readings, columns=["curve", "days_before", "share"]),
     }
 
 
-def _leg_names(n: int) -> list[str]:
+def leg_names(n: int) -> list[str]:
     """Return the names of the legs by position."""
     return [f"L{k:04d}" for k in range(n)]
 
 
-def _instants(minutes: IntArray) -> list[str]:
+def instants(minutes: IntArray) -> list[str]:
     """Write minutes after midnight as ISO 8601 instants."""
     return [f"{instant}+00:00" for instant in MIDNIGHT + minutes.astype("timedelta64[m]")]
 

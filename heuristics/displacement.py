@@ -97,5 +97,6 @@ def leg_products(network: Network, bid_prices: npt.ArrayLike) -> LegProducts:
     leg_start = np.searchsorted(leg, np.arange(network.n_legs + 1))
     tolerance = np.zeros(network.n_legs)
     np.maximum.at(tolerance, leg, TIE * network.fare[product])
-    falling = np.lexsort((-adjusted, leg))
+    # Complex numbers are ordered by leg first.
+    falling = np.argsort(leg - 1j * adjusted, kind="stable")
     return LegProducts(leg_start, product[falling], adjusted[falling], tolerance)

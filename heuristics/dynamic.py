@@ -24,11 +24,12 @@ from dataclasses import dataclass
 import numpy as np
 
 from heuristics.arrivals import ArrivalPlan
+from heuristics.requests import FarePlaces, Requests
 from network.arrays import FloatArray, IntArray
 from network.model import ranges
 from network.runs import SortedRuns
 
-__all__ = ["PriceCurves", "Requests", "SeatLine", "price_curves", "run_periods"]
+__all__ = ["PriceCurves", "SeatLine", "price_curves", "run_periods"]
 
 
 REQUESTS_PER_STEP = 0.5
@@ -69,34 +70,6 @@ class PriceCurves:
     total: FloatArray
 
 
-class Requests:
-    """Requests of a stretch of time: how many are expected at which adjusted fare, leg by leg.
-
-    Parameters
-    ----------
-    fares
-        Adjusted fares, one run a leg.
-    expected
-        (P,) expected requests of every row.
-    leg
-        (S,) leg of every seat that will ask for its gain.
-    """
-
-    def __init__(self, fares: SortedRuns, expected: FloatArray, leg: IntArray) -> None:
-        self._fares = fares
-        self._sums = np.zeros((len(expected) + 1, 2))
-        np.cumsum(np.column_stack([expected, expected * fares.value]), axis=0, out=self._sums[1:])
-        self._leg = leg
-        self._base = self._sums[fares.start[:-1][leg]]
-        self._near: IntArray | None = None
-
-    def gain(self, value: FloatArray) -> tuple[FloatArray, FloatArray]:
-        """Return Phi(z), (S,), what these requests add to seats worth z, and the requests above z, (S,)."""
-        self._near = self._fares.count_above(value, self._leg, self._near)
-        above = self._sums[self._near] - self._base
-        return above[:, 1] - value * above[:, 0], above[:, 0]
-
-
 class SeatLine:
     """All seats of all legs in one line: seats 1, 2, ... of leg l at ``start[l]:start[l + 1]``."""
 
@@ -110,9 +83,10 @@ class SeatLine:
 
     def fall(self, figure: FloatArray) -> FloatArray:
         """Each seat's figure less that of the seat before it on the leg; the first keeps its own."""
-        before = np.concatenate([[0.0], figure[:-1]])
-        before[self._first] = 0.0
-        return np.asarray(figure - before)
+        answer = np.empty_like(figure)
+        np.subtract(figure[1:], figure[:-1], out=answer[1:])
+        answer[self._first] = figure[self._first]
+        return answer
 
     def totals(self, figure: FloatArray) -> FloatArray:
         """Sum a figure over the seats of every leg, (L,)."""
@@ -147,8 +121,9 @@ def run_periods(fares: SortedRuns, seats: IntArray, periods: Iterable[FloatArray
     """
     line = SeatLine(seats)
     value: FloatArray = np.zeros(len(line))
+    places = FarePlaces(fares, line.leg)
     for probability in periods:
-        value = line.euler(value, Requests(fares, probability, line.leg))
+        value = line.euler(value, Requests(places, probability))
     return line, value
 
 
@@ -219,19 +194,26 @@ class _Block:
         self._start = np.concatenate([[0], np.cumsum(count)])
         self._leg = np.repeat(np.arange(len(legs)), count)
         seats = np.diff(seat_start)[legs]
-        self._places = ranges(seat_start[:-1][legs], seats)
+        self._seats = ranges(seat_start[:-1][legs], seats)
         self._line = SeatLine(seats)
+        self._places: FarePlaces | None = None
+        self._fare: FloatArray | None = None
 
     def advance(self, value: FloatArray, fare: FloatArray, expected: FloatArray, requests_per_step: float) -> None:
         """Move the values of these legs in the line of all, in place, past (P,) expected requests at (P,) fares."""
-        fares, coming = SortedRuns(fare[self._rows], self._start), expected[self._rows]
-        busiest = float(np.bincount(self._leg, weights=np.where(fares.value > 0, coming, 0.0)).max(initial=0.0))
-        steps = int(np.ceil((busiest + EXTRA_REQUESTS) / requests_per_step)) if busiest > 0 else 0
-        requests = Requests(fares, coming / max(steps, 1), self._line.leg)
-        own = value[self._places]
+        if self._places is None or fare is not self._fare:
+            self._fare = fare
+            self._places = FarePlaces(SortedRuns(fare[self._rows], self._start), self._line.leg)
+        places, coming = self._places, expected[self._rows]
+        busiest = float(np.bincount(self._leg, weights=np.where(places.fares.value > 0, coming, 0.0)).max(initial=0.0))
+        if busiest == 0:
+            return
+        steps = int(np.ceil((busiest + EXTRA_REQUESTS) / requests_per_step))
+        requests = Requests(places, coming / steps)
+        own = value[self._seats]
         for _ in range(steps):
             own = self._line.heun(own, requests)
-        value[self._places] = own
+        value[self._seats] = own
 
 
 def _blocks(plan: ArrivalPlan, line: SeatLine) -> list[_Block]:

@@ -158,15 +158,23 @@ def joint_levels(ladder: Ladder, limit: npt.ArrayLike, family: str = "auto") -> 
 
     following = np.append(ladder.fare[1:], 0.0)[: len(ladder.fare)]
     most = seats_at_most[leg]
-    full = last | keeps_seat(mean_fare, following, demand.survivor(most))
-    level = np.where(full, most, 0.0)
-    search = np.flatnonzero(~full & (mean_fare > following))
-    joint, fare, below = demand.take(search), mean_fare[search], following[search]
-    level[search] = np.minimum(joint.quantile(1.0 - below / fare), most[search])
+    level = np.where(last, most, 0.0)
     seats = level.copy()
-    seats[search] = whole_seats(level[search], fare, below, joint, np.arange(search.size))
+    open_steps = ~last & (mean_fare > following)
     discrete = demand.family < Family.GAMMA
-    level[discrete] = seats[discrete]
+    search = np.flatnonzero(open_steps & discrete)
+    joint, fare, below = demand.take(search), mean_fare[search], following[search]
+    found = whole_seats(joint.near_quantile(1.0 - below / fare), fare, below, joint, np.arange(search.size))
+    level[search] = seats[search] = np.where(found >= np.ceil(most[search]), most[search], found)
+
+    search = np.flatnonzero(open_steps & ~discrete)
+    joint, fare, below = demand.take(search), mean_fare[search], following[search]
+    full = keeps_seat(fare, below, joint.survivor(most[search]))
+    quantile = joint.quantile(1.0 - below / fare)
+    level[search] = np.where(full, most[search], np.minimum(quantile, most[search]))
+    part = np.flatnonzero(~full)
+    seats[search] = most[search]
+    seats[search[part]] = whole_seats(level[search[part]], fare[part], below[part], joint, part)
     rising = pd.DataFrame({"level": level, "seats": seats}).groupby(leg, sort=False).cummax()
     return JointLevels(ladder, mean_fare, demand, rising["level"].to_numpy(), rising["seats"].to_numpy())
 

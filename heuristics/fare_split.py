@@ -20,7 +20,8 @@ from dataclasses import dataclass
 import numpy as np
 from scipy.optimize import minimize
 
-from heuristics.dynamic import Requests, SeatLine
+from heuristics.dynamic import SeatLine
+from heuristics.requests import FarePlaces, Requests
 from network.arrays import FloatArray, IntArray
 from network.runs import SortedRuns
 
@@ -109,7 +110,7 @@ def split_bound(seats: IntArray, leg: IntArray, share: FloatArray, stages: Seque
     trail: list[list[tuple[FloatArray, FloatArray]]] = []
     for stage, shares in zip(stages, share, strict=True):
         order = np.lexsort((-shares, leg))
-        requests = Requests(SortedRuns(shares[order], leg_start), stage.requests[order], line.leg)
+        requests = Requests(FarePlaces(SortedRuns(shares[order], leg_start), line.leg), stage.requests[order])
         steps = []
         for _ in range(stage.steps):
             gain, above = requests.gain(value)

@@ -8,8 +8,9 @@ from __future__ import annotations
 import numpy as np
 import numpy.typing as npt
 
-from network.arrays import FloatArray
+from network.arrays import BoolArray, FloatArray, IntArray
 from network.demand import Demand, Family
+from network.runs import greatest_seats
 
 __all__ = ["keeps_seat", "littlewood_level", "whole_seats"]
 
@@ -75,24 +76,14 @@ def whole_seats(
     Parameters
     ----------
     level
-        (m,) finite quantiles that the search sets out from.
+        (m,) finite figures that the search sets out from, best near the answer.
     high_fare, low_fare
         (m,) currency per passenger.
     demand, index
         Demands, and (m,) the position of the one that each level belongs to.
     """
-    k = np.floor(level)
 
-    def kept(seat: FloatArray, i: npt.NDArray[np.intp]) -> npt.NDArray[np.bool_]:
+    def kept(seat: FloatArray, i: IntArray) -> BoolArray:
         return keeps_seat(high_fare[i], low_fare[i], demand.survivor(seat, index[i]))
 
-    todo = np.flatnonzero(k > 0)
-    while todo.size:
-        todo = todo[~kept(k[todo], todo)]
-        k[todo] -= 1
-        todo = todo[k[todo] > 0]
-    todo = np.arange(k.size)
-    while todo.size:
-        todo = todo[kept(k[todo] + 1, todo)]
-        k[todo] += 1
-    return k
+    return greatest_seats(level, kept)

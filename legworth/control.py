@@ -83,7 +83,9 @@ def compare_controls(network: Network, bid_prices: FloatArray, options: LegContr
     opened_by_leg = limit > 0
     within = np.where(opened, seats, limit)
     lost = np.where(opened != opened_by_leg, np.abs(contribution), 0.0)
-    at_stake = lost * network.demand.expected_sales(within)
+    some = np.flatnonzero(lost > 0)
+    at_stake = lost
+    at_stake[some] *= network.demand.take(some).expected_sales(within[some])
     connections = Connections(displacement, contribution, opened, opened_by_leg, at_stake)
     disagreements = network.leg_load(connections.disagrees.astype(np.float64))
     return ControlComparison(adjusted, plain, connections, disagreements == 0)

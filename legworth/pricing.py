@@ -192,7 +192,7 @@ def _sizes(network: Network) -> dict[str, int]:
 
 def _component(piece: Component, part: Solution) -> dict[str, Any]:
     return {
-        "first_leg": str(piece.network.legs.name[0]),
+        "first_leg": str(piece.whole.legs.name[piece.legs[0]]),
         "legs": len(piece.legs),
         "itineraries": len(piece.itineraries),
         "products": len(piece.products),

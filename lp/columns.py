@@ -139,8 +139,8 @@ def probabilistic_columns(network: Network, tail: float = TAIL, *, any_seats: bo
 
 def _sorted_columns(network: Network, value: FloatArray, width: FloatArray, product: IntArray) -> SeatColumns:
     kept = np.flatnonzero((value > 0) & (width > 0))
-    order = kept[np.argsort(-value[kept], kind="stable")]
-    itinerary = network.product_itinerary[product]
-    order = order[np.argsort(itinerary[order], kind="stable")]
-    start = np.searchsorted(itinerary[order], np.arange(network.n_itineraries + 1))
+    itinerary = network.product_itinerary[product[kept]]
+    # Complex numbers are ordered by itinerary first. The runs that stand sorted already are merged, which is fast.
+    order = kept[np.argsort(itinerary - 1j * value[kept], kind="stable")]
+    start = np.searchsorted(itinerary, np.arange(network.n_itineraries + 1))
     return SeatColumns(value[order], width[order], product[order], start)

@@ -10,13 +10,14 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass
 from functools import cached_property
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
-from scipy import special
 
 from network.arrays import FloatArray
-from network.families import LAWS, SURE, Family, Law
+from network.families import LAWS, SURE, Family, Law, near_quantile
+from network.runs import greatest_seats
 
 __all__ = ["Demand", "Family"]
 
@@ -25,6 +26,9 @@ Place = slice | npt.NDArray[np.bool_]
 
 POISSON_BAND = 0.05
 """``auto`` takes Poisson where the variance lies within this share of the mean."""
+
+ROWS_AT_ONCE = 1_000_000
+"""Demands looked at together where it makes no difference."""
 
 _ROUNDING = 1e-9
 _NOBODY = 1e-12
@@ -52,19 +56,20 @@ class Demand:
     family: npt.NDArray[np.int8]
 
     def __post_init__(self) -> None:
-        """Copy, check and freeze the figures."""
+        """Copy what others could change, check and freeze the figures."""
         mean = _figures(self.mean, "mean")
         deviation = _figures(self.deviation, "deviation")
-        family = np.array(self.family, dtype=np.int8)
+        family = _copied(self.family, np.int8)
         if mean.ndim != 1 or not mean.shape == deviation.shape == family.shape:
             raise ValueError(f"shapes differ: mean {mean.shape}, deviation {deviation.shape}, {family.shape}")
         if np.any((family < min(Family)) | (family > max(Family))):
             raise ValueError("family holds values that are none of Family")
-        if np.any((family == Family.NEGATIVE_BINOMIAL) & (mean > 0) & (deviation**2 <= mean)):
-            raise ValueError("a negative binomial demand needs a variance above its mean")
+        for rows in _parts(len(mean)):
+            spread = deviation[rows] ** 2 > mean[rows]
+            if np.any((family[rows] == Family.NEGATIVE_BINOMIAL) & (mean[rows] > 0) & ~spread):
+                raise ValueError("a negative binomial demand needs a variance above its mean")
         for name, values in (("mean", mean), ("deviation", deviation), ("family", family)):
-            values.flags.writeable = False
-            object.__setattr__(self, name, values)
+            object.__setattr__(self, name, _own(values))
 
     @classmethod
     def of(cls, mean: npt.ArrayLike, deviation: npt.ArrayLike, family: str = "auto") -> Demand:
@@ -94,16 +99,15 @@ class Demand:
         if mean.shape != deviation.shape:
             raise ValueError(f"shapes differ: mean {mean.shape}, deviation {deviation.shape}")
         deviation = np.where(mean > 0, deviation, 0.0)
-        variance = deviation**2
-        if family == "auto":
-            chosen = np.full(mean.shape, Family.NORMAL, dtype=np.int8)
-            chosen[variance > mean] = Family.NEGATIVE_BINOMIAL
-            chosen[np.abs(variance - mean) <= POISSON_BAND * mean] = Family.POISSON
-        else:
-            chosen = np.full(mean.shape, Family.of(family), dtype=np.int8)
-            if family == Family.NEGATIVE_BINOMIAL.word:
-                chosen[variance <= mean * (1 + _ROUNDING)] = Family.POISSON
-        return cls(mean, deviation, chosen)
+        chosen = np.full(mean.shape, Family.NORMAL if family == "auto" else Family.of(family), dtype=np.int8)
+        for rows in _parts(len(mean)):
+            part, below, variance = chosen[rows], mean[rows], deviation[rows] ** 2
+            if family == "auto":
+                part[variance > below] = Family.NEGATIVE_BINOMIAL
+                part[np.abs(variance - below) <= POISSON_BAND * below] = Family.POISSON
+            elif family == Family.NEGATIVE_BINOMIAL.word:
+                part[variance <= below * (1 + _ROUNDING)] = Family.POISSON
+        return cls(*(_own(figures) for figures in (mean, deviation, chosen)))
 
     def __len__(self) -> int:
         """Return the number of demands."""
@@ -114,7 +118,7 @@ class Demand:
         index = np.asarray(index)
         if index.size == 0:
             index = index.astype(np.intp)
-        return Demand(self.mean[index], self.deviation[index], self.family[index])
+        return Demand(*(_own(figures[index]) for figures in (self.mean, self.deviation, self.family)))
 
     def survivor(self, k: npt.ArrayLike, index: npt.ArrayLike | None = None) -> FloatArray:
         """Probability that demand reaches ``k``: ``S(k) = P(D >= k)``.
@@ -221,22 +225,12 @@ class Demand:
         """
         if not 0 < tail <= 1:
             raise ValueError(f"tail must be above 0 and at most 1, got {tail}")
-        # Gallop upwards from a normal guess, then halve: few passes, each over the undecided alone.
-        low = np.zeros(len(self))
-        high = np.maximum(np.floor(self.mean - special.ndtri(tail / 2) * self.deviation), 0.0) + 1
-        todo = np.arange(len(self))
-        while todo.size:
-            todo = todo[self.survivor(high[todo], todo) >= tail]
-            low[todo] = high[todo]
-            high[todo] *= 2
-        todo = np.flatnonzero(high - low > 1)
-        while todo.size:
-            middle = np.floor((low[todo] + high[todo]) / 2)
-            reached = self.survivor(middle, todo) >= tail
-            low[todo[reached]] = middle[reached]
-            high[todo[~reached]] = middle[~reached]
-            todo = todo[high[todo] - low[todo] > 1]
-        return low.astype(np.int64)
+        start = self.near_quantile(np.full(len(self), 1 - tail))
+        return greatest_seats(start, lambda k, at: self.survivor(k, at) >= tail).astype(np.int64)
+
+    def near_quantile(self, p: FloatArray) -> FloatArray:
+        """About the quantiles at (n,) probabilities, as starts of a search, (n,); see `network.families`."""
+        return near_quantile(p, self.mean, self.variance)
 
     def sample(self, rng: np.random.Generator, size: int) -> FloatArray:
         """Draw ``size`` independent outcomes of every demand, giving (size, n) passengers."""
@@ -288,7 +282,24 @@ class Demand:
 
 def _figures(values: npt.ArrayLike, name: str) -> FloatArray:
     """Copy figures into floats; raise unless they are finite and not negative."""
-    figures = np.array(values, dtype=np.float64)
+    figures = _copied(values, np.float64)
     if not np.all(np.isfinite(figures)) or np.any(figures < 0):
         raise ValueError(f"{name} must be finite and not negative")
     return figures
+
+
+def _copied(values: npt.ArrayLike, kind: npt.DTypeLike) -> npt.NDArray[Any]:
+    """Copy values to an array of a type, unless they are one that nobody can change any more."""
+    fixed = isinstance(values, np.ndarray) and values.base is None and not values.flags.writeable
+    return np.asarray(values, dtype=kind) if fixed else np.array(values, dtype=kind)
+
+
+def _own(values: npt.NDArray[Any]) -> npt.NDArray[Any]:
+    """Freeze an array that nobody else holds."""
+    values.flags.writeable = False
+    return values
+
+
+def _parts(length: int) -> Iterator[slice]:
+    """Cut positions into stretches, so that what a step needs in between stays small."""
+    return (slice(first, first + ROWS_AT_ONCE) for first in range(0, length, ROWS_AT_ONCE))

@@ -6,6 +6,7 @@ from dataclasses import dataclass
 
 import networkx as nx
 import numpy as np
+from scipy.sparse import csr_array
 from scipy.sparse.csgraph import connected_components
 
 from network.arrays import IntArray
@@ -18,14 +19,29 @@ __all__ = ["Component", "components", "route_graph"]
 class Component:
     """A part of a network that shares no itinerary with the rest.
 
-    ``legs``, ``itineraries`` and ``products`` are its rising positions in the whole network; ``network``
-    is the part as a network of its own, in the same order.
+    Attributes
+    ----------
+    whole
+        The network that it is a part of.
+    legs, itineraries, products
+        Its rising positions in the whole network.
     """
 
-    network: Network
+    whole: Network
     legs: IntArray
     itineraries: IntArray
     products: IntArray
+
+    @property
+    def network(self) -> Network:
+        """The part as a network of its own, in the same order; cut out anew each time, so hold on to it."""
+        if len(self.legs) == self.whole.n_legs:
+            return self.whole
+        return self.whole.subnetwork(self.legs, self.itineraries)
+
+    def __reduce__(self) -> tuple[type[Component], tuple[Network, IntArray, IntArray, IntArray]]:
+        """Send the part alone to another process."""
+        return Component, (self.network, self.legs, self.itineraries, self.products)
 
 
 def route_graph(network: Network) -> nx.MultiDiGraph[str]:
@@ -64,27 +80,23 @@ def components(network: Network) -> list[Component]:
     """
     if network.n_legs == 0:
         return []
-    tied = network.incidence @ network.incidence.T
+    within = np.ones(len(network.path_leg), dtype=bool)
+    within[network.path_start[1:] - 1] = False
+    joint = np.flatnonzero(within)
+    pairs = (np.ones(len(joint)), (network.path_leg[joint], network.path_leg[joint + 1]))
+    tied = csr_array(pairs, shape=(network.n_legs, network.n_legs))
     count, label = connected_components(tied, directed=False)
     _, first = np.unique(label, return_index=True)
     rank = np.empty(count, dtype=np.int64)
     rank[np.argsort(first)] = np.arange(count)
     of_leg = rank[label]
     if count == 1:
-        everything = Component(
-            network,
-            np.arange(network.n_legs),
-            np.arange(network.n_itineraries),
-            np.arange(network.n_products),
-        )
-        return [everything]
+        sizes = network.n_legs, network.n_itineraries, network.n_products
+        return [Component(network, *(np.arange(size) for size in sizes))]
     of_itinerary = of_leg[network.path_leg[network.path_start[:-1]]]
     of_product = of_itinerary[network.product_itinerary]
     legs, itineraries, products = (_grouped(of, count) for of in (of_leg, of_itinerary, of_product))
-    return [
-        Component(network.subnetwork(legs[c], itineraries[c]), legs[c], itineraries[c], products[c])
-        for c in range(count)
-    ]
+    return [Component(network, legs[c], itineraries[c], products[c]) for c in range(count)]
 
 
 def _grouped(label: IntArray, count: int) -> list[IntArray]:

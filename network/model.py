@@ -178,8 +178,9 @@ class Network:
         _check_positions("product_class", self.product_class, len(self.fare_classes))
         _check_positions("curve", self.curve, len(self.curves), least=-1)
         _check_positions("remaining", self.remaining, np.iinfo(np.int64).max)
-        key = self.product_itinerary.astype(np.int64) * len(self.fare_classes) + self.product_class
-        if np.any(np.diff(key) <= 0):
+        itinerary, fare_class = self.product_itinerary, self.product_class
+        rises = (itinerary[1:] == itinerary[:-1]) & (fare_class[1:] > fare_class[:-1])
+        if not np.all(rises | (itinerary[1:] > itinerary[:-1])):
             raise ValueError("products must be sorted by itinerary and fare class, without duplicates")
         if not np.all(np.isfinite(self.fare)) or np.any(self.fare < 0):
             raise ValueError("fares must be finite and not negative")
@@ -253,14 +254,14 @@ class Network:
         Every itinerary must run on the chosen legs alone; stations and curves are kept whole.
         """
         legs, itineraries = np.asarray(legs), np.asarray(itineraries)
-        position = np.full(self.n_legs, -1, dtype=self.path_leg.dtype)
-        position[legs] = np.arange(len(legs))
-        length = np.diff(self.path_start)[itineraries]
+        # Work by what is cut out alone, for a year is cut into hundreds of parts.
+        length = self.path_start[itineraries + 1] - self.path_start[itineraries]
         path_start = np.concatenate([[0], np.cumsum(length)])
-        path_leg = position[self.path_leg[ranges(self.path_start[itineraries], length)]]
-        if np.any(path_leg < 0):
+        whole_path = self.path_leg[ranges(self.path_start[itineraries], length)]
+        path_leg = np.searchsorted(legs, whole_path).astype(self.path_leg.dtype)
+        if np.any(np.append(legs, -1)[path_leg] != whole_path):
             raise ValueError("an itinerary leaves the chosen legs")
-        count = np.diff(self.product_start)[itineraries]
+        count = self.product_start[itineraries + 1] - self.product_start[itineraries]
         products = ranges(self.product_start[itineraries], count)
         chosen = {f.name: getattr(self.legs, f.name)[legs] for f in fields(self.legs)}
         return replace(

@@ -3,8 +3,10 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
+import numpy.typing as npt
 
 from network.arrays import FloatArray, IntArray, NameArray
 from network.faults import Faults
@@ -93,37 +95,46 @@ def assemble_products(
         return None
     classes = _fare_classes(fares, settings, faults)
     fare_key, itinerary, fare_class = _keys(fares, itineraries, classes, faults)
-    order = np.argsort(fare_key, kind="stable")
-    order = order[fare_key[order] >= 0]
-    order = order[np.append(True, np.diff(fare_key[order]) > 0)] if len(order) else order
+    order = _sorting(fare_key)
     key = fare_key[order]
     amount = fares.frame["fare"].to_numpy()[order]
     _warn_rising_fares(fares, order, itinerary, fare_class, classes, faults)
-    mean, deviation = np.zeros(len(key)), np.zeros(len(key))
-    curve = np.full(len(key), -1, dtype=np.int32)
+    row: IntArray | None = np.full(len(key), -1)
+    means, deviations = np.zeros(0), np.zeros(0)
     if demand is not None:
+        means, deviations = demand.frame["mean"].to_numpy(), demand.frame["deviation"].to_numpy()
         row = _match_demand(fares, demand, itineraries, classes, key, order, faults)
-        have = row >= 0
-        mean[have] = demand.frame["mean"].to_numpy()[row[have]]
-        deviation[have] = demand.frame["deviation"].to_numpy()[row[have]]
-        curve[have] = known_curve[row[have]]
     return Products(
         classes,
-        itinerary[order].astype(np.int32),
-        fare_class[order].astype(np.int32),
+        itinerary[order],
+        fare_class[order],
         amount,
-        mean,
-        deviation,
-        curve,
+        mean=_taken(means, row, 0.0),
+        deviation=_taken(deviations, row, 0.0),
+        curve=_taken(known_curve, row, -1),
     )
+
+
+def _taken(column: npt.NDArray[Any], row: IntArray | None, blank: float) -> npt.NDArray[Any]:
+    """Figures of the rows given, ``blank`` where the row is -1; the column itself without rows."""
+    return column if row is None else np.append(column, column.dtype.type(blank))[row]
+
+
+def _sorting(key: IntArray) -> IntArray | slice:
+    """Rows of known key in rising order, the first of equal ones alone; all of them as they stand if they rise."""
+    if not len(key) or (key[0] >= 0 and np.all(key[1:] > key[:-1])):
+        return slice(None)
+    order = np.argsort(key, kind="stable")
+    order = order[key[order] >= 0]
+    return order[np.append(True, np.diff(key[order]) > 0)] if len(order) else order
 
 
 def _known_curves(demand: TableData | None, curves: BookingCurves | None, faults: Faults) -> IntArray:
     """Position of the curve of every row of demand, -1 where there is none; notes unknown ones."""
     if demand is None:
-        return np.zeros(0, dtype=np.int64)
+        return np.zeros(0, dtype=np.int32)
     if curves is None:
-        return np.full(len(demand), -1)
+        return np.full(len(demand), -1, dtype=np.int32)
     position, unknown = positions(demand.frame["curve"], curves.name)
     faults.add_rows(
         demand.file,
@@ -179,11 +190,11 @@ def _keys(
         ),
     )
     fare_class, _ = positions(table.frame["fare_class"], np.array(classes, dtype=object))
-    key = np.where(
-        (itinerary >= 0) & (fare_class >= 0),
-        itinerary.astype(np.int64) * max(len(classes), 1) + fare_class,
-        -1,
-    )
+    size = len(itineraries) * max(len(classes), 1)
+    key: IntArray = itinerary.astype(np.int32 if size <= np.iinfo(np.int32).max else np.int64)
+    np.multiply(key, max(len(classes), 1), out=key)
+    np.add(key, fare_class, out=key)
+    key[(itinerary < 0) | (fare_class < 0)] = -1
     return key, itinerary, fare_class
 
 
@@ -193,11 +204,13 @@ def _match_demand(
     itineraries: NameArray,
     classes: tuple[str, ...],
     key: IntArray,
-    order: IntArray,
+    order: IntArray | slice,
     faults: Faults,
-) -> IntArray:
-    """Row of demand for every product, -1 where there is none."""
+) -> IntArray | None:
+    """Row of demand for every product, -1 where there is none; None if all rows belong to the products in turn."""
     demand_key, itinerary, _ = _keys(demand, itineraries, classes, faults)
+    if np.array_equal(demand_key, key):
+        return None
     complete = demand.frame["fare_class"].notna().to_numpy() & (itinerary >= 0)
     place = np.searchsorted(key, demand_key)
     found = np.append(key, -2)[place] == demand_key if len(key) else np.zeros(len(demand_key), dtype=bool)
@@ -217,7 +230,7 @@ def _match_demand(
     row[place[rows]] = rows
     faults.add_rows(
         fares.file,
-        order[row < 0],
+        np.arange(len(fares))[order][row < 0],
         fares.line_of,
         "fare_class",
         lambda at: (
@@ -231,18 +244,17 @@ def _match_demand(
 
 def _warn_rising_fares(
     fares: TableData,
-    order: IntArray,
+    order: IntArray | slice,
     itinerary: IntArray,
     fare_class: IntArray,
     classes: tuple[str, ...],
     faults: Faults,
 ) -> None:
-    amount = fares.frame["fare"].to_numpy()
-    above, below = order[:-1], order[1:]
-    rising = np.flatnonzero((itinerary[above] == itinerary[below]) & (amount[below] > amount[above]))
+    amount, itinerary = fares.frame["fare"].to_numpy()[order], itinerary[order]
+    rising = np.flatnonzero((itinerary[1:] == itinerary[:-1]) & (amount[1:] > amount[:-1])) + 1
     faults.add_rows(
         fares.file,
-        below[rising],
+        rising if isinstance(order, slice) else order[rising],
         fares.line_of,
         "fare",
         lambda row: f"class {classes[fare_class[row]]} costs more than the class above it on the same itinerary",

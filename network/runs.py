@@ -1,15 +1,16 @@
-"""`SortedRuns`: figures that fall within each run, and a search in all runs at once."""
+"""Searches at many places at once: in runs of falling figures, and for the greatest seat at which something holds."""
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
 
-from network.arrays import FloatArray, IntArray
+from network.arrays import BoolArray, FloatArray, IntArray
 
-__all__ = ["SortedRuns"]
+__all__ = ["SortedRuns", "greatest_seats"]
 
 
 FEW_STEPS = 3
@@ -89,3 +90,49 @@ class SortedRuns:
             low = np.where(above, middle + 1, low)
             high = np.where(searching & ~above, middle, high)
         return low
+
+
+def greatest_seats(start: FloatArray, holds: Callable[[FloatArray, IntArray], BoolArray]) -> FloatArray:
+    """Greatest whole numbers of seats at which something holds that holds from none up to some number.
+
+    Parameters
+    ----------
+    start
+        (n,) finite figures near the answers, which make the search short.
+    holds
+        Tells of (m,) whole numbers above zero and (m,) positions whether it holds; it is taken to hold at zero.
+
+    Returns
+    -------
+    ndarray
+        (n,) whole numbers.
+
+    Examples
+    --------
+    >>> limit = np.array([3.5, 40.0, 0.5])
+    >>> greatest_seats(np.array([2.0, 7.0, 9.0]), lambda seats, at: seats <= limit[at]).tolist()
+    [3.0, 40.0, 0.0]
+    """
+    # Gallop away from the start, then halve: two looks where it was right, and few where it was far off.
+    low = np.maximum(np.floor(start), 0.0)
+    high = low + 1
+    above = holds(high, np.arange(len(low)))
+    todo, step = np.flatnonzero(above), 1.0
+    while todo.size:
+        low[todo], high[todo] = high[todo], high[todo] + step
+        todo = todo[holds(high[todo], todo)]
+        step *= 2
+    todo, step = np.flatnonzero(~above & (low > 0)), 1.0
+    while todo.size:
+        todo = todo[~holds(low[todo], todo)]
+        high[todo], low[todo] = low[todo], np.maximum(low[todo] - step, 0.0)
+        todo = todo[low[todo] > 0]
+        step *= 2
+    todo = np.flatnonzero(high - low > 1)
+    while todo.size:
+        middle = np.floor((low[todo] + high[todo]) / 2)
+        reached = holds(middle, todo)
+        low[todo[reached]] = middle[reached]
+        high[todo[~reached]] = middle[~reached]
+        todo = todo[high[todo] - low[todo] > 1]
+    return low

@@ -9,6 +9,7 @@ from hypothesis import strategies as st
 from scipy import integrate, stats
 
 from network.demand import Demand, Family
+from network.families import near_quantile
 
 MEAN = np.array([0.004, 0.3, 1.0, 4.7, 27.3, 160.0])
 WORDS = ["poisson", "negative_binomial", "gamma", "normal"]
@@ -159,6 +160,19 @@ def test_seats_end_where_the_survivor_function_of_scipy_falls_below_the_tail(
     assert demand.seats(tail).dtype == np.int64
     assert k == 0 or theirs.sf(k - shift) >= tail * (1 - 1e-9)
     assert theirs.sf(k + 1 - shift) < tail * (1 + 1e-9)
+
+
+def test_searches_start_next_to_the_quantile_of_scipy() -> None:
+    rng = np.random.default_rng(5)
+    mean, p = 10 ** rng.uniform(-1, 2.5, 2_000), rng.uniform(0.02, 0.9999, 2_000)
+    for variance in (mean, mean * rng.uniform(1.05, 4, 2_000)):
+        if variance is mean:
+            theirs = stats.poisson.ppf(p, mean)
+        else:
+            theirs = stats.nbinom.ppf(p, mean**2 / (variance - mean), mean / variance)
+        off = np.maximum(np.floor(near_quantile(p, mean, variance)), 0.0) - theirs
+        assert np.mean((off == 0) | (off == -1)) > 0.97, "where two looks do"
+        assert np.abs(off).max() <= 3
 
 
 def test_seats_of_a_long_tail() -> None:

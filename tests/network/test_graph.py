@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import pickle
 from itertools import pairwise
 from pathlib import Path
 
@@ -72,6 +73,15 @@ def test_components_are_those_of_networkx(plan: Plan) -> None:
 
 def test_components_of_the_demo_are_those_of_networkx(demo: Network) -> None:
     check_components(demo)
+
+
+def test_a_component_is_sent_without_the_whole(demo: Network) -> None:
+    part = components(demo)[1]
+    sent = pickle.loads(pickle.dumps(part))
+    assert sent.whole.n_legs == len(part.legs) < demo.n_legs
+    assert sent.network.legs.name.tolist() == part.network.legs.name.tolist()
+    assert sent.network.fare.tolist() == part.network.fare.tolist()
+    assert sent.legs.tolist() == part.legs.tolist()
 
 
 def test_components_of_the_small_folder(small: Network) -> None:

@@ -1,4 +1,4 @@
-"""The search in sorted runs against numpy's own search, run by run."""
+"""The search in sorted runs against numpy's own search, run by run; the greatest seat against the answer known."""
 
 from __future__ import annotations
 
@@ -9,7 +9,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from network.arrays import FloatArray, IntArray
-from network.runs import SortedRuns
+from network.runs import SortedRuns, greatest_seats
 from tests.networks import examples
 
 
@@ -80,3 +80,30 @@ def test_far_answers_are_found_from_either_end_of_a_long_run() -> None:
     # By hand: 499 figures lie above 500; 500 of those with a half; 999 above 0; 1 above 998.7.
     for near in ([0, 1000, 0, 1000], [1000, 2000, 1000, 2000]):
         assert runs.count_above(threshold, run, np.array(near)).tolist() == [499, 1500, 999, 1001]
+
+
+@given(cases=st.lists(st.tuples(st.integers(0, 300), st.floats(-50, 700)), max_size=20))
+@examples(200)
+def test_the_greatest_seat_is_found_from_anywhere(cases: list[tuple[int, float]]) -> None:
+    answer = np.array([seats for seats, _ in cases], dtype=np.float64)
+    looks: list[FloatArray] = []
+
+    def holds(seats: FloatArray, at: IntArray) -> np.ndarray:
+        looks.append(seats)
+        return seats <= answer[at]
+
+    found = greatest_seats(np.array([start for _, start in cases]), holds)
+    assert found.tolist() == answer.tolist()
+    assert all(np.all((seats >= 1) & (seats == np.floor(seats))) for seats in looks)
+
+
+def test_two_looks_do_where_the_start_is_right() -> None:
+    looks = 0
+
+    def holds(seats: FloatArray, at: IntArray) -> np.ndarray:
+        nonlocal looks
+        looks += seats.size
+        return seats <= 7
+
+    assert greatest_seats(np.full(5, 7.4), holds).tolist() == [7.0] * 5
+    assert looks == 10
