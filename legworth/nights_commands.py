@@ -66,11 +66,12 @@ def list_nights(context: click.Context, *, as_json: bool) -> None:
     from legworth.store.report import nights_as_json, print_nights
 
     store = _store(context)
-    found, in_force = store.nights(), _in_force(store)
+    found, in_force, stopped = store.nights(), _in_force(store), store.stopped()
     if as_json:
-        print_json({"store": str(store.path), "in_force": in_force, "nights": nights_as_json(found, in_force)})
+        document = {"store": str(store.path), "in_force": in_force, "nights": nights_as_json(found, in_force)}
+        print_json(document | {"stopped": [str(path) for path in stopped]})
         return
-    print_nights(found, in_force)
+    print_nights(found, in_force, stopped)
 
 
 @nights.command(epilog=EXIT_CODES)

@@ -96,8 +96,8 @@ def _counts(found: Refreshed) -> dict[str, Any]:
 def _print(found: Refreshed) -> None:
     from rich.table import Table
 
-    from legworth.refresh.checks import TITLES
     from legworth.report import CAUTION, console_for_output, money
+    from legworth.store.check_words import check_title
 
     manifest, counts = found.night.manifest, _counts(found)
     console = console_for_output()
@@ -111,12 +111,14 @@ def _print(found: Refreshed) -> None:
     table.add_row("revenue to come by the program", f"{money(counts['objective'])} {found.currency}")
     table.add_row("compared with", manifest.before or "no earlier night")
     passed = [check for check in manifest.checks if check.passed and check.found is not None]
-    failed = [TITLES[check.name][0] for check in manifest.checks if not check.passed]
+    failed = [check_title(check) for check in manifest.checks if not check.passed]
     table.add_row("checks", f"{len(passed)} passed" + (f", forced in spite of: {'; '.join(failed)}" if failed else ""))
     if manifest.forced is not None:
         table.add_row("forced by", f"{manifest.forced.who}: {manifest.forced.reason}")
     table.add_row("seconds", ", ".join(f"{name} {spent:.1f}" for name, spent in manifest.seconds.items()))
     page = found.night.folder / "changes.html"
-    table.add_row("what moved", str(page) if page.exists() else "not reported; the log says why")
     console.print(table)
-    console.print(CAUTION, markup=False, highlight=False)
+    # Not in the table, which would cut a path short or break it.
+    moved = str(page) if page.exists() else "not reported; the log says why"
+    console.print(f"what moved: {moved}", markup=False, highlight=False, soft_wrap=True)
+    console.print(CAUTION, markup=False, highlight=False, soft_wrap=True)

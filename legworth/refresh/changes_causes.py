@@ -17,16 +17,21 @@ night's prices ask for the other legs of their path. That is the first-order ans
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+import tempfile
+import time
+from collections.abc import Callable, Iterator, Sequence
+from concurrent.futures import FIRST_COMPLETED, Future, wait
+from contextlib import closing
 from dataclasses import dataclass, replace
 from enum import StrEnum
+from functools import partial
 from pathlib import Path
 
 import numpy as np
 import pandas as pd
-from joblib import Parallel, delayed
 
 from legworth.refresh.changes_networks import NetworkPair, leg_alone
+from legworth.refresh.processes import Processes
 from lp import LpOptions, solve
 from network import Demand, LegworthError, Network, read_folder
 from network.arrays import FloatArray
@@ -134,10 +139,61 @@ class PartQuestion:
     prices_now: pd.Series
 
 
-def explain(questions: Sequence[PartQuestion], options: LpOptions, jobs: int = 1) -> dict[str, Cause]:
-    """Find the causes for all legs asked about, parts side by side in ``jobs`` processes."""
-    tasks = (delayed(explain_part)(question, options) for question in questions)
-    return {cause.leg: cause for causes in Parallel(n_jobs=jobs)(tasks) for cause in causes}
+def explain(
+    questions: Sequence[PartQuestion],
+    options: LpOptions,
+    jobs: int = 0,
+    seconds: float = 600.0,
+    scratch: Path | None = None,
+) -> dict[str, Cause]:
+    """Find the causes for all legs asked about.
+
+    Parameters
+    ----------
+    questions
+        The legs, part by part.
+    options
+        The program that tells causes apart.
+    jobs
+        Parts side by side, in processes of their own; 0 for one after the other in this process.
+    seconds
+        Time that all processes together may take; what they have not answered by then stays unknown, and says so.
+    scratch
+        Folder for what these processes write meanwhile; that of the system if None.
+    """
+    if jobs:
+        answers = _explained_apart(questions, options, jobs, seconds, scratch)
+    else:
+        answers = (explain_part(question, options) for question in questions)
+    return {cause.leg: cause for causes in answers for cause in causes}
+
+
+def _explained_apart(
+    questions: Sequence[PartQuestion], options: LpOptions, jobs: int, seconds: float, place: Path | None
+) -> Iterator[list[Cause]]:
+    """Yield the answers of other processes: a solver that dies or hangs there cannot keep this one waiting."""
+    left, flights = list(questions)[::-1], dict[Future[list[Cause]], PartQuestion]()
+    ends = time.monotonic() + seconds
+    with (
+        tempfile.TemporaryDirectory(prefix="legworth-causes-", dir=place, ignore_cleanup_errors=True) as scratch,
+        closing(Processes(max(min(jobs, len(left)), 1), Path(scratch))) as workers,
+    ):
+        while left or flights:
+            while left and len(flights) < workers.capacity():
+                question = left.pop()
+                flights[workers.submit(partial(explain_part, options=options), question)] = question
+            done, _ = wait(flights, timeout=max(ends - time.monotonic(), 0.0), return_when=FIRST_COMPLETED)
+            if not done:
+                break
+            for future in done:
+                question, died = flights.pop(future), future.exception() is not None
+                yield _unknown(question, "the process that looked into it died") if died else future.result()
+    for question in [*flights.values(), *left[::-1]]:
+        yield _unknown(question, f"looking into it took more than {seconds:g} s")
+
+
+def _unknown(question: PartQuestion, why_not: str) -> list[Cause]:
+    return [Cause(leg, How.NOT, why_not=why_not) for leg in question.legs]
 
 
 def explain_part(question: PartQuestion, options: LpOptions) -> list[Cause]:
@@ -148,7 +204,7 @@ def explain_part(question: PartQuestion, options: LpOptions) -> list[Cause]:
         moved = _on_positions(question.prices_now, pair) - published
     except LegworthError as error:
         reason = f"its part cannot be read again ({str(error).splitlines()[0]})"
-        return [Cause(leg, How.NOT, why_not=reason) for leg in question.legs]
+        return _unknown(question, reason)
     found = []
     why_not = question.why_not
     whole = question.whole

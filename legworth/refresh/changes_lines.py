@@ -7,8 +7,8 @@ from dataclasses import dataclass
 
 from legworth.refresh.changes import Changes
 from legworth.refresh.changes_words import cause_sentence, count_of, duration, shown_move, signed
-from legworth.refresh.checks import check_line
 from legworth.report import money, price_text
+from legworth.store.check_words import check_line
 
 __all__ = ["Line", "first_lines"]
 

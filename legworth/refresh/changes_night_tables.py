@@ -7,9 +7,9 @@ from collections.abc import Iterable
 from legworth.refresh.changes import Changes, Departure
 from legworth.refresh.changes_tables import Head, PageTable, shown_of
 from legworth.refresh.changes_words import duration, signed
-from legworth.refresh.checks import TITLES
 from legworth.report import money, price_text
 from legworth.store import Check
+from legworth.store.check_words import check_title, figure_text, outcome_word
 
 __all__ = ["check_table", "departure_tables", "revenue_table", "seconds_table"]
 
@@ -86,10 +86,9 @@ def check_table(checks: Iterable[Check]) -> PageTable | None:
     """Checks of the run with their limits."""
     rows = []
     for check in checks:
-        title, unit = TITLES.get(check.name, (check.name, ""))
-        word = "held" if check.passed else "FAILED"
         look = "; ".join(check.look_at[:3]) if not check.passed else ""
-        rows.append((title, _figure(check.found, unit), _figure(check.limit, unit), word, look))
+        figures = (figure_text(check, value) for value in (check.found, check.limit))
+        rows.append((check_title(check), *figures, outcome_word(check), look))
     heads = (
         Head("Check", word=True),
         Head("Found"),
@@ -122,9 +121,3 @@ def seconds_table(changes: Changes) -> list[PageTable]:
         PageTable("rows", "Rows by table", (Head("Table", word=True), Head("Rows")), tuple(sizes)),
     ]
     return [table for table in tables if table.rows]
-
-
-def _figure(value: float | None, unit: str) -> str:
-    if value is None:
-        return "not compared"
-    return f"{100 * value:,.3g} %" if unit == "%" else f"{value:,.4g} {unit}".rstrip()

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 from dataclasses import dataclass
+from pathlib import Path
 
 import numpy as np
 import pandas as pd
@@ -34,18 +35,23 @@ class ExplainOptions:
         Parts that may be solved again.
     products
         Products of these parts, counted once for every time one is solved, that may be solved in all.
-    jobs
-        Parts explained side by side, in processes.
+    jobs, seconds
+        Parts explained side by side, in processes of their own that together may take so many seconds; with no jobs
+        one after the other in this process, for as long as it takes.
+    scratch
+        Folder for what these processes write meanwhile; that of the system if None.
     """
 
     lp: LpOptions | None = None
     parts: int = 12
     products: int = 6_000_000
-    jobs: int = 1
+    jobs: int = 0
+    seconds: float = 600.0
+    scratch: Path | None = None
 
     def __post_init__(self) -> None:
-        if self.parts < 0 or self.products < 0 or self.jobs < 1:
-            raise SettingError("parts and products to be solved again must not be negative, and jobs at least 1")
+        if min(self.parts, self.products, self.jobs) < 0 or not self.seconds > 0:
+            raise SettingError("parts, products and jobs that look for causes must not be negative, seconds above 0")
 
 
 @dataclass(frozen=True)
@@ -153,7 +159,8 @@ def price_changes(
     prices = [night.bid_price[at] for night, at in ((then, match.then), (now, match.now))]
     means = [float(np.average(price, weights=weight)) if len(price) else 0.0 for price in prices]
     chosen = match.ranked[:top]
-    causes = explain(_questions(nights, legs, match, chosen, options), options.lp or LpOptions(), options.jobs)
+    questions = _questions(nights, legs, match, chosen, options)
+    causes = explain(questions, options.lp or LpOptions(), options.jobs, options.seconds, options.scratch)
     return PriceChanges(
         legs=len(match.now),
         rose=int((match.move > 0).sum()),

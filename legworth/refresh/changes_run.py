@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from collections import Counter
 from dataclasses import dataclass
-from typing import Any
 
 from legworth.store.manifest import Check, Forced, Manifest
 
@@ -70,8 +69,7 @@ class RunHealth:
     def of(cls, manifest: Manifest) -> RunHealth:
         """Read it from a manifest, whether that of a published night or of one about to be."""
         parts = manifest.parts
-        proofs = {part.name: _proofs(part.certificate) for part in parts}
-        bad = tuple(name for name, found in proofs.items() if not found or not all(one.get("holds") for one in found))
+        bad = tuple(part.name for part in parts if not part.certified)
         solved = [part for part in parts if part.taken_over_from is None]
         part_seconds: Counter[str] = Counter()
         for part in parts:
@@ -86,7 +84,7 @@ class RunHealth:
             certified=len(parts) - len(bad),
             not_certified=bad,
             greatest_gap=max(
-                (abs(float(one.get("gap", 0.0))) for found in proofs.values() for one in found), default=0.0
+                (abs(float(found.get("gap", 0.0))) for part in parts for found in part.certificates), default=0.0
             ),
             checks=tuple(sorted(manifest.checks, key=lambda check: check.passed)),
             forced=manifest.forced,
@@ -103,8 +101,3 @@ class RunHealth:
     def failed(self) -> tuple[Check, ...]:
         """Checks outside their limits."""
         return tuple(check for check in self.checks if not check.passed)
-
-
-def _proofs(certificate: dict[str, Any]) -> list[dict[str, Any]]:
-    """The certificates of a part: one of its own, or one for each program that it solved."""
-    return [certificate] if "holds" in certificate else [one for one in certificate.values() if isinstance(one, dict)]

@@ -16,6 +16,7 @@ import pandas as pd
 import pyarrow as pa
 
 from legworth.store import Check
+from legworth.store.check_words import CERTIFICATES, TITLES, check_line
 from network.arrays import BoolArray, FloatArray
 from network.refresh_settings import RefreshSettings
 
@@ -26,22 +27,6 @@ LISTED = 10
 
 ROUNDING = 1e-6
 """Share by which a bid price must exceed the highest fare to count as above it."""
-
-CERTIFICATES = "certificates"
-TITLES = {
-    CERTIFICATES: ("parts without a certified optimum", ""),
-    "snapshot": ("snapshot older than last night's", "h"),
-    "no_demand": ("legs without demand to come", "%"),
-    "demand_total": ("move of all demand to come", "%"),
-    "demand_legs": ("legs whose demand moved far", "%"),
-    "capacity_total": ("move of all seats authorised", "%"),
-    "capacity_legs": ("legs whose seats moved far", "%"),
-    "prices": ("legs whose bid price moved far", "%"),
-    "above_fare": ("legs with a bid price above every fare", "%"),
-    "zero": ("legs with seats whose bid price is zero", "%"),
-    "missing": ("departures of last night missing tonight", "%"),
-}
-"""What each check looks at, in words, and the unit of its figures."""
 
 
 class LegTables(Protocol):
@@ -113,20 +98,6 @@ def check_night(
         _missing(tonight.frame, then, limits),
     ]
     return _in_order(checks)
-
-
-def check_line(check: Check) -> str:
-    """One line for people: what was found, the limit, and what to look at first."""
-    title, unit = TITLES[check.name]
-    if check.found is None:
-        return f"{title}: not compared, there is no last night"
-    found, limit = (_figure(figure, unit) for figure in (check.found, check.limit or 0.0))
-    look = f"; look first at {'; '.join(check.look_at)}" if check.look_at and not check.passed else ""
-    return f"{title}: {found}, at most {limit} allowed{look}"
-
-
-def _figure(figure: float, unit: str) -> str:
-    return f"{100 * figure:.3g} %" if unit == "%" else f"{figure:.4g} {unit}".rstrip()
 
 
 def _in_order(checks: list[Check]) -> list[Check]:

@@ -61,7 +61,7 @@ def take_snapshot(folder: Path, into: Path, retried: Callable[[str], None] | Non
         try:
             files = _copy(folder, into, before)
         except OSError as error:
-            name = Path(error.filename or "").name
+            name = Path(error.filename or folder).name  # a disk that is full names no file
             raise SettingError(
                 f"{name}: cannot be copied ({error.strerror}); free space or correct the file"
             ) from error

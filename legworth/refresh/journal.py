@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import sys
-from collections.abc import MutableMapping
+from collections.abc import Callable, MutableMapping
 from pathlib import Path
 from typing import Any, TextIO
 
@@ -18,6 +18,9 @@ __all__ = ["Journal"]
 class Journal:
     """Where the events of a night are written as they happen.
 
+    Once it is open it raises nothing: a log that can be written no longer is remarked on once, and decides neither
+    whether a night goes into force nor what is told of one that does not.
+
     Parameters
     ----------
     path
@@ -25,7 +28,7 @@ class Journal:
     """
 
     def __init__(self, path: Path) -> None:
-        self._path = path
+        self._path, self._told_full = path, False
         with one_line_errors(path, "write"):
             path.parent.mkdir(parents=True, exist_ok=True)
             self._file: TextIO = path.open("a", encoding="utf-8", buffering=1)
@@ -43,22 +46,27 @@ class Journal:
 
     def note(self, event: str, line: str = "", **fields: Any) -> None:
         """Note an event; ``line`` is what a person at a terminal reads of it, nothing if empty."""
-        with one_line_errors(self._path, "write"):
-            self._logger.info(event, line=line, **fields)
+        self._write(lambda: self._logger.info(event, line=line, **fields))
 
     def warn(self, event: str, line: str, **fields: Any) -> None:
         """Note that something went wrong and what is done about it."""
-        with one_line_errors(self._path, "write"):
-            self._logger.warning(event, line=line, **fields)
+        self._write(lambda: self._logger.warning(event, line=line, **fields))
 
     def fail(self, event: str, **fields: Any) -> None:
         """Note why the night ends without result; the command says it on the terminal."""
-        with one_line_errors(self._path, "write"):
-            self._logger.error(event, line="", **fields)
+        self._write(lambda: self._logger.error(event, line="", **fields))
 
     def close(self) -> None:
         """Close the file."""
-        self._file.close()
+        self._write(self._file.close)
+
+    def _write(self, line: Callable[[], object]) -> None:
+        try:
+            line()
+        except OSError as error:
+            if not self._told_full:
+                self._told_full = True
+                click.echo(f"warning: cannot write {self._path} ({error.strerror}); this log is cut short", err=True)
 
 
 def _told(_: Any, level: str, event: MutableMapping[str, Any]) -> MutableMapping[str, Any]:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import shutil
 import time
 import traceback
+from contextlib import closing
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -182,14 +183,15 @@ def _decided(pricing: PricingOptions) -> dict[str, Any]:
 
 def _thinned(store: Store, settings: NetworkSettings, log: Path) -> tuple[str, ...]:
     """Remove the nights that the rule does not keep; a store that is busy again is thinned the next time."""
-    journal = Journal(log)
     try:
-        removed = store.thin(settings.store)
-        if removed:
-            journal.note("thinned", f"{len(removed)} earlier nights removed", nights=removed)
-    except StoreError as error:
-        journal.warn("not_thinned", f"earlier nights are left for now: {error}")
+        with closing(Journal(log)) as journal:
+            try:
+                removed = store.thin(settings.store)
+            except StoreError as error:
+                journal.warn("not_thinned", f"earlier nights are left for now: {error}")
+                return ()
+            if removed:
+                journal.note("thinned", f"{len(removed)} earlier nights removed", nights=removed)
+            return removed
+    except StoreError:  # no log: tonight is in force whatever becomes of the earlier ones
         return ()
-    finally:
-        journal.close()
-    return removed

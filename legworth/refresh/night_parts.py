@@ -2,17 +2,19 @@
 
 from __future__ import annotations
 
+import shutil
 from collections.abc import Iterator
-from contextlib import closing
+from contextlib import closing, contextmanager
 
 from legworth.refresh.cluster import Cluster
 from legworth.refresh.last_night import LastNight
 from legworth.refresh.part_exchange import PartInput, PartOutput
 from legworth.refresh.parts import Part
 from legworth.refresh.processes import Processes
-from legworth.refresh.running import Failure, run_parts
+from legworth.refresh.running import Failure, Workers, run_parts
 from legworth.refresh.work import Work
 from legworth.store import PartEntry
+from legworth.store.disk import one_line_errors
 from network import Network
 
 __all__ = ["price_parts"]
@@ -41,16 +43,30 @@ def price_parts(work: Work, network: Network, parts: list[Part], last: LastNight
         then = f"it is tried once more, by {failure.solver}" if failure.again else "the night stops"
         work.journal.warn("part_failed", f"part {failure.part}: {failure.problem}; {then}", part=failure.part)
 
-    workers = work.workers or (Processes(options.pricing.jobs) if options.cluster is None else Cluster(options.cluster))
     done, entries = 0, {}
     seconds = work.settings.refresh.part_seconds
-    with closing(run_parts(inputs(), workers, work.task, seconds, failed)) as outputs:
+    with _workers(work) as workers, closing(run_parts(inputs(), workers, work.task, seconds, failed)) as outputs:
         for output in outputs:
             entry = _store(work, output, by_name[output.name], last)
             entries[output.name] = entry
             done += entry.products
             work.progress(done, network.n_products)
     return [entries[part.name] for part in parts]
+
+
+@contextmanager
+def _workers(work: Work) -> Iterator[Workers]:
+    """Whoever works; what solvers of this machine leave when they are killed goes with what the night has aside."""
+    if work.workers is not None or work.options.cluster is not None:
+        yield work.workers or Cluster(work.options.cluster or "")
+        return
+    scratch = work.aside.folder.with_name(f"{work.aside.name}.solvers").resolve()
+    with one_line_errors(scratch, "write"):
+        scratch.mkdir()
+    try:
+        yield Processes(work.options.pricing.jobs, scratch)
+    finally:
+        shutil.rmtree(scratch, ignore_errors=True)
 
 
 def _store(work: Work, output: PartOutput, part: Part, last: LastNight | None) -> PartEntry:

@@ -8,19 +8,23 @@ import traceback
 from legworth.refresh.changes import ChangesOptions, find_changes
 from legworth.refresh.changes_page import changes_page
 from legworth.refresh.changes_prices import ExplainOptions
-from legworth.refresh.checks import CERTIFICATES, NightLegs, check_line, check_night
+from legworth.refresh.checks import NightLegs, check_night
 from legworth.refresh.work import Work
 from legworth.store import Check, Forced, Manifest, Night, PartEntry
+from legworth.store.check_words import CERTIFICATES, check_line
 from legworth.store.history import user_name
 from network import NotCertifiedError
 from network.errors import NightStopped
 
 __all__ = ["judge", "report_changes"]
 
+EXPLAINED_SECONDS = 600.0
+"""Seconds that looking for causes may take, where a part may take no less."""
+
 
 def judge(work: Work, entries: list[PartEntry], last: Night | None) -> tuple[list[Check], Forced | None]:
     """Make the checks; stop the night unless it passes or is forced."""
-    uncertified = [entry.name for entry in entries if not all(one["holds"] for one in entry.certificate.values())]
+    uncertified = [entry.name for entry in entries if not entry.certified]
     tonight = NightLegs.of(work.aside, work.settings.as_of)
     before = None if last is None else NightLegs.of(last, last.manifest.as_of)
     checks = check_night(tonight, before, work.settings.refresh, uncertified)
@@ -34,7 +38,7 @@ def judge(work: Work, entries: list[PartEntry], last: Night | None) -> tuple[lis
         forced = Forced(who=user_name(), reason=reason)
         work.journal.warn("forced", f"published by {forced.who} in spite of: {'; '.join(lines)}", reason=reason)
         return checks, forced
-    work.aside.stop(
+    written = work.aside.stop(
         {
             "night": work.aside.name,
             "as_of": work.settings.as_of.isoformat(),
@@ -45,16 +49,24 @@ def judge(work: Work, entries: list[PartEntry], last: Night | None) -> tuple[lis
     )
     if uncertified:
         raise NotCertifiedError(f"{lines[0]}: nothing is published, and it cannot be forced")
-    raise NightStopped(work.aside.name, [*lines, "correct the tables, or publish all the same with --force REASON"])
+    mend = f"all figures are in {written}; correct the tables, or publish all the same with --force REASON"
+    raise NightStopped(work.aside.name, [*lines, mend])
 
 
 def report_changes(work: Work, manifest: Manifest, last: Night | None) -> None:
     """Write what moved since last night.
 
-    A fault in this report must not keep certified prices from the desk, so it is noted and the night goes on.
+    A fault in this report must not keep certified prices from the desk, so it is noted and the night goes on. Nor must
+    a solver that dies or hangs: causes are looked for in processes that are ended when their time is over.
     """
     try:
-        explain = ExplainOptions(lp=work.options.pricing.lp, jobs=work.options.pricing.jobs)
+        pricing = work.options.pricing
+        explain = ExplainOptions(
+            lp=pricing.lp,
+            jobs=pricing.jobs if work.workers is None else 0,
+            seconds=min(EXPLAINED_SECONDS, work.settings.refresh.part_seconds),
+            scratch=work.aside.folder.parent.resolve(),  # the next night clears it, if this one is killed
+        )
         changes = find_changes(work.aside, last, manifest, ChangesOptions(explain=explain))
         document = json.dumps(changes.as_dict(), indent=1, ensure_ascii=False, allow_nan=False, default=str)
         page = changes_page(changes)

@@ -11,15 +11,19 @@ import os
 import signal
 import threading
 import time
+from collections.abc import Callable
 from concurrent.futures import Future
+from contextlib import suppress
 from importlib import import_module
+from pathlib import Path
+from typing import Any, TypeVar
 
 from joblib.externals.loky.process_executor import ProcessPoolExecutor
 
-from legworth.refresh.part_exchange import PartInput, PartOutput
-from legworth.refresh.running import PartTask
-
 __all__ = ["Processes"]
+
+Given = TypeVar("Given")
+Answer = TypeVar("Answer")
 
 ONE_THREAD = dict.fromkeys(("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS", "BLIS_NUM_THREADS"), "1")
 """Environment of a worker: its parts are worked on side by side, so within a part everything runs in one thread."""
@@ -35,18 +39,22 @@ class Processes:
     ----------
     count
         How many.
+    scratch
+        Folder for temporary files of workers and solvers; that of the system if None.
     """
 
-    def __init__(self, count: int) -> None:
+    def __init__(self, count: int, scratch: Path | None = None) -> None:
+        temporary = {} if scratch is None else dict.fromkeys(("TMPDIR", "TMP", "TEMP"), str(scratch))
+        self._environment = {**ONE_THREAD, **temporary}
         self._pools: list[ProcessPoolExecutor | None] = [None] * count
-        self._loaded: list[Future[None] | None] = [None] * count
-        self._place: dict[Future[PartOutput], int] = {}
+        self._loaded: list[Future[int] | None] = [None] * count
+        self._place: dict[Future[Any], int] = {}
 
     def capacity(self) -> int:
         """Number of processes."""
         return len(self._pools)
 
-    def submit(self, task: PartTask, part: PartInput) -> Future[PartOutput]:
+    def submit(self, task: Callable[[Given], Answer], part: Given) -> Future[Answer]:
         """Give a part to a process that is free, if there is a choice to one that has worked already."""
         self._release()
         free = sorted(set(range(len(self._pools))) - set(self._place.values()))
@@ -54,19 +62,19 @@ class Processes:
         pool = self._pools[place]
         if pool is None:
             pool = self._pools[place] = ProcessPoolExecutor(
-                max_workers=1, env=ONE_THREAD, initializer=_outlive_nobody, initargs=(os.getpid(),)
+                max_workers=1, env=self._environment, initializer=_outlive_nobody, initargs=(os.getpid(),)
             )
             self._loaded[place] = pool.submit(_load)
-        future: Future[PartOutput] = pool.submit(task, part)
+        future: Future[Answer] = pool.submit(task, part)
         self._place[future] = place
         return future
 
-    def waiting(self, future: Future[PartOutput]) -> bool:
+    def waiting(self, future: Future[Any]) -> bool:
         """Whether the process of a part is still loading libraries."""
         loaded = self._loaded[self._place[future]]
         return loaded is not None and not loaded.done()
 
-    def end(self, future: Future[PartOutput]) -> None:
+    def end(self, future: Future[Any]) -> None:
         """Kill the process of a part, and the solver that it runs."""
         self._drop(self._place.pop(future))
 
@@ -84,10 +92,15 @@ class Processes:
                 self._drop(place)
 
     def _drop(self, place: int) -> None:
-        pool = self._pools[place]
-        self._pools[place] = None
-        if pool is not None:
-            pool.shutdown(wait=True, kill_workers=True)
+        pool, loaded = self._pools[place], self._loaded[place]
+        self._pools[place] = self._loaded[place] = None
+        if pool is None:
+            return
+        pool.shutdown(wait=True, kill_workers=True)
+        if hasattr(os, "killpg") and loaded is not None and loaded.done() and loaded.exception() is None:
+            # A process that was killed leaves the solver that it ran behind, alone in its group.
+            with suppress(ProcessLookupError):
+                os.killpg(loaded.result(), signal.SIGKILL)
 
 
 def _outlive_nobody(parent: int) -> None:
@@ -109,6 +122,7 @@ def _outlive_nobody(parent: int) -> None:
     threading.Thread(target=watch, daemon=True).start()
 
 
-def _load() -> None:
-    """Load what pricing a part needs."""
+def _load() -> int:
+    """Load what pricing a part needs; return the process, which is its process group too."""
     import_module("legworth.refresh.tasks")
+    return os.getpid()

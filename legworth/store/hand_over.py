@@ -26,7 +26,7 @@ import pyarrow.csv
 import pyarrow.parquet as pq
 
 from legworth.results import result_schemas
-from legworth.store.disk import held_folder, one_line_errors, sync, sync_all
+from legworth.store.disk import file_digest, held_folder, one_line_errors, sync, sync_all
 from legworth.store.night import Night
 from legworth.store.tables import part_folder
 from network.errors import NightDamagedError, StoreBusyError, StoreError
@@ -205,6 +205,9 @@ def _chunks(night: Night, table: str, part: str) -> Iterator[pa.Table]:
         return
     layout = _layout(table)
     try:
+        # Parquet files carry no checksums of their own: one wrong bit would be handed over as a wrong price.
+        if file_digest(night.folder / path) != night.manifest.files[path].sha256:
+            raise NightDamagedError(f"{path} of night {night.name} has been changed since it was published")
         with pq.ParquetFile(night.folder / path) as file:
             for batch in file.iter_batches(ROWS, columns=layout.names):
                 yield pa.Table.from_batches([batch]).select(layout.names).cast(layout)

@@ -74,6 +74,18 @@ class PartEntry(_Declared):
     taken_over_from: Annotated[str | None, Field(description="Night whose results it shares, unsolved.")] = None
     seconds: Annotated[dict[str, float], Field(description="Seconds by phase.")] = {}
 
+    @property
+    def certificates(self) -> tuple[dict[str, Any], ...]:
+        """Its certificates: one of its own, or one for each program that was solved."""
+        if "holds" in self.certificate:
+            return (self.certificate,)
+        return tuple(found for found in self.certificate.values() if isinstance(found, dict))
+
+    @property
+    def certified(self) -> bool:
+        """Whether it has certificates and all of them hold."""
+        return bool(self.certificates) and all(found.get("holds") is True for found in self.certificates)
+
 
 class Manifest(_Declared):
     """Everything about a night.

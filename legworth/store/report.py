@@ -4,12 +4,14 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping, Sequence
+from pathlib import Path
 from typing import Any
 
 import pyarrow as pa
 from rich.table import Table
 
 from legworth.report import CAUTION, console_for_output, money, price_text
+from legworth.store.check_words import check_title, figure_text, outcome_word
 from legworth.store.comparison import NightComparison
 from legworth.store.history import HistoryEntry
 from legworth.store.night import Night
@@ -34,14 +36,14 @@ def nights_as_json(nights: Sequence[Night], in_force: str | None) -> list[dict[s
     return [_line(night, in_force) for night in nights]
 
 
-def print_nights(nights: Sequence[Night], in_force: str | None) -> None:
-    """Print one line a night, oldest first."""
+def print_nights(nights: Sequence[Night], in_force: str | None, stopped: Sequence[Path] = ()) -> None:
+    """Print one line a night, oldest first, and the latest nights that a check stopped."""
     console = console_for_output()
     table = Table(title="Nights", title_justify="left")
     table.add_column("Night", no_wrap=True)
     table.add_column("In force")
-    table.add_column("Snapshot", no_wrap=True)
-    table.add_column("Published", no_wrap=True)
+    table.add_column("Snapshot, local", no_wrap=True)
+    table.add_column("Published, UTC", no_wrap=True)
     for heading in ("Legs", "Products", "Parts", "Taken over", "Revenue to come", "Seconds"):
         table.add_column(heading, justify="right")
     table.add_column("Remark")
@@ -61,6 +63,10 @@ def print_nights(nights: Sequence[Night], in_force: str | None) -> None:
             f"forced by {line['forced']['who']}: {line['forced']['reason']}" if line["forced"] else "",
         )
     console.print(table, highlight=False)
+    if stopped:
+        latest, more = stopped[-1], f" and {len(stopped) - 1:,} before it" if len(stopped) > 1 else ""
+        what = f"Stopped by a check and not published: {latest.stem}{more}; what to look at first: {latest}"
+        console.print(what, highlight=False, soft_wrap=True)
 
 
 def _line(night: Night, in_force: str | None) -> dict[str, Any]:
@@ -115,10 +121,10 @@ def print_night(night: Night, in_force: str | None, history: Sequence[HistoryEnt
     facts.add_row(
         "Seconds", ", ".join(f"{phase} {value:,.1f}" for phase, value in manifest.seconds.items()) or "unknown"
     )
-    facts.add_row("Folder", str(night.folder))
     for fault in line["faults"][:NAMED]:
         facts.add_row("Damaged", fault)
     console.print(facts, highlight=False)
+    console.print(f"Folder {night.folder}", highlight=False, soft_wrap=True)
     if manifest.checks:
         console.print(_checks(night), highlight=False)
     for entry in history:
@@ -133,11 +139,12 @@ def _checks(night: Night) -> Table:
     table.add_column("Check")
     table.add_column("Found", justify="right")
     table.add_column("Limit", justify="right")
-    table.add_column("Passed")
-    table.add_column("Look at")
+    table.add_column("Outcome")
+    table.add_column("Look first at", overflow="fold")
     for check in night.manifest.checks:
-        found, limit = ("" if value is None else f"{value:,.6g}" for value in (check.found, check.limit))
-        table.add_row(check.name, found, limit, "yes" if check.passed else "no", ", ".join(check.look_at[:3]))
+        figures = (figure_text(check, value) for value in (check.found, check.limit))
+        look = "" if check.passed else "; ".join(check.look_at[:3])
+        table.add_row(check_title(check), *figures, outcome_word(check), look)
     return table
 
 
@@ -210,7 +217,7 @@ def print_rows(rows: pa.Table, limit: int) -> None:
     table = Table()
     numeric = [pa.types.is_integer(field.type) or pa.types.is_floating(field.type) for field in rows.schema]
     for name, right in zip(rows.column_names, numeric, strict=True):
-        table.add_column(name, justify="right" if right else "left")
+        table.add_column(name, justify="right" if right else "left", overflow="fold")
     for record in rows.slice(0, limit).to_pylist():
         table.add_row(*(_cell(value) for value in record.values()))
     console.print(table, highlight=False)

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Iterable
+from datetime import UTC
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -186,8 +187,9 @@ def _nights(nights: Iterable[Night], in_force: str | None) -> pa.Table:
             {
                 "night": night.name,
                 "number": night.number,
-                "as_of": manifest.as_of,
-                "published": manifest.published,
+                # In UTC: pyarrow passes over the offset of some kinds of time zone.
+                "as_of": manifest.as_of.astimezone(UTC),
+                "published": manifest.published and manifest.published.astimezone(UTC),
                 "before": manifest.before,
                 "in_force": night.name == in_force,
                 "parts": len(manifest.parts),
@@ -216,7 +218,7 @@ def _parts(nights: Iterable[Night]) -> pa.Table:
             "objective": part.objective,
             "taken_over_from": part.taken_over_from,
             "seconds": sum(part.seconds.values()),
-            "certified": part.certificate.get("holds"),
+            "certified": part.certified,
         }
         for night in nights
         for part in night.manifest.parts

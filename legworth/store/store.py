@@ -160,6 +160,12 @@ class Store:
             for name in sorted(names, key=lambda n: night_number(n) or 0)
         )
 
+    def stopped(self) -> tuple[Path, ...]:
+        """What to look at first of every night that a check stopped, oldest first."""
+        with one_line_errors(self.path / "stopped", "read"):
+            found = [path for path in (self.path / "stopped").glob("*.json") if night_number(path.stem) is not None]
+        return tuple(sorted(found, key=lambda path: night_number(path.stem) or 0))
+
     def night(self, name: str) -> Night:
         """Return the night of that name.
 

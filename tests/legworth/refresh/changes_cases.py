@@ -3,11 +3,14 @@
 from __future__ import annotations
 
 import json
+import os
+import time
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
 from legworth.pricing import PricingOptions
+from legworth.refresh.changes_causes import Cause, PartQuestion, explain_part
 from legworth.refresh.parts import cut_parts
 from legworth.refresh.tasks import KEPT_TABLES, LastPart, PartInput, PartOutput, run_part
 from legworth.store import Check, Forced, Manifest, Night, PartEntry, Store
@@ -15,7 +18,7 @@ from lp import LpOptions
 from network import Network, read_folder
 from tests.folders import Folder
 
-__all__ = ["Extras", "hub_folder", "publish", "publish_folder"]
+__all__ = ["Extras", "NeverAnswers", "hub_folder", "publish", "publish_folder"]
 
 CAPACITY = 40
 
@@ -92,6 +95,21 @@ def _last_part(last: Night | None, part: str) -> LastPart | None:
         {name: (folder / f"{name}.parquet").read_bytes() for name in KEPT_TABLES},
         frozenset(path.name for path in folder.iterdir()),
     )
+
+
+@dataclass(frozen=True)
+class NeverAnswers:
+    """Looks for causes, but for one part: there its process hangs or dies."""
+
+    part: str
+    dies: bool
+
+    def __call__(self, question: PartQuestion, options: LpOptions) -> list[Cause]:
+        if question.tonight.name == f"part={self.part}":
+            if self.dies:
+                os._exit(9)
+            time.sleep(3600)
+        return explain_part(question, options)
 
 
 def hub_folder() -> Folder:

@@ -6,6 +6,8 @@ Tasks stand in a module of their own, so that the processes of a pool and the wo
 from __future__ import annotations
 
 import os
+import subprocess
+import tempfile
 import time
 from collections.abc import Callable
 from concurrent.futures import Future
@@ -99,6 +101,34 @@ class DiesOnce:
         mark = self.marks / part.name
         if part.name == self.part and (self.always or not mark.exists()):
             mark.touch()
+            os._exit(9)
+        return run_part(part)
+
+
+@dataclass(frozen=True)
+class LosesItsWorker:
+    """Starts a program that never ends, as a solver that hangs, notes its number, and dies itself, once."""
+
+    note: Path
+
+    def __call__(self, part: PartInput) -> PartOutput:
+        if not self.note.exists():
+            self.note.write_text(str(subprocess.Popen(["sleep", "3600"]).pid))
+            os._exit(9)
+        return run_part(part)
+
+
+@dataclass(frozen=True)
+class Litters:
+    """Leaves a temporary file and dies once, as a solver does that is killed; notes where the file was."""
+
+    note: Path
+
+    def __call__(self, part: PartInput) -> PartOutput:
+        if not self.note.exists():
+            litter = Path(tempfile.gettempdir()) / "litter.mps"
+            litter.touch()
+            self.note.write_text(str(litter))
             os._exit(9)
         return run_part(part)
 

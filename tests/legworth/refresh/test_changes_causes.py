@@ -10,6 +10,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 from scipy.stats import poisson
 
+from legworth.refresh import changes_causes
 from legworth.refresh.changes import ChangesOptions, find_changes
 from legworth.refresh.changes_causes import How
 from legworth.refresh.changes_networks import NetworkPair, leg_alone
@@ -18,7 +19,7 @@ from legworth.store import Night, Store
 from lp import LpOptions, Method, solve
 from network import read_folder
 from tests.folders import Folder
-from tests.legworth.refresh.changes_cases import hub_folder, publish_folder
+from tests.legworth.refresh.changes_cases import NeverAnswers, hub_folder, publish_folder
 from tests.networks import Plan, examples, plans
 
 IN1 = 2
@@ -150,14 +151,26 @@ def test_beyond_the_work_allowed_the_leg_is_solved_alone_and_it_is_said(store: S
     assert {move.cause.how for move in prices.moves} == {How.PART, How.LEG}
 
 
-def test_side_by_side_gives_the_same(store: Store, tmp_path: Path) -> None:
+@pytest.mark.parametrize(("dies", "seconds"), [(True, 600.0), (False, 0.5)])
+def test_a_process_that_dies_or_hangs_while_it_looks_for_causes_harms_no_other_part(
+    dies: bool, seconds: float, store: Store, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
     last = publish_folder(store, hub_folder(), tmp_path)
     both = seats_changed(hub_folder()).cell("legs.csv", 6, "sold", "30")
     tonight = publish_folder(store, both, tmp_path)
-    one, two = (
-        find_changes(tonight, last, options=ChangesOptions(explain=ExplainOptions(jobs=jobs))).prices for jobs in (1, 2)
-    )
-    assert one == two
+    here = find_changes(tonight, last).prices
+    monkeypatch.setattr(changes_causes, "explain_part", NeverAnswers("2030-03-01", dies))
+    apart = ChangesOptions(explain=ExplainOptions(jobs=2, seconds=seconds))
+    found = find_changes(tonight, last, options=apart).prices
+    assert here is not None
+    assert found is not None
+    assert {move.leg[-1] for move in here.moves} == {"1", "2"}
+    for move, known in zip(found.moves, here.moves, strict=True):
+        if move.leg.endswith("1"):
+            assert (move.leg, move.move, move.cause.how) == (known.leg, known.move, How.NOT)
+            assert ("died" if dies else "took more than 0.5 s") in move.cause.why_not
+        elif dies:
+            assert move == known  # answered by the other process, and the same
 
 
 def test_another_program_tonight_is_noticed(store: Store, tmp_path: Path) -> None:
@@ -178,7 +191,7 @@ def test_a_part_that_cannot_be_read_again_is_told_as_such(store: Store, tmp_path
     assert "cannot be read again" in move.cause.why_not
 
 
-@examples(40)
+@examples(20)
 @given(plans(), plans())
 def test_each_network_of_a_pair_has_the_optimum_of_its_night(last: Plan, tonight: Plan) -> None:
     """Legs and products that only the other night has change neither revenue nor prices."""

@@ -105,3 +105,14 @@ def test_the_copy_is_the_folder_and_the_hashes_are_those_of_the_copy(folder: Pat
     for name, entry in snapshot.files.items():
         data = (snapshot.folder / name).read_bytes()
         assert (entry.sha256, entry.bytes) == (hashlib.sha256(data).hexdigest(), len(data))
+
+
+def test_a_disk_that_is_full_while_tables_are_copied_is_told_by_the_name_of_the_folder(
+    folder: Path, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def full(*_: object) -> None:
+        raise OSError(28, "No space left on device")  # as a write does, which names no file
+
+    monkeypatch.setattr(inputs, "_copy", full)
+    with pytest.raises(SettingError, match=r"^folder: cannot be copied \(No space left on device\); free space"):
+        take_snapshot(folder, tmp_path / "copy")

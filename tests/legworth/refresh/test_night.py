@@ -8,6 +8,7 @@ import time
 from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pyarrow as pa
@@ -15,14 +16,14 @@ import pyarrow.parquet as pq
 import pytest
 
 from legworth.pricing import price_folder
-from legworth.refresh import PartOutput, night, night_verdict, tasks
+from legworth.refresh import PartOutput, RefreshOptions, night, night_verdict, refresh, tasks
 from legworth.refresh.part_folder import parquet_bytes
 from legworth.store import Night, NightDamagedError, Store, StoreBusyError
 from lp import LpOptions, Method
 from network import InputError, SettingError, SolverStoppedError, read_folder
 from network.errors import NightStopped
 from tests.folders import Folder
-from tests.legworth.refresh.nights import PRICING, Fails, Spoils, contents, in_force, limits, make
+from tests.legworth.refresh.nights import PRICING, Fails, Litters, Spoils, contents, in_force, limits, make
 
 FIRST, MIDDLE, LAST = "2030-03-01", "2030-03-02", "2030-03-03"
 
@@ -171,6 +172,33 @@ def test_a_folder_that_cannot_be_read_makes_no_store(what: str, tmp_path: Path, 
     with pytest.raises(InputError, match="network.toml" if "settings" in what else "no such folder"):
         make(place, store)
     assert not store.exists()
+
+
+def test_what_a_killed_solver_leaves_goes_with_the_night(folder: Path, store: Path, tmp_path: Path) -> None:
+    note = tmp_path / "note"
+    found = refresh(folder, store, RefreshOptions(PRICING), task=Litters(note)).night
+    litter = Path(note.read_text())
+    assert (litter.parent.parent, litter.parent.name) == ((store / "aside").resolve(), f"{found.name}.solvers")
+    assert in_force(store) == found
+    assert list((store / "aside").iterdir()) == []
+
+
+def test_who_looks_for_causes_writes_into_what_the_next_night_clears(
+    folder: Path, store: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    find, asked = night_verdict.find_changes, []
+
+    def finding(*arguments: Any) -> Any:
+        asked.append(arguments[-1].explain.scratch)
+        return find(*arguments)
+
+    monkeypatch.setattr(night_verdict, "find_changes", finding)
+    make(folder, store)
+    assert asked == [(store / "aside").resolve()]
+    left = store / "aside" / "legworth-causes-left"
+    left.mkdir()
+    make(folder, store)
+    assert not left.exists()
 
 
 def test_a_part_without_optimum_stops_the_night_and_the_last_stays_in_force(folder: Path, store: Path) -> None:

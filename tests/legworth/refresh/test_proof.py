@@ -21,7 +21,7 @@ def kept(solution: Solution) -> Proof:
     return Proof(solution.allotted, solution.bid_price, solution.next_seat)
 
 
-@examples(60)
+@examples(30)
 @given(st.one_of(plans(), degenerate_plans()), METHODS)
 def test_every_optimum_is_certified_again(plan, method) -> None:  # type: ignore[no-untyped-def]
     network, options = plan.network(), LpOptions(method)
@@ -31,7 +31,7 @@ def test_every_optimum_is_certified_again(plan, method) -> None:  # type: ignore
     assert certificate.primal == pytest.approx(solution.objective, rel=1e-9, abs=1e-9)
 
 
-@examples(60)
+@examples(30)
 @given(plans(), METHODS)
 def test_the_seats_of_a_product_are_laid_into_its_columns(plan, method) -> None:  # type: ignore[no-untyped-def]
     network = plan.network()

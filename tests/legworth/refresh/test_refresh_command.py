@@ -23,7 +23,7 @@ from tests.legworth.refresh.nights import contents, in_force, limits, make
 
 ROOT = Path(__file__).parents[3]
 DEMO = ROOT / "demo_network"
-KILLS = int(os.environ.get("LEGWORTH_KILLS", "2"))
+KILLS = int(os.environ.get("LEGWORTH_KILLS", "1"))
 
 
 def started(*arguments: str | Path) -> subprocess.Popen[bytes]:
@@ -46,6 +46,7 @@ def test_the_demo_is_refreshed_beside_itself_and_quietly(tmp_path: Path) -> None
     assert (outcome.code, outcome.err) == (0, "")
     assert found is not None
     assert f"night {found.name} is in force" in outcome.out
+    assert f"what moved: {found.folder / 'changes.html'}\n" in outcome.out  # whole, whatever the width
     assert "12, 12 solved and 0 taken over, all certified" in outcome.out
     assert sum(part.products for part in found.manifest.parts) == 16_116
     assert (found.folder / "changes.html").read_text(encoding="utf-8").lower().startswith("<!doctype html>")
@@ -74,6 +75,7 @@ def test_a_stopped_night_has_an_exit_code_of_its_own_and_names_the_leg(folder: P
     assert (stopped.code, stopped.out) == (4, "")
     assert "the last one stays in force" in stopped.err
     assert "look first at L5: bid price" in stopped.err
+    assert str(store / "stopped" / "00002-2030-02-25.json") in stopped.err
     forced = run("refresh", folder, "--store", store, "--force", "sold out fast")
     assert forced.code == 0
     assert "sold out fast" in forced.out

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import time
 from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
@@ -15,7 +16,7 @@ from legworth.refresh.running import Failure, run_parts
 from network import NotCertifiedError, SolverStoppedError, read_folder
 from network.errors import LegworthError
 from tests.folders import Folder
-from tests.legworth.refresh.nights import PRICING, DiesOnce, Fails, Hangs, InPlace
+from tests.legworth.refresh.nights import PRICING, DiesOnce, Fails, Hangs, InPlace, LosesItsWorker
 
 ALL = ["2030-03-01", "2030-03-02", "2030-03-03"]
 MIDDLE = ALL[1]
@@ -77,6 +78,18 @@ def test_a_process_that_dies_is_replaced_and_its_part_run_again(parts: list[Part
     plain, _ = run(parts, InPlace(), Fails("none"))
     assert failures == [Failure(MIDDLE, "its process died", True, "cbc")]
     assert {name: output.written for name, output in found.items()} == {n: o.written for n, o in plain.items()}
+
+
+def test_a_solver_whose_process_was_killed_is_ended_too(parts: list[PartInput], tmp_path: Path) -> None:
+    note = tmp_path / "solver"
+    found, failures = run(parts, Processes(1), LosesItsWorker(note))
+    assert sorted(found) == ALL
+    assert [failure.problem for failure in failures] == ["its process died"]
+    stat = Path(f"/proc/{note.read_text()}/stat")
+    ended = time.monotonic() + 30
+    while stat.exists() and stat.read_text().rpartition(")")[2].split()[0] != "Z" and time.monotonic() < ended:
+        time.sleep(0.02)
+    assert time.monotonic() < ended
 
 
 def test_a_part_that_kills_every_process_stops_the_night_by_name(parts: list[PartInput], tmp_path: Path) -> None:

@@ -1,6 +1,6 @@
 """Whatever cuts a publication off, and wherever: a whole night is in force, and the next one gets in.
 
-``LEGWORTH_STORE_KILLS`` sets how many publishing processes are killed at random moments (30 if it is not set).
+``LEGWORTH_STORE_KILLS`` sets how many publishing processes are killed at random moments (12 if it is not set).
 """
 
 from __future__ import annotations
@@ -21,7 +21,7 @@ from legworth.store.hand_over import HandOverOptions, hand_over
 from legworth.store.hand_over_reading import read_hand_over
 from tests.legworth.store.small_nights import CHILDREN, FIRST, Operations, killed, price_of, publish, run_child
 
-KILLS = int(os.environ.get("LEGWORTH_STORE_KILLS", "30"))
+KILLS = int(os.environ.get("LEGWORTH_STORE_KILLS", "12"))
 REFUSED, PUBLISHED, NOT_REACHED = 3, 4, 5
 
 

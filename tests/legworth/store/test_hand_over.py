@@ -203,14 +203,18 @@ def test_a_damaged_night_is_not_handed_over(tmp_path: Path) -> None:
     night = publish(store, 1.0)
     path = night.folder / f"part={PARTS[1]}" / "bid_prices.parquet"
     hand_over(night, tmp_path / "prices", INSTANT)
-    path.write_bytes(prices(PARTS[1], 1.0)[:-9])
-    with pytest.raises(NightDamagedError, match="cannot be read"):
-        hand_over(night, tmp_path / "prices", INSTANT)
-    path.write_bytes(parquet(pa.table({"leg": ["x"]})))
-    with pytest.raises(NightDamagedError, match="cannot be read"):
-        hand_over(night, tmp_path / "prices", INSTANT)
+    other = parquet(pa.table({"leg": ["x"]}))
+    changed = "has been changed since it was published"
+    for data, why in (
+        (prices(PARTS[1], 1.0)[:-9], "cannot be read"),
+        (prices(PARTS[1], 1.01), changed),
+        (other, changed),
+    ):
+        path.write_bytes(data)
+        with pytest.raises(NightDamagedError, match=why):
+            hand_over(night, tmp_path / "prices", INSTANT)
     path.unlink()
-    with pytest.raises(NightDamagedError):
+    with pytest.raises(NightDamagedError, match="has lost"):
         hand_over(night, tmp_path / "prices", INSTANT)
     assert read_hand_over(tmp_path / "prices").rows == {"bid_prices": 6}, "the earlier hand-over is still there"
 

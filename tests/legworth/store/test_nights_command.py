@@ -5,6 +5,7 @@ from __future__ import annotations
 import csv
 import io
 import json
+from datetime import UTC, datetime
 from pathlib import Path
 
 import pytest
@@ -46,6 +47,33 @@ def test_list_shows_every_night_and_which_is_in_force(store: Store) -> None:
     assert json.loads(nights(store, "list", "--json").out)["in_force"] is None
 
 
+def test_list_says_which_nights_a_check_stopped_and_where_to_look(store: Store) -> None:
+    assert "Stopped" not in nights(store, "list").out
+    for day in (5, 6):
+        with store.begin(datetime(2030, 3, day, tzinfo=UTC)) as aside:
+            path = aside.stop({"reasons": ["odd prices"]})
+    assert f"00004-2030-03-06 and 1 before it; what to look at first: {path}" in nights(store, "list").out
+    document = json.loads(nights(store, "list", "--json").out)
+    assert document["stopped"] == [str(path.with_name("00003-2030-03-05.json")), str(path)]
+
+
+def test_show_has_checks_in_words_and_says_which_were_not_made(store: Store) -> None:
+    checks = (
+        Check(name="no_demand", limit=0.3, found=0.125, passed=True),
+        Check(name="missing", limit=None, found=None, passed=True),
+        Check(name="snapshot", limit=0.0, found=24.0, passed=False, look_at=("as_of is old",)),
+    )
+    publish(store, 1.0, day=5, checks=checks)
+    lines = nights(store, "show").out.splitlines()
+    for title, *cells in (
+        ("legs without demand to come", "12.5 %", "30 %", "held"),
+        ("departures of last night missing tonight", "not compared"),
+        ("snapshot older than last night's", "24 h", "0 h", "FAILED", "as_of is old"),
+    ):
+        line = next(line for line in lines if title in line)
+        assert [cell for cell in cells if cell in line] == cells
+
+
 def test_show_tells_what_a_night_holds_and_what_became_of_it(store: Store) -> None:
     publish(
         store,
@@ -60,7 +88,7 @@ def test_show_tells_what_a_night_holds_and_what_became_of_it(store: Store) -> No
         "Night 00003-2030-03-02, in force",
         "6 legs",
         "bid prices moved",
-        "L1, L2",
+        "L1; L2",
         "force by night desk: new",
     ):
         assert text in found.out

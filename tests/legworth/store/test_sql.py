@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from datetime import datetime, timedelta, timezone
 from pathlib import Path
 
 import pyarrow as pa
@@ -199,3 +200,21 @@ def test_folders_with_quotes_in_their_names(tmp_path: Path) -> None:
     store = Store.open(tmp_path / 'it\'s "here" [1]*', create=True)
     publish(store, 1.0)
     assert query(store, "SELECT count(*) AS n FROM tonight_bid_prices").to_pydict() == {"n": [6]}
+
+
+def test_instants_and_certificates_are_those_of_the_manifest(store: Store) -> None:
+    as_of = datetime(2030, 3, 1, 2, 30, tzinfo=timezone(timedelta(hours=-2)))
+    proofs = [{"bid_prices": {"holds": True}, "mean_demand": {"holds": holds}} for holds in (True, False)]
+    with store.begin(as_of) as aside:
+        fill(aside, 1.0)
+        whole = manifest_of(aside, as_of)
+        certificates = dict(zip(whole.part, proofs, strict=True))
+        parts = tuple(part.model_copy(update={"certificate": certificates[part.name]}) for part in whole.parts)
+        aside.publish(whole.model_copy(update={"parts": parts}))
+    (row,) = query(store, "SELECT as_of, published FROM nights").to_pylist()
+    night = store.in_force()
+    assert night is not None
+    assert (row["as_of"], row["published"]) == (as_of, night.manifest.published)
+    rows = query(store, "SELECT part, certified FROM parts").to_pylist()
+    assert [row["certified"] for row in sorted(rows, key=lambda row: row["part"])] == [True, False]
+    assert not whole.parts[0].certified, "without a certificate nothing is certified"
