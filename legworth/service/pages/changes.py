@@ -38,12 +38,11 @@ async def changes(request: Request) -> Response:
     found = await asyncio.to_thread(read_changes, night)
     checks = [(check.passed, check_line(check)) for check in night.manifest.checks]
     manifest = night.manifest
-    certified = [part.certificate.get("bid_prices", part.certificate).get("holds") for part in manifest.parts]
     return await planner.page(
         "changes.html",
         manifest=manifest,
         checks=sorted(checks),
-        certified=sum(holds is True for holds in certified),
+        certified=sum(part.certified for part in manifest.parts),
         taken_over=sum(part.taken_over_from is not None for part in manifest.parts),
         last=found.get("last"),
         note=found.get("note") or "",
