@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from functools import cache
 
 import numpy as np
-from jinja2 import Environment, PackageLoader, StrictUndefined, Template
+from jinja2 import Template
 
 from legworth.estimation.adjustments import Adjustment
 from legworth.estimation.pictures import (
@@ -20,6 +20,7 @@ from legworth.estimation.pictures import (
 from legworth.estimation.recipe import Estimated
 from legworth.estimation.report import moved_by_bookings, percent
 from legworth.estimation.scores import Score, Weakness
+from legworth.page_templates import page_templates
 from legworth.report import CAUTION, route
 
 __all__ = ["Sheet", "estimate_page"]
@@ -90,13 +91,7 @@ def estimate_page(found: Estimated) -> str:
 
 @cache
 def _template() -> Template:
-    environment = Environment(
-        loader=PackageLoader("legworth", "templates"),
-        autoescape=True,
-        undefined=StrictUndefined,
-        trim_blocks=True,
-        lstrip_blocks=True,
-    )
+    environment = page_templates("legworth")
     environment.filters.update(percent=percent, count=lambda value: f"{value:,}", passengers=_passengers)
     return environment.get_template("estimate.html")
 

@@ -4,8 +4,9 @@ from __future__ import annotations
 
 from functools import cache
 
-from jinja2 import Environment, PackageLoader, StrictUndefined, Template
+from jinja2 import Template
 
+from legworth.page_templates import page_templates
 from legworth.refresh.changes import Changes
 from legworth.refresh.changes_causes import How
 from legworth.refresh.changes_lines import first_lines
@@ -59,13 +60,7 @@ def changes_page(changes: Changes) -> str:
 
 @cache
 def _template() -> Template:
-    environment = Environment(
-        loader=PackageLoader("legworth", "templates"),
-        autoescape=True,
-        undefined=StrictUndefined,
-        trim_blocks=True,
-        lstrip_blocks=True,
-    )
+    environment = page_templates("legworth")
     environment.filters.update(money=money, price=price_text, signed=signed)
     environment.globals.update(count_of=count_of)
     return environment.get_template("changes.html")
