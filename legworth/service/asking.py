@@ -6,18 +6,14 @@ from collections.abc import Sequence
 from itertools import pairwise
 from typing import Any
 
-import numpy as np
-import pandas as pd
-
-from legworth.decisions import Reason, decide, decisions_table
-from legworth.request_table import located
+from legworth.decisions import Reason
 from legworth.service.errors import UnknownError
-from legworth.service.messages import Ask, AskMany
+from legworth.service.messages import Ask
 from legworth.service.served_night import ServedNight
 from legworth.service.served_part import Question, ServedPart
 from network import SettingError
 
-__all__ = ["answer_many", "ask", "find"]
+__all__ = ["ask", "at_any_price", "find"]
 
 
 async def find(night: ServedNight, asked: Ask, now: float) -> tuple[ServedPart, Question, bool]:
@@ -81,61 +77,12 @@ async def ask(night: ServedNight, asked: Ask, left: dict[str, int], now: float) 
     return part.answer(question, left, known) | {"night": night.name}
 
 
-async def answer_many(night: ServedNight, asked: AskMany, left: dict[str, int], now: float) -> dict[str, Any]:
-    """Answer many questions, each by itself, part by part; an unknown itinerary is refused, not an error."""
-    count = len(asked.itinerary)
-    moment = np.full(count, now)
-    frame = pd.DataFrame(
-        {
-            "request": np.arange(count),
-            "itinerary": pd.Series(asked.itinerary, dtype="category"),
-            "fare_class": pd.Series(asked.fare_class or [None] * count, dtype="category"),
-        }
-    )
-    fare = np.array([np.nan if each is None else each for each in asked.fare or [None] * count], dtype=np.float64)
-    seats = np.array(asked.seats or [1] * count, dtype=np.int64)
-    known = {name: night.itineraries.part_of(name) for name in set(asked.itinerary)}
-    where = pd.Series([known[name] or "" for name in asked.itinerary], dtype="category")
-    answers: dict[str, list[Any]] = {name: [None] * count for name in ("fare", "displacement", "binding_leg")}
-    answers |= {"accepted": [False] * count, "reason": [Reason.UNKNOWN_ITINERARY.name.lower()] * count}
-    answers["sentence"] = ["Refused: the itinerary is not known."] * count
-    for name in where.cat.categories:
-        if name == "":
-            continue
-        rows = np.flatnonzero(where == name)
-        part = night.ready(name) or await night.part(name)
-        some = frame.iloc[rows]
-        requests = located(part.network, some["itinerary"], some["fare_class"], fare[rows], seats[rows], moment[rows])
-        found = decide(part.network, part.prices, requests, part.remaining(left))
-        binding = [None if leg < 0 else part.network.legs.name[leg] for leg in found.binding_leg]
-        columns = {
-            "accepted": found.accepted.tolist(),
-            "reason": [WORDS[reason] for reason in found.reason],
-            "fare": _numbers(found.fare),
-            "displacement": _numbers(found.displacement),
-            "binding_leg": binding,
-        }
-        if asked.sentences:
-            columns["sentence"] = decisions_table(part.network, some, requests, found)["sentence"].tolist()
-        for column, values in columns.items():
-            whole = answers[column]
-            for row, value in zip(rows.tolist(), values, strict=True):
-                whole[row] = value
-    if not asked.sentences:
-        answers["sentence"] = None  # type: ignore[assignment]
-    return {**answers, "night": night.name}
-
-
-WORDS = {int(reason): reason.name.lower() for reason in Reason}
-
-
-def _numbers(values: np.ndarray) -> list[float | None]:
-    return [None if np.isnan(value) else value for value in values.tolist()]
+PRICE_REFUSES = {Reason.FARE_BELOW_PRICE.name.lower(), Reason.NO_PRICE.name.lower()}
 
 
 def at_any_price(answer: dict[str, Any]) -> dict[str, Any]:
-    """Accept an answer that only its price refuses."""
-    if answer["reason"] != Reason.FARE_BELOW_PRICE.name.lower():
+    """Accept an answer that only its price refuses, and note that it was so."""
+    if answer["reason"] not in PRICE_REFUSES:
         return answer
     sentence = answer["sentence"].replace("Refused: ", "Sold at any price: ", 1)
-    return {**answer, "accepted": True, "sentence": sentence}
+    return {**answer, "accepted": True, "at_any_price": True, "sentence": sentence}

@@ -2,17 +2,38 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 from network.errors import LegworthError
 
 __all__ = [
+    "ForbiddenError",
     "KeyReusedError",
     "LedgerError",
+    "MalformedError",
     "NoNightError",
     "RefusedError",
+    "TokensDamagedError",
     "UnknownError",
     "UnknownLegError",
     "UnknownSaleError",
 ]
+
+
+class MalformedError(LegworthError):
+    """A request does not fit its description.
+
+    Parameters
+    ----------
+    faults
+        One line each.
+    """
+
+    http_status = 422
+
+    def __init__(self, faults: Sequence[str]) -> None:
+        self.faults = list(faults)
+        super().__init__("the request does not fit its description; correct the faults listed")
 
 
 class KeyReusedError(LegworthError):
@@ -28,8 +49,15 @@ class LedgerError(LegworthError):
 
 
 class NoNightError(LegworthError):
-    """The store has no night in force."""
+    """The store has no night in force, or the part asked for cannot be read."""
 
+    http_status = 503
+
+
+class TokensDamagedError(LegworthError):
+    """The file of tokens cannot be read, so that nobody can be let in."""
+
+    exit_code = 2
     http_status = 503
 
 

@@ -6,11 +6,12 @@ from typing import Annotated, Any
 
 import orjson
 from fastapi import APIRouter, Depends, Header, Path, Request
-from fastapi.security import HTTPAuthorizationCredentials, HTTPBearer
 from starlette.responses import Response
 
-from legworth.service.asking import answer_many, ask, at_any_price, find
-from legworth.service.errors import ForbiddenError, RefusedError, UnknownError
+from legworth.service.asking import ask, at_any_price, find
+from legworth.service.asking_many import answer_many
+from legworth.service.bodies import described_body, read_body
+from legworth.service.errors import ForbiddenError, MalformedError, RefusedError, UnknownError
 from legworth.service.looking import health_of, itinerary_view, leg_view, night_view
 from legworth.service.messages import (
     Answer,
@@ -29,32 +30,36 @@ from legworth.service.messages import (
     Snapshot,
 )
 from legworth.service.orders import Cancellation, Overwriting, Sale, SeatCount
-from legworth.service.problems import PROBLEM_TYPE, Problem
+from legworth.service.problems import described_problems
+from legworth.service.served_part import Question, ServedPart
 from legworth.service.state import ServiceState
-from legworth.service.tokens import Token
-from network import SettingError
+from network.errors import LegworthError
 
-__all__ = ["interface"]
+__all__ = ["BODIES", "OPEN", "Permit", "interface", "permit", "state_of"]
 
-bearer = HTTPBearer(auto_error=False, description="A token made with `legworth tokens make`.")
+BODIES = (Ask, AskMany, Sell, Cancel, Snapshot)
+"""Messages that are read by `legworth.service.bodies.read_body`."""
+BEARER = "bearer"
+OPEN: dict[str, Any] = {"security": [{}, {BEARER: []}]}
+CLOSED: dict[str, Any] = {"security": [{BEARER: []}]}
+
+KEY = r"^[\x21-\x7e]+$"
 Key = Annotated[
     str,
     Header(
         alias="Idempotency-Key",
         min_length=1,
         max_length=200,
-        pattern=r"^[\x21-\x7e]+$",
+        pattern=KEY,
         description="The caller's own key of this order: sent again, it is carried out once and gives the same answer.",
     ),
 ]
+SaleKey = Annotated[
+    str, Path(min_length=1, max_length=200, pattern=KEY, description="Key under which the seats were sold.")
+]
+Name = Annotated[str, Path(min_length=1, max_length=200)]
 
-
-def _problems(*statuses: int) -> dict[int | str, dict[str, Any]]:
-    content = {PROBLEM_TYPE: {"schema": {"$ref": "#/components/schemas/Problem"}}}
-    return {status: {"model": Problem, "content": content} for status in statuses}
-
-
-interface = APIRouter(responses=_problems(400, 401, 403, 413, 422, 429, 503))
+interface = APIRouter(prefix="/v1", responses=described_problems(400, 401, 403, 429, 503))
 
 
 def state_of(request: Request) -> ServiceState:
@@ -64,35 +69,42 @@ def state_of(request: Request) -> ServiceState:
 
 
 State = Annotated[ServiceState, Depends(state_of)]
-Credentials = Annotated[HTTPAuthorizationCredentials | None, Depends(bearer)]
+
+
+def permit(request: Request, permission: str) -> str:
+    """Let a request pass if its token permits what it asks for; gives the name of the token's holder.
+
+    Raises
+    ------
+    RefusedError
+        If a token is needed and missing or unknown.
+    ForbiddenError
+        If the token does not permit it.
+    """
+    state = state_of(request)
+    sent = request.headers.get("authorization")
+    if sent is None:
+        if permission == "ask" and not state.settings.read_needs_token:
+            return ""
+        raise RefusedError("a bearer token is needed; send it as Authorization: Bearer TOKEN")
+    scheme, _, token = sent.partition(" ")
+    holder = state.tokens.holder_of(token.strip()) if scheme.lower() == BEARER else None
+    if holder is None:
+        raise RefusedError("the token is not known; make one with legworth tokens make")
+    if permission not in holder.permissions:
+        raise ForbiddenError(f"the token of {holder.holder!r} does not permit to {permission}")
+    return holder.holder
 
 
 class Permit:
-    """Lets a request pass if its token permits what it asks for; gives the name of the token's holder."""
+    """`permit` as a dependency."""
 
     def __init__(self, permission: str) -> None:
         self.permission = permission
 
-    async def __call__(self, state: State, credentials: Credentials) -> str:
-        """Name of the holder.
-
-        Raises
-        ------
-        RefusedError
-            If a token is needed and missing or unknown.
-        ForbiddenError
-            If the token does not permit it.
-        """
-        if credentials is None:
-            if self.permission == "ask" and not state.settings.read_needs_token:
-                return ""
-            raise RefusedError("a bearer token is needed; send it as Authorization: Bearer TOKEN")
-        token: Token | None = state.tokens.holder_of(credentials.credentials)
-        if token is None:
-            raise RefusedError("the token is not known; make one with legworth tokens make")
-        if self.permission not in token.permissions:
-            raise ForbiddenError(f"the token of {token.holder!r} does not permit to {self.permission}")
-        return token.holder
+    async def __call__(self, request: Request) -> str:
+        """Name of the holder."""
+        return permit(request, self.permission)
 
 
 asks, sells, counts = (Depends(Permit(permission)) for permission in ("ask", "sell", "count"))
@@ -104,95 +116,145 @@ def _json(body: Any) -> Response:
 
 @interface.get("/health", tags=["look"])
 async def health(state: State) -> Health:
-    """Whether the service can answer, and by which night."""
+    """Whether the service can answer, and by which night; never needs a token."""
     return health_of(state)
 
 
-@interface.post("/decisions", response_model=Answer, responses=_problems(404), tags=["ask"], dependencies=[asks])
-async def decision(asked: Ask, state: State) -> Response:
+# Questions take the request alone and read it by hand: they come by the thousand a second.
+@interface.post(
+    "/decisions",
+    response_model=Answer,
+    responses=described_problems(404, 413, 415, 422),
+    tags=["ask"],
+    openapi_extra=OPEN | described_body(Ask),
+)
+async def decision(request: Request) -> Response:
     """Accept or refuse one request by the night in force and the seats left now; nothing is sold."""
+    permit(request, "ask")
+    state = state_of(request)
+    asked = await read_body(request, Ask)
     return _json(await ask(state.night(), asked, state.seats.left, state.now()))
 
 
-@interface.post("/decisions/batch", response_model=Answers, tags=["ask"], dependencies=[asks])
-async def decisions(asked: AskMany, state: State) -> Response:
+@interface.post(
+    "/decisions/batch",
+    response_model=Answers,
+    responses=described_problems(413, 415, 422),
+    tags=["ask"],
+    openapi_extra=OPEN | described_body(AskMany),
+)
+async def decisions(request: Request) -> Response:
     """Accept or refuse many requests, each by itself; nothing is sold."""
-    if len(asked.itinerary) > state.settings.batch_limit:
-        raise SettingError(
-            f"{len(asked.itinerary):,} requests are more than {state.settings.batch_limit:,}; split them"
-        )
+    permit(request, "ask")
+    state = state_of(request)
+    asked = await read_body(request, AskMany)
+    count, limit = len(asked.itinerary), state.settings.batch_limit
+    if count > limit:
+        raise MalformedError([f"body.itinerary: {count:,} requests are more than {limit:,}; split them"])
     return _json(await answer_many(state.night(), asked, state.seats.left, state.now()))
 
 
-@interface.post("/sales", response_model=Recorded, responses=_problems(404, 409), tags=["sell"], dependencies=[sells])
-async def sell(asked: Sell, key: Key, state: State) -> Response:
+@interface.post(
+    "/sales",
+    response_model=Recorded,
+    responses=described_problems(404, 409, 413, 415, 422),
+    tags=["sell"],
+    openapi_extra=CLOSED | described_body(Sell),
+)
+async def sell(request: Request, who: Annotated[str, sells], key: Key, state: State) -> Response:
     """Sell seats on all legs or none, if the request is accepted; the answer is on the disk before it is sent."""
-    night = state.night()
-    part, question, known = await find(night, asked, state.now())
-
-    def judge(left: Any) -> dict[str, Any]:
-        answer = part.answer(question, left, known) | {"night": night.name, "at_any_price": asked.at_any_price}
-        return at_any_price(answer) if asked.at_any_price else answer
-
-    order = Sale(key, question.names, question.seats, asked.model_dump(mode="json"), judge)
+    asked = await read_body(request, Sell)
+    wanted = asked.model_dump(mode="json", exclude_defaults=True)
+    try:
+        night = state.night()
+        part, question, known = await find(night, asked, state.now())
+    except LegworthError as error:
+        # A key that has its answer gets it again, whatever has become of the night since.
+        order = Sale(key, (), asked.seats, wanted, _never, who, hindrance=error)
+    else:
+        judge = _Judge(state, part, question, known, night.name, asked.at_any_price)
+        order = Sale(key, question.names, question.seats, wanted, judge, who)
     outcome = await state.carry_out(order)
     return _json(outcome.answer | {"key": key, "repeated": outcome.repeated})
 
 
-SaleKey = Annotated[str, Path(min_length=1, max_length=200, description="Key under which the seats were sold.")]
+class _Judge:
+    """Judges a sale when its turn has come: by the seats and the hour of then."""
+
+    def __init__(
+        self, state: ServiceState, part: ServedPart, question: Question, known: bool, night: str, any_price: bool
+    ) -> None:
+        self.state, self.part, self.question, self.known = state, part, question, known
+        self.night, self.any_price = night, any_price
+
+    def __call__(self, left: Any) -> dict[str, Any]:
+        question = self.question.at(self.state.now())
+        answer = self.part.answer(question, left, self.known) | {"night": self.night, "at_any_price": False}
+        return at_any_price(answer) if self.any_price else answer
+
+
+def _never(left: Any) -> dict[str, Any]:
+    raise AssertionError("an order that cannot be judged was judged")
 
 
 @interface.post(
-    "/sales/{sale}/cancellations",
+    "/sales/{sale:path}/cancellations",
     response_model=CancelAnswer,
-    responses=_problems(404, 409),
+    responses=described_problems(404, 409, 413, 415, 422),
     tags=["sell"],
-    dependencies=[sells],
+    openapi_extra=CLOSED | described_body(Cancel),
 )
-async def cancel(sale: SaleKey, asked: Cancel, key: Key, state: State) -> Response:
+async def cancel(request: Request, sale: SaleKey, who: Annotated[str, sells], key: Key, state: State) -> Response:
     """Give seats of a sale back, on all its legs."""
-    outcome = await state.carry_out(Cancellation(key, sale, asked.seats))
+    asked = await read_body(request, Cancel)
+    outcome = await state.carry_out(Cancellation(key, sale, asked.seats, who))
     return _json(outcome.answer | {"key": key, "repeated": outcome.repeated})
 
 
-@interface.put("/seat-counts", tags=["sell"])
-async def overwrite(asked: Snapshot, state: State, who: Annotated[str, counts]) -> Counted:
+@interface.put(
+    "/seat-counts",
+    responses=described_problems(413, 415, 422),
+    tags=["sell"],
+    openapi_extra=CLOSED | described_body(Snapshot),
+)
+async def overwrite(request: Request, who: Annotated[str, counts], state: State) -> Counted:
     """Overwrite counts by those of the carrier's own inventory; every leg that moves gets an audit row."""
+    asked = await read_body(request, Snapshot)
     taken = tuple(SeatCount(count.leg, count.capacity, count.sold) for count in asked.counts)
     moved = await state.overwrite(Overwriting(taken, who, asked.why))
     return Counted(moved=len(moved))
 
 
-Name = Annotated[str, Path(min_length=1, max_length=200)]
+look: dict[str, Any] = {"tags": ["look"], "dependencies": [asks], "openapi_extra": OPEN}
 
 
-@interface.get("/legs/{leg}", responses=_problems(404), tags=["look"], dependencies=[asks])
+@interface.get("/legs/{leg:path}", responses=described_problems(404, 422), **look)
 async def leg(leg: Name, state: State) -> LegView:
     """A leg: seats and price now."""
     night = state.night()
     name = night.legs.part_of(leg)
     if name is None:
         raise UnknownError(f"leg {leg!r} is not on sale; correct its name")
-    return leg_view(await night.part(name), leg, state, state.now())
+    return leg_view(await night.part(name), leg, state, state.now(), night.name)
 
 
-@interface.get("/itineraries/{itinerary}", responses=_problems(404), tags=["look"], dependencies=[asks])
+@interface.get("/itineraries/{itinerary:path}", responses=described_problems(404, 422), **look)
 async def itinerary(itinerary: Name, state: State) -> ItineraryView:
     """An itinerary: what one seat displaces now, and which classes are open."""
     night = state.night()
     name = night.itineraries.part_of(itinerary)
     if name is None:
         raise UnknownError(f"itinerary {itinerary!r} is not on sale; correct its name")
-    return itinerary_view(await night.part(name), itinerary, state, state.now())
+    return itinerary_view(await night.part(name), itinerary, state, state.now(), night.name)
 
 
-@interface.get("/nights", tags=["look"], dependencies=[asks])
+@interface.get("/nights", **look)
 def nights(state: State) -> list[NightView]:
     """All nights of the store, oldest first."""
     return [night_view(night, state) for night in state.store.nights()]
 
 
-@interface.get("/nights/{night}", responses=_problems(404), tags=["look"], dependencies=[asks])
+@interface.get("/nights/{night}", responses=described_problems(404, 422), **look)
 def one_night(night: Name, state: State) -> NightView:
     """One night of the store."""
     for each in state.store.nights():

@@ -11,20 +11,29 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
-from typing import TypeVar
+from typing import Any, TypeVar
 
-from sqlalchemy import Connection, bindparam, func, insert, select, update
-from sqlalchemy.exc import ArgumentError, DBAPIError, IntegrityError, NoSuchModuleError, OperationalError
+from sqlalchemy import Connection, Select, bindparam, func, insert, select, update
+from sqlalchemy.exc import (
+    ArgumentError,
+    DBAPIError,
+    IntegrityError,
+    NoSuchModuleError,
+    ProgrammingError,
+    SQLAlchemyError,
+)
 
 from legworth.service.errors import LedgerError
 from legworth.service.ledger_tables import durable_engine, journal, metadata, overwritings, seat_counts
 from legworth.service.orders import Batch, Cancellation, Order, Outcome, Sale, SeatCount, answer_order, present
 from network import SettingError
 
-__all__ = ["CarriedOut", "Ledger"]
+__all__ = ["CarriedOut", "Ledger", "Progress"]
 
 ATTEMPTS = 5
 """Times that a batch is tried when another writer got in its way."""
+IN_THE_WAY = {"40001", "40P01"}
+"""PostgreSQL's codes of transactions that failed because of another one: no order of events, deadlock."""
 
 T = TypeVar("T")
 
@@ -43,6 +52,14 @@ class CarriedOut:
 
     outcomes: list[Outcome | Exception]
     counts: list[SeatCount]
+
+
+@dataclass(frozen=True)
+class Progress:
+    """How far the journal and the overwritings have come: the numbers of their last rows."""
+
+    journal: int
+    overwritings: int
 
 
 class Ledger:
@@ -69,26 +86,63 @@ class Ledger:
                 f"the database URL cannot be used ({error}); correct it or install its driver"
             ) from error
         try:
-            metadata.create_all(self.engine)
-        except DBAPIError as error:
+            self._make_tables()
+        except SQLAlchemyError as error:
             raise LedgerError(f"the ledger cannot be opened ({_cause(error)}); start the database") from error
+
+    def _make_tables(self) -> None:
+        """Make the tables unless they are there; a service that starts at the same time may be quicker."""
+        try:
+            metadata.create_all(self.engine)
+        except (IntegrityError, ProgrammingError):
+            metadata.create_all(self.engine)
 
     def close(self) -> None:
         """Give the connections back."""
         self.engine.dispose()
 
-    def counts(self) -> dict[str, SeatCount]:
-        """All counts by leg.
+    def counts(self, legs: Iterable[str] | None = None) -> dict[str, SeatCount]:
+        """Counts by leg, of all legs or of some.
 
         Raises
         ------
         LedgerError
             If the database cannot be reached.
         """
+
+        def read(connection: Connection) -> dict[str, SeatCount]:
+            if legs is not None:
+                return _counts_of(connection, sorted(legs), select(seat_counts))
+            return {row.leg: SeatCount(*row) for row in connection.execute(select(seat_counts))}
+
+        return self._reading(read)
+
+    def progress(self) -> Progress:
+        """Tell how far the ledger has come; raises as `counts` does."""
+
+        def read(connection: Connection) -> Progress:
+            last = (connection.scalar(select(func.max(table.c.number))) for table in (journal, overwritings))
+            return Progress(*(number or 0 for number in last))
+
+        return self._reading(read)
+
+    def moved_legs(self, since: Progress) -> set[str]:
+        """Legs whose counts orders and overwritings have moved since some progress; raises as `counts` does."""
+
+        def read(connection: Connection) -> set[str]:
+            orders = select(journal.c.legs).where(journal.c.number > since.journal, journal.c.accepted)
+            legs = {leg for path in connection.scalars(orders) for leg in path.split()}
+            counted = select(overwritings.c.leg).where(overwritings.c.number > since.overwritings)
+            return legs | set(connection.scalars(counted))
+
+        return self._reading(read)
+
+    def _reading(self, work: Callable[[Connection], T]) -> T:
+        """Read something, all of it from one moment on SQLite."""
         try:
             with self.engine.connect().execution_options(reading=True) as connection:
-                return {row.leg: SeatCount(*row) for row in connection.execute(select(seat_counts))}
-        except DBAPIError as error:
+                return work(connection)
+        except SQLAlchemyError as error:
             raise LedgerError(f"the ledger cannot be read ({_cause(error)}); ask again") from error
 
     def add_legs(self, legs: Iterable[SeatCount]) -> int:
@@ -187,9 +241,8 @@ class Ledger:
             try:
                 with self.engine.begin() as connection:
                     return work(connection)
-            except DBAPIError as error:
-                passing = isinstance(error, IntegrityError | OperationalError) and attempt < ATTEMPTS
-                if not passing:
+            except SQLAlchemyError as error:
+                if attempt == ATTEMPTS or not _in_the_way(error):
                     raise LedgerError(
                         f"the ledger could not write ({_cause(error)}); send the order again under the same key"
                     ) from error
@@ -198,11 +251,13 @@ class Ledger:
 
 def _locked(connection: Connection, legs: Iterable[str]) -> dict[str, SeatCount]:
     """Lock the counts of some legs, always in the order of their names, and read them."""
+    return _counts_of(connection, sorted(legs), select(seat_counts).order_by(seat_counts.c.leg).with_for_update())
+
+
+def _counts_of(connection: Connection, names: Sequence[str], statement: Select[Any]) -> dict[str, SeatCount]:
     found: dict[str, SeatCount] = {}
-    names = sorted(legs)
     for begin in range(0, len(names), 10_000):
-        wanted = select(seat_counts).where(seat_counts.c.leg.in_(names[begin : begin + 10_000]))
-        for row in connection.execute(wanted.order_by(seat_counts.c.leg).with_for_update()):
+        for row in connection.execute(statement.where(seat_counts.c.leg.in_(names[begin : begin + 10_000]))):
             found[row.leg] = SeatCount(*row)
     return found
 
@@ -218,5 +273,14 @@ def _write_counts(connection: Connection, counts: Sequence[SeatCount]) -> None:
         connection.execute(statement, rows)
 
 
-def _cause(error: DBAPIError) -> str:
-    return str(error.orig).strip().splitlines()[0] if str(error.orig).strip() else type(error.orig).__name__
+def _in_the_way(error: SQLAlchemyError) -> bool:
+    """Whether another writer made a transaction fail, so that it may well succeed now."""
+    if isinstance(error, IntegrityError):
+        return True
+    code = getattr(error.orig, "sqlstate", None) if isinstance(error, DBAPIError) else None
+    return code in IN_THE_WAY or (isinstance(error, DBAPIError) and error.connection_invalidated)
+
+
+def _cause(error: SQLAlchemyError) -> str:
+    cause: BaseException = (error.orig if isinstance(error, DBAPIError) else None) or error
+    return next(iter(str(cause).strip().splitlines()), type(cause).__name__)

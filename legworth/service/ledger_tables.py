@@ -17,8 +17,11 @@ from sqlalchemy import (
     Text,
     create_engine,
     event,
+    make_url,
     text,
 )
+
+from network import SettingError
 
 __all__ = ["durable_engine", "journal", "metadata", "overwritings", "seat_counts"]
 
@@ -42,6 +45,8 @@ journal = Table(
     Column("accepted", Boolean, nullable=False),
     Column("digest", String(64), nullable=False),
     Column("answer", Text, nullable=False),
+    Column("who", String(200), nullable=False),
+    Column("at_any_price", Boolean, nullable=False),
     Column("at", String(40), nullable=False),
 )
 overwritings = Table(
@@ -59,23 +64,52 @@ overwritings = Table(
 )
 
 
+PATIENCE = 5.0
+"""Seconds that a transaction waits for a lock, and a connection for the server, before the order is given back."""
+LONGEST = 60.0
+"""Seconds that a statement may take."""
+
+
 def durable_engine(url: str) -> Engine:
-    """Make an engine whose every transaction is durable.
+    """Make an engine whose every transaction is durable, and waits for nobody without end.
 
     On SQLite a transaction takes the write lock at once, unless the connection has the execution option ``reading``.
+
+    Raises
+    ------
+    SettingError
+        If the URL names neither SQLite nor PostgreSQL, or a database in memory.
     """
-    engine = create_engine(url, pool_pre_ping=True)
-    if engine.dialect.name != "sqlite":
-        return engine
-
-    @event.listens_for(engine, "connect")
-    def prepare(connection: Any, _record: Any) -> None:
-        connection.isolation_level = None
-        for pragma in ("journal_mode=WAL", "synchronous=FULL", "busy_timeout=10000", "foreign_keys=ON"):
-            connection.execute(f"PRAGMA {pragma}")
-
-    @event.listens_for(engine, "begin")
-    def begin(connection: Connection) -> None:
-        connection.execute(text("BEGIN" if connection.get_execution_options().get("reading") else "BEGIN IMMEDIATE"))
-
+    parsed = make_url(url)
+    kind = parsed.get_backend_name()
+    if kind not in {"sqlite", "postgresql"}:
+        raise SettingError(f"the ledger is kept in SQLite or PostgreSQL, not in {kind!r}; correct the database URL")
+    if kind == "sqlite" and parsed.database in {None, "", ":memory:"}:
+        raise SettingError("a ledger in memory would be lost; name a file in the database URL")
+    if kind == "sqlite":
+        engine = create_engine(parsed)
+        event.listen(engine, "connect", _prepare_sqlite)
+        event.listen(engine, "begin", _begin_sqlite)
+    else:
+        engine = create_engine(parsed, pool_pre_ping=True, connect_args={"connect_timeout": max(2, int(PATIENCE))})
+        event.listen(engine, "connect", _prepare_postgresql)
     return engine
+
+
+def _prepare_sqlite(connection: Any, _record: Any) -> None:
+    connection.isolation_level = None
+    wait = f"busy_timeout={PATIENCE * 1000:.0f}"
+    for pragma in (wait, "journal_mode=WAL", "synchronous=FULL", "foreign_keys=ON"):
+        connection.execute(f"PRAGMA {pragma}")
+
+
+def _begin_sqlite(connection: Connection) -> None:
+    connection.execute(text("BEGIN" if connection.get_execution_options().get("reading") else "BEGIN IMMEDIATE"))
+
+
+def _prepare_postgresql(connection: Any, _record: Any) -> None:
+    with connection.cursor() as cursor:
+        cursor.execute("SET synchronous_commit = on")
+        cursor.execute(f"SET lock_timeout = {PATIENCE * 1000:.0f}")
+        cursor.execute(f"SET statement_timeout = {LONGEST * 1000:.0f}")
+    connection.commit()

@@ -15,6 +15,8 @@ __all__ = ["BodyLimit", "RateLimit"]
 
 CLIENTS = 100_000
 """Clients remembered; the longest silent are forgotten first."""
+DIGITS = 15
+"""Of a length; a longer number is beyond every limit, and not worth reading."""
 
 
 class BodyLimit:
@@ -31,6 +33,7 @@ class BodyLimit:
     def __init__(self, app: ASGIApp, limit: int) -> None:
         self.app = app
         self.limit = limit
+        self.detail = f"the body is larger than {limit:,} bytes; send less at once"
 
     async def __call__(self, scope: Scope, receive: Receive, send: Send) -> None:
         """Pass a request on if its body is small enough."""
@@ -38,13 +41,12 @@ class BodyLimit:
             await self.app(scope, receive, send)
             return
         declared = next((value for name, value in scope["headers"] if name == b"content-length"), None)
-        detail = f"the body is larger than {self.limit:,} bytes; send less at once"
         if declared is not None:
             answer = self.app
             if not declared.isdigit():
                 answer = problem(400, "the length of the body is no number; correct Content-Length")
-            elif int(declared) > self.limit:
-                answer = problem(413, detail, headers={"Connection": "close"})
+            elif len(declared) > DIGITS or int(declared) > self.limit:
+                answer = problem(413, self.detail, headers={"Connection": "close"})
             await answer(scope, receive, send)
             return
         seen = 0
@@ -54,7 +56,7 @@ class BodyLimit:
             message = await receive()
             seen += len(message.get("body", b""))
             if seen > self.limit:
-                raise HTTPException(413, detail, {"Connection": "close"})
+                raise HTTPException(413, self.detail, {"Connection": "close"})
             return message
 
         await self.app(scope, counted, send)

@@ -10,7 +10,7 @@ import numpy as np
 from heuristics.arrivals import DAY
 from legworth.service.messages import Health, ItineraryView, LegView, NightView, ProductView
 from legworth.service.served_part import Question, ServedPart
-from legworth.service.state import ServiceState
+from legworth.service.state import TROUBLES, ServiceState
 from legworth.store import Night
 
 __all__ = ["health_of", "itinerary_view", "leg_view", "local_instant", "night_view"]
@@ -25,13 +25,13 @@ def local_instant(instant: np.datetime64, offset: Any) -> datetime:
     return datetime.fromtimestamp(seconds, timezone(timedelta(minutes=int(offset))))
 
 
-def leg_view(part: ServedPart, leg: str, state: ServiceState, now: float) -> LegView:
-    """One leg."""
+def leg_view(part: ServedPart, leg: str, state: ServiceState, now: float, night: str | None = None) -> LegView:
+    """One leg of a night, that in force unless another one is named."""
     network, at = part.network, part.leg_position[leg]
     legs, count = network.legs, state.seats.counts[leg]
     days = (float(legs.departs[at].astype("datetime64[s]").astype(np.int64)) - now) / DAY
     sellable = days > 0 and count.remaining > 0
-    bid_price = float(part.prices.bid_price[at])
+    price = part.prices.one_party_price(at, days, count.remaining, 1) if sellable else None
     return LegView(
         leg=leg,
         origin=network.stations.name[legs.origin[at]],
@@ -41,13 +41,15 @@ def leg_view(part: ServedPart, leg: str, state: ServiceState, now: float) -> Leg
         capacity=count.capacity,
         sold=count.sold,
         remaining=count.remaining,
-        bid_price=bid_price,
-        price_now=part.prices.one_party_price(at, days, count.remaining, 1) if sellable else None,
-        night=state.night().name,
+        bid_price=_figure(part.prices.bid_price[at]),
+        price_now=_figure(price),
+        night=night or state.night().name,
     )
 
 
-def itinerary_view(part: ServedPart, itinerary: str, state: ServiceState, now: float) -> ItineraryView:
+def itinerary_view(
+    part: ServedPart, itinerary: str, state: ServiceState, now: float, night: str | None = None
+) -> ItineraryView:
     """One itinerary, and each of its products for one passenger now."""
     network, at = part.network, part.itinerary_position[itinerary]
     path = part.path(at)
@@ -66,8 +68,12 @@ def itinerary_view(part: ServedPart, itinerary: str, state: ServiceState, now: f
         remaining=min(state.seats.left[name] for name in names),
         displacement=displacement,
         products=products,
-        night=state.night().name,
+        night=night or state.night().name,
     )
+
+
+def _figure(value: float | None) -> float | None:
+    return None if value is None or np.isnan(value) else float(value)
 
 
 def night_view(night: Night, state: ServiceState) -> NightView:
@@ -84,9 +90,21 @@ def night_view(night: Night, state: ServiceState) -> NightView:
 
 
 def health_of(state: ServiceState) -> Health:
-    """Whether the service can answer."""
+    """Whether the service can answer, and what is wrong."""
     served = state.served
     as_of = None if served is None else served.night.manifest.as_of
-    status: Any = "no night" if as_of is None else "old night" if state.now() - as_of.timestamp() > OLD else "ok"
-    name = None if served is None else served.name
-    return Health(status=status, night=name, as_of=as_of, legs=len(state.seats.counts), waiting=state.writer.waiting)
+    status: Any = "ok"
+    if as_of is None:
+        status = "no night"
+    elif state.troubles:
+        status = "in trouble"
+    elif state.now() - as_of.timestamp() > OLD:
+        status = "old night"
+    return Health(
+        status=status,
+        night=None if served is None else served.name,
+        as_of=as_of,
+        legs=len(state.seats.counts),
+        waiting=state.writer.waiting,
+        troubles=[TROUBLES[what] for what in TROUBLES if what in state.troubles],
+    )

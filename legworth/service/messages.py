@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from datetime import datetime
-from typing import Annotated, Literal, Self
+from typing import Annotated, Any, Literal, Self
 
 from pydantic import BaseModel, ConfigDict, Field, model_validator
 
@@ -25,18 +25,37 @@ __all__ = [
     "Snapshot",
 ]
 
-Name = Annotated[str, Field(min_length=1, max_length=200, pattern=r"^\S+$")]
+Name = Annotated[str, Field(min_length=1, max_length=200, pattern=r"^[^\s\x00-\x1f\x7f]+$")]
 ClassName = Annotated[str, Field(min_length=1, max_length=200)]
+Words = Annotated[str, Field(min_length=1, max_length=1_000, pattern=r"^[^\x00-\x1f\x7f]+$")]
 Fare = Annotated[float, Field(ge=0, le=1e9, allow_inf_nan=False)]
 Seats = Annotated[int, Field(ge=1, le=10_000)]
 
 
 class _Message(BaseModel):
-    model_config = ConfigDict(frozen=True, extra="forbid", strict=False)
+    model_config = ConfigDict(frozen=True, extra="forbid", strict=True)
+
+
+ONE_OF_EACH: dict[str, Any] = {
+    "oneOf": [
+        {"required": ["itinerary"], "properties": {"itinerary": {"type": "string"}, "legs": {"type": "null"}}},
+        {
+            "required": ["legs"],
+            "properties": {"legs": {"type": "array", "uniqueItems": True}, "itinerary": {"type": "null"}},
+        },
+    ],
+    "anyOf": [
+        {"required": ["fare"], "properties": {"fare": {"type": "number"}}},
+        {"required": ["fare_class"], "properties": {"fare_class": {"type": "string"}}},
+    ],
+}
+"""What the check of `Ask` says, in JSON Schema."""
 
 
 class Ask(_Message):
     """One request of a customer: an itinerary or a list of legs, a fare class or a fare, and the party's size."""
+
+    model_config = ConfigDict(json_schema_extra=ONE_OF_EACH)
 
     itinerary: Annotated[Name | None, Field(description="Name of the itinerary.")] = None
     legs: Annotated[
@@ -102,7 +121,7 @@ class LegCount(_Message):
 class Snapshot(_Message):
     """Counts of the carrier's own inventory, which replace those of the ledger."""
 
-    why: Annotated[str, Field(min_length=1, max_length=1_000, description="Where the counts come from, for the audit.")]
+    why: Annotated[Words, Field(description="Where the counts come from, for the audit.")]
     counts: Annotated[tuple[LegCount, ...], Field(min_length=1, max_length=100_000)]
 
     @model_validator(mode="after")
@@ -147,7 +166,7 @@ class Recorded(Answer):
 
     key: Annotated[str, Field(description="The caller's key: the same again gives the same answer.")]
     repeated: Annotated[bool, Field(description="Whether the order had been carried out before.")]
-    at_any_price: bool
+    at_any_price: Annotated[bool, Field(description="Whether it was sold although its price refused it.")]
 
 
 class CancelAnswer(BaseModel):
@@ -179,7 +198,9 @@ class LegView(BaseModel):
     capacity: int
     sold: int
     remaining: int
-    bid_price: Annotated[float, Field(description="Value of the last seat at the snapshot, currency.")]
+    bid_price: Annotated[
+        float | None, Field(description="Value of the last seat at the snapshot, currency; none if it has no price.")
+    ]
     price_now: Annotated[float | None, Field(description="Price of one seat now; none if departed or sold out.")]
     night: str
 
@@ -216,10 +237,14 @@ class NightView(BaseModel):
 
 
 class Health(BaseModel):
-    """Whether the service can answer."""
+    """Whether the service can answer, and by which night."""
 
-    status: Literal["ok", "no night", "old night"]
+    status: Annotated[
+        Literal["ok", "old night", "in trouble", "no night"],
+        Field(description="With no night questions are answered with 503; with an old one a refresh was missed."),
+    ]
     night: str | None
     as_of: datetime | None
-    legs: int
+    legs: Annotated[int, Field(description="Legs in the ledger.")]
     waiting: Annotated[int, Field(description="Orders that wait for the ledger.")]
+    troubles: Annotated[list[str], Field(description="What is wrong, one line each; the log says why.")]

@@ -5,11 +5,15 @@ from __future__ import annotations
 from collections.abc import Callable
 from time import perf_counter
 
-from fastapi import APIRouter, Request
+from fastapi import APIRouter, Depends, Request
 from prometheus_client import CollectorRegistry, Counter, Gauge, Histogram
 from prometheus_client.exposition import CONTENT_TYPE_LATEST, generate_latest
 from starlette.responses import Response
 from starlette.types import ASGIApp, Message, Receive, Scope, Send
+
+from legworth.service.interface import OPEN, Permit, state_of
+from legworth.service.problems import described_problems
+from legworth.service.state import TROUBLES
 
 __all__ = ["Metrics", "metrics_router"]
 
@@ -30,6 +34,9 @@ class Metrics:
         self.age = Gauge("legworth_snapshot_age_seconds", "Age of its snapshot.", registry=self.registry)
         self.waiting = Gauge("legworth_orders_waiting", "Orders that wait for the ledger.", registry=self.registry)
         self.sold = Gauge("legworth_seats_sold", "Seats sold on all legs.", registry=self.registry)
+        self.trouble = Gauge(
+            "legworth_trouble", "1 if store or ledger cannot be read.", ("what",), registry=self.registry
+        )
 
     @property
     def middleware(self) -> Callable[[ASGIApp], ASGIApp]:
@@ -63,17 +70,26 @@ class _Counting:
             self.metrics.seconds.labels(route).observe(perf_counter() - begun)
 
 
-metrics_router = APIRouter()
+metrics_router = APIRouter(responses=described_problems(401, 403, 429, 503))
 
 
-@metrics_router.get("/metrics", tags=["look"], response_class=Response)
+@metrics_router.get(
+    "/metrics",
+    tags=["look"],
+    response_class=Response,
+    responses={200: {"description": "Metrics.", "content": {"text/plain": {"schema": {"type": "string"}}}}},
+    dependencies=[Depends(Permit("ask"))],
+    openapi_extra=OPEN,
+)
 async def metrics(request: Request) -> Response:
     """Metrics in the Prometheus text format."""
-    state, found = request.app.state.service, request.app.state.metrics
+    state, found = state_of(request), request.app.state.metrics
     if state.served is not None:
         manifest = state.served.night.manifest
         found.night.set(manifest.number)
         found.age.set(max(0.0, state.now() - manifest.as_of.timestamp()))
     found.waiting.set(state.writer.waiting)
-    found.sold.set(sum(count.sold for count in state.seats.counts.values()))
+    found.sold.set(sum(count.sold for count in list(state.seats.counts.values())))
+    for what in TROUBLES:
+        found.trouble.labels(what).set(what in state.troubles)
     return Response(generate_latest(found.registry), media_type=CONTENT_TYPE_LATEST)

@@ -60,6 +60,11 @@ class Sale:
     judge
         Accepts or refuses in view of the seats left. It must refuse if fewer than ``seats`` are left; the ledger
         refuses to sell them in any case.
+    who
+        Whose token it came with.
+    hindrance
+        Why it can no longer be judged, such as a leg that the night in force does not sell; it is raised unless the
+        key has its answer already.
     """
 
     key: str
@@ -67,6 +72,8 @@ class Sale:
     seats: int
     request: Mapping[str, Any]
     judge: Judge
+    who: str = ""
+    hindrance: Exception | None = None
 
 
 @dataclass(frozen=True)
@@ -76,6 +83,7 @@ class Cancellation:
     key: str
     sale: str
     seats: int | None = None
+    who: str = ""
 
     @property
     def request(self) -> Mapping[str, Any]:
@@ -139,6 +147,8 @@ def answer_order(batch: Batch, order: Order) -> Outcome:
             "accepted": bool(answer["accepted"]),
             "digest": digest,
             "answer": words,
+            "who": order.who,
+            "at_any_price": bool(answer.get("at_any_price", False)),
             "at": present(),
         }
     )
@@ -156,6 +166,8 @@ class _Entry:
 
 
 def _sold(batch: Batch, order: Sale) -> tuple[tuple[str, ...], int, str | None, dict[str, Any]]:
+    if order.hindrance is not None:
+        raise order.hindrance
     unknown = [leg for leg in order.legs if leg not in batch.counts]
     if unknown:
         raise UnknownLegError(f"{unknown[0]!r} is not a leg on sale; correct its name")

@@ -3,18 +3,25 @@
 from __future__ import annotations
 
 import asyncio
+import contextlib
 from collections import OrderedDict
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator, Sequence
 
 import numpy as np
 import numpy.typing as npt
 import pyarrow as pa
+import structlog
 
+from legworth.service.errors import NoNightError
 from legworth.service.orders import SeatCount
 from legworth.service.served_part import ServedPart, read_part
 from legworth.store import Night
 
 __all__ = ["NameIndex", "ServedNight"]
+
+
+READ_TOGETHER = 2
+"""Parts read at the same time: more would only keep answers waiting."""
 
 
 class NameIndex:
@@ -38,6 +45,26 @@ class NameIndex:
 
     def __len__(self) -> int:
         return len(self._keys)
+
+    def parts_of(self, names: Sequence[str]) -> list[tuple[str | None, npt.NDArray[np.int64]]]:
+        """Sort many names by part.
+
+        Returns
+        -------
+        list of (str or None, array)
+            Every part met, None for unknown names, and where its names stand among those given.
+        """
+        wanted = np.array([name.encode() for name in names], dtype=np.bytes_)
+        at = np.minimum(np.searchsorted(self._keys, wanted), max(len(self._keys) - 1, 0))
+        if not len(self._keys):
+            return [(None, np.arange(len(names)))]
+        code = np.where(self._keys[at] == wanted, self._parts[at], -1)
+        if len(code) and (code == code[0]).all():
+            return [(None if code[0] < 0 else self._names[code[0]], np.arange(len(code)))]
+        order = np.argsort(code, kind="stable")
+        met, begin = np.unique(code[order], return_index=True)
+        rows = np.split(order, begin[1:])
+        return [(None if each < 0 else self._names[each], some) for each, some in zip(met, rows, strict=True)]
 
     def part_of(self, name: str) -> str | None:
         """Part of a name, None if it is unknown."""
@@ -63,7 +90,8 @@ class ServedNight:
         self.name = night.name
         self._kept = kept
         self._parts: OrderedDict[str, ServedPart] = OrderedDict()
-        self._reading: dict[str, asyncio.Future[ServedPart]] = {}
+        self._reading: dict[str, asyncio.Task[ServedPart]] = {}
+        self._few = asyncio.Semaphore(READ_TOGETHER)
         legs = night.table("legs", ["leg", "capacity", "sold"])
         itineraries = night.table("itineraries", ["itinerary"])
         self.legs = NameIndex(legs["leg"], legs["part"])
@@ -83,18 +111,49 @@ class ServedNight:
         return part
 
     async def part(self, name: str) -> ServedPart:
-        """A part, read from the store if it is not in memory; callers who want the same share one reading."""
+        """A part, read from the store if it is not in memory; callers who want the same share one reading.
+
+        Raises
+        ------
+        NoNightError
+            If it cannot be read.
+        """
         part = self.ready(name)
         if part is not None:
             return part
         reading = self._reading.get(name)
         if reading is None:
-            folder = self.night.folder / f"part={name}"
-            reading = asyncio.ensure_future(asyncio.to_thread(read_part, folder, name))
+            reading = asyncio.create_task(self._read(name))
             self._reading[name] = reading
-            reading.add_done_callback(lambda _: self._reading.pop(name, None))
-        part = await asyncio.shield(reading)
+            reading.add_done_callback(lambda done: self._have_read(name, done))
+        return await asyncio.shield(reading)
+
+    async def warm(self, names: Iterable[str]) -> None:
+        """Read some parts that are not in memory, as many as are kept; one that cannot be read is left out."""
+        for name in list(names)[: self._kept]:
+            if name not in self._parts:
+                with contextlib.suppress(NoNightError):
+                    await self.part(name)
+
+    def in_memory(self) -> list[str]:
+        """Names of the parts in memory."""
+        return list(self._parts)
+
+    async def _read(self, name: str) -> ServedPart:
+        async with self._few:
+            try:
+                part = await asyncio.to_thread(read_part, self.night.folder / f"part={name}", name)
+            except Exception as error:
+                structlog.get_logger().error("part cannot be read", night=self.name, part=name, error=str(error)[:500])
+                raise NoNightError(
+                    f"part {name} of night {self.name} cannot be read; put a sound night in force"
+                ) from error
         self._parts[name] = part
         while len(self._parts) > self._kept:
             self._parts.popitem(last=False)
         return part
+
+    def _have_read(self, name: str, done: asyncio.Task[ServedPart]) -> None:
+        self._reading.pop(name, None)
+        if not done.cancelled():
+            done.exception()  # told to those who wait, if any still do

@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
 from functools import cached_property
+from itertools import repeat
 from math import isnan
 from pathlib import Path
 from typing import Any
@@ -13,10 +14,10 @@ import numpy as np
 
 from heuristics.arrivals import DAY
 from legworth.control import EQUAL
-from legworth.decisions import SENTENCES, Reason
+from legworth.decisions import SENTENCES, Reason, Requests
 from legworth.price_table import PriceTable, read_prices
 from network import Network, read_folder
-from network.arrays import IntArray
+from network.arrays import FloatArray, IntArray, NameArray
 
 __all__ = ["Question", "ServedPart", "read_part"]
 
@@ -48,6 +49,10 @@ class Question:
     fare: float | None
     seats: int
     moment: float
+
+    def at(self, moment: float) -> Question:
+        """Return the same question, asked at another moment."""
+        return replace(self, moment=moment)
 
 
 @dataclass(frozen=True, eq=False)
@@ -90,6 +95,50 @@ class ServedPart:
     def _departs(self) -> list[float]:
         return [float(second) for second in self.network.legs.departs.astype("datetime64[s]").astype(np.int64)]
 
+    @cached_property
+    def leg_names(self) -> NameArray:
+        """(L + 1,) names of the legs, and None at the end, where position -1 finds it."""
+        return np.array([*self.network.legs.name, None], dtype=object)
+
+    @cached_property
+    def _product_key(self) -> IntArray:
+        """(P,) rising key of all products: itinerary, then class."""
+        network = self.network
+        return network.product_itinerary.astype(np.int64) * len(network.fare_classes) + network.product_class
+
+    def prepare(self) -> None:
+        """Make all that answers look up, while nobody waits for it."""
+        for _ in (self.leg_position, self.itinerary_position, self.class_position, self.itinerary_of_path):
+            pass
+        for _ in (self.leg_names, self._departs, self._product_key):
+            pass
+        if self.network.n_legs:
+            self.prices.party_price(*(np.zeros(1, dtype=np.int64), np.zeros(1)), *2 * [np.ones(1, dtype=np.int64)])
+            self.prices.one_party_price(0, 0.0, 1, 2)
+
+    def located(
+        self,
+        itineraries: Sequence[str],
+        classes: Sequence[str | None] | None,
+        fare: FloatArray,
+        seats: IntArray,
+        now: float,
+    ) -> Requests:
+        """Look many requests up by name, just as `legworth.request_table.located` does for tables."""
+        at = np.fromiter(map(self.itinerary_position.get, itineraries, repeat(-1)), np.int64, len(itineraries))
+        product = np.full(len(at), -1)
+        if classes is not None and len(self._product_key):
+            codes: dict[str | None, int] = {None: -1}
+            codes |= {name: code for code, name in enumerate(self.network.fare_classes)}
+            of_class = np.fromiter(map(codes.get, classes, repeat(-2)), np.int64, len(classes))
+            wanted = at * len(self.network.fare_classes) + of_class
+            place = np.minimum(np.searchsorted(self._product_key, wanted), len(self._product_key) - 1)
+            sold = (at >= 0) & (of_class >= 0) & (self._product_key[place] == wanted)
+            product = np.where(of_class == -1, -1, np.where(sold, place, -2))
+        elif classes is not None:
+            product = np.array([-1 if name is None else -2 for name in classes])
+        return Requests(at, product, fare, seats, np.full(len(at), now))
+
     def path(self, itinerary: int) -> tuple[int, ...]:
         """Legs of an itinerary, in travel order."""
         start, end = self.network.path_start[itinerary], self.network.path_start[itinerary + 1]
@@ -126,14 +175,14 @@ class ServedPart:
         reason, binding = self._reason(weights, question, known_class)
         priced = reason >= Reason.FARE_BELOW_PRICE
         prices = [price for _, price in weights] if priced else []
-        displacement = sum(prices) if priced else None
+        displacement = _total(prices) if priced else None
         asked = None if question.fare is None else question.fare * question.seats
         words = {
             "binding": "" if binding is None else question.names[binding],
             "party": str(question.seats),
-            "asked": "" if asked is None else f"{asked:.2f}",
-            "price": "" if displacement is None else f"{displacement:.2f}",
-            "prices": "+".join(f"{price:.2f}" for price in prices),
+            "asked": "" if asked is None else _money(asked),
+            "price": "" if displacement is None else _money(displacement),
+            "prices": "+".join(map(_money, prices)),
         }
         return {
             "accepted": reason is Reason.FARE_REACHES_PRICE,
@@ -175,8 +224,19 @@ class ServedPart:
         if worst[0] in obstacles:
             return obstacles[worst[0]], binding
         asked = question.fare * question.seats
-        reached = asked >= sum(price for _, price in weights) - EQUAL * abs(asked)
+        reached = asked >= _total([price for _, price in weights]) - EQUAL * abs(asked)
         return (Reason.FARE_REACHES_PRICE if reached else Reason.FARE_BELOW_PRICE), binding
+
+
+def _total(prices: list[float]) -> float:
+    """Sum of the prices of a path, to the last bit as `legworth.decisions.decide` adds them up."""
+    return sum(prices) if len(prices) < 3 else float(np.add.reduceat(prices, [0])[0])
+
+
+def _money(value: float) -> str:
+    """Money with two decimals, rounded as `numpy.round` does for tables."""
+    cents = round(value * 100)
+    return f"{cents // 100}.{cents % 100:02d}"
 
 
 def read_part(folder: Path, name: str) -> ServedPart:
@@ -188,4 +248,6 @@ def read_part(folder: Path, name: str) -> ServedPart:
         If its tables are at fault.
     """
     network = read_folder(folder).network
-    return ServedPart(name, network, read_prices(folder, network))
+    part = ServedPart(name, network, read_prices(folder, network))
+    part.prepare()
+    return part

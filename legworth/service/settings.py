@@ -16,23 +16,34 @@ __all__ = ["ServiceSettings", "read_service_settings"]
 class ServiceSettings(BaseModel):
     """The whole of the service's settings file; every setting has a default."""
 
-    model_config = ConfigDict(frozen=True, extra="forbid")
+    model_config = ConfigDict(frozen=True, extra="forbid", strict=True)
 
     database: Annotated[
         str | None,
-        Field(description="SQLAlchemy URL of the ledger; without it, seats.sqlite in the store."),
+        Field(description="SQLAlchemy URL of the ledger, SQLite or PostgreSQL; without it, seats.sqlite in the store."),
     ] = None
-    read_needs_token: Annotated[bool, Field(description="Whether questions and pages need a token too.")] = False
+    read_needs_token: Annotated[
+        bool, Field(description="Whether questions, look-ups, metrics and pages need a token too.")
+    ] = False
     body_limit: Annotated[
         int, Field(ge=1_000, le=100_000_000, description="Greatest body of a request; larger ones stay unread, bytes.")
     ] = 1_000_000
     batch_limit: Annotated[int, Field(ge=1, le=100_000, description="Most requests in one batch.")] = 10_000
     rate_limit: Annotated[
-        float, Field(ge=0, description="Requests that one client may send, per second; 0 for no limit.")
+        float,
+        Field(
+            ge=0,
+            allow_inf_nan=False,
+            description="Requests that one client address may send, per second; 0 for no limit.",
+        ),
     ] = 0.0
     burst: Annotated[
         int, Field(ge=1, description="Requests that one client may send at once before the rate limit counts.")
     ] = 1_000
+    trusted_proxies: Annotated[
+        list[str],
+        Field(description="Addresses of proxies whose X-Forwarded-For names the client; nobody else's is believed."),
+    ] = []
     waiting_limit: Annotated[
         int,
         Field(ge=1, le=1_000_000, description="Sales and cancellations that may wait; further ones are turned away."),
@@ -41,7 +52,13 @@ class ServiceSettings(BaseModel):
         int, Field(ge=1, le=10_000, description="Parts of the night kept in memory, the latest used.")
     ] = 60
     follow_seconds: Annotated[
-        float, Field(gt=0, le=3600, description="How often the store is looked at for a new night, seconds.")
+        float,
+        Field(
+            gt=0,
+            le=3600,
+            description="How often the store is looked at for a new night, and the ledger for orders that other "
+            "services carried out, seconds.",
+        ),
     ] = 1.0
 
 
@@ -57,7 +74,9 @@ def read_service_settings(path: Path | None) -> ServiceSettings:
         return ServiceSettings()
     try:
         return ServiceSettings.model_validate(tomllib.loads(path.read_text(encoding="utf-8")))
-    except (OSError, UnicodeDecodeError, tomllib.TOMLDecodeError) as error:
+    except OSError as error:
+        raise SettingError(f"{path}: cannot be read ({error.strerror}); name a file of settings") from error
+    except (UnicodeDecodeError, tomllib.TOMLDecodeError) as error:
         raise SettingError(f"{path}: cannot be read as TOML ({error}); correct it") from error
     except ValidationError as problems:
         lines = [f"{path}: {'.'.join(map(str, each['loc']))}: {each['msg']}" for each in problems.errors()]

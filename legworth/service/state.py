@@ -4,10 +4,12 @@ from __future__ import annotations
 
 import asyncio
 import contextlib
+import gc
 import time
-from collections.abc import AsyncIterator
-from dataclasses import dataclass
+from collections.abc import AsyncIterator, Callable
+from dataclasses import dataclass, field
 from datetime import datetime
+from typing import TypeVar
 
 import structlog
 
@@ -19,10 +21,19 @@ from legworth.service.served_night import ServedNight
 from legworth.service.settings import ServiceSettings
 from legworth.service.tokens import TokenFile
 from legworth.service.writer import LedgerWriter
-from legworth.store import Store
-from network.errors import LegworthError
+from legworth.store import NightDamagedError, Store
 
-__all__ = ["ServiceState"]
+__all__ = ["TROUBLES", "ServiceState"]
+
+STORE, LEDGER = "store", "ledger"
+TROUBLES = {
+    STORE: "the night in force cannot be taken over; the one before is served",
+    LEDGER: "the ledger cannot be read; seats left may be old, and orders are turned away",
+}
+"""What can be wrong with a running service, as its health says it; the log says why."""
+
+
+T = TypeVar("T")
 
 
 @dataclass(eq=False)
@@ -37,6 +48,8 @@ class ServiceState:
         The night in force, None as long as there is none.
     ahead
         Seconds by which the service's clock is ahead of the machine's, for drills; 0 otherwise.
+    troubles
+        What is wrong at present: for ``STORE`` and ``LEDGER`` the reason.
     """
 
     store: Store
@@ -47,6 +60,7 @@ class ServiceState:
     tokens: TokenFile
     served: ServedNight | None = None
     ahead: float = 0.0
+    troubles: dict[str, str] = field(default_factory=dict)
 
     @classmethod
     def start(cls, store: Store, settings: ServiceSettings, at: datetime | None = None) -> ServiceState:
@@ -62,14 +76,15 @@ class ServiceState:
         Raises
         ------
         LegworthError
-            If the ledger cannot be opened, or the night in force is damaged.
+            If the ledger cannot be opened or read. A damaged night is no reason not to start: the service answers that
+            it has no night, takes cancellations, and follows the store until there is a sound one.
         """
         ledger = Ledger(settings.database or f"sqlite:///{store.path.resolve() / 'seats.sqlite'}")
         seats = SeatsLeft(ledger)
         writer = LedgerWriter(ledger, settings.waiting_limit, seats.note)
         state = cls(store, settings, ledger, writer, seats, TokenFile(store.path / "tokens.json"))
         state.ahead = 0.0 if at is None else at.timestamp() - time.time()
-        state.look()
+        state._try(STORE, state.look)
         return state
 
     def now(self) -> float:
@@ -88,36 +103,67 @@ class ServiceState:
         return self.served
 
     def look(self) -> bool:
-        """Take over the night in force if it is another one; True if it is."""
-        night = self.store.in_force()
-        if night is None or (self.served is not None and night.name == self.served.name):
+        """Take over the night in force if it is another one, after reading every file of it; True if it is.
+
+        Raises
+        ------
+        NightDamagedError
+            If it is damaged.
+        """
+        served = self.next_night()
+        if served is None:
             return False
-        served = ServedNight(night, self.settings.parts_in_memory)
-        self.seats.add(served.counts())
-        self.served = served
+        self.serve(served)
         return True
 
+    def next_night(self) -> ServedNight | None:
+        """Read the night in force if it is another one than is served; raises as `look` does."""
+        night = self.store.in_force()
+        if night is None or (self.served is not None and night.name == self.served.name):
+            return None
+        faults = night.verify()
+        if faults:
+            raise NightDamagedError(f"night {night.name}, which is in force, is damaged: {faults[0]}")
+        served = ServedNight(night, self.settings.parts_in_memory)
+        self.seats.add(served.counts())
+        return served
+
+    def serve(self, night: ServedNight) -> None:
+        """Answer by a night from now on."""
+        self.served = night
+        # What a night holds stays for a day: the collector need not look through it again and again.
+        gc.freeze()
+        structlog.get_logger().info("night taken over", night=night.name)
+
     async def follow(self) -> None:
-        """Look at the store, and at the counts that other services may have moved, again and again."""
-        log = structlog.get_logger()
-        troubled = ""
+        """Look at the store, and at the orders that other services carried out, again and again."""
+        if self.served is not None:
+            await self.served.warm(self.served.night.parts())
         while True:
             await asyncio.sleep(self.settings.follow_seconds)
-            try:
-                if await asyncio.to_thread(self.look):
-                    log.info("night taken over", night=self.night().name)
-                if not self.alone:
-                    await asyncio.to_thread(self.seats.reload)
-                troubled = ""
-            except LegworthError as error:
-                if str(error) != troubled:
-                    log.error("the store cannot be followed; the night before stays in force here", error=str(error))
-                troubled = str(error)
+            night = await asyncio.to_thread(self._try, STORE, self.next_night)
+            if night is not None:
+                # The parts that were asked for lately are read before the switch, so that nobody waits for them.
+                lately = self.served.in_memory() if self.served is not None else []
+                known = set(night.night.parts())
+                await night.warm([name for name in lately if name in known])
+                self.serve(night)
+                await night.warm(night.night.parts())
+            await asyncio.to_thread(self._try, LEDGER, self.seats.catch_up)
 
-    @property
-    def alone(self) -> bool:
-        """Whether no other service can write this ledger: a file of the store's own."""
-        return self.settings.database is None
+    def _try(self, what: str, work: Callable[[], T]) -> T | None:
+        """Do some work; if it fails, whatever the reason, note and log that once, and go on with what there is."""
+        try:
+            found = work()
+        except Exception as error:
+            reason = str(error)[:1_000] or type(error).__name__
+            if self.troubles.get(what) != reason:
+                structlog.get_logger().error(TROUBLES[what], error=reason)
+            self.troubles[what] = reason
+            return None
+        if self.troubles.pop(what, None) is not None:
+            structlog.get_logger().info(f"the {what} is in order again")
+        return found
 
     async def carry_out(self, order: Order) -> Outcome:
         """Carry an order out; its outcome is on the disk when this returns."""

@@ -7,10 +7,11 @@ from typing import Any
 from urllib.parse import urlencode
 
 from fastapi import Request
-from jinja2 import Environment, PackageLoader, StrictUndefined
+from jinja2 import Environment
 from starlette.responses import HTMLResponse, Response
 
 from legworth import __version__
+from legworth.page_templates import page_templates
 from legworth.report import CAUTION, money, price_text
 from legworth.service.interface import state_of
 from legworth.service.looking import health_of
@@ -70,13 +71,7 @@ def html(request: Request, template: str, *, status: int = 200, **model: Any) ->
 
 @cache
 def _templates() -> Environment:
-    environment = Environment(
-        loader=PackageLoader("legworth.service.pages", "templates"),
-        autoescape=True,
-        undefined=StrictUndefined,
-        trim_blocks=True,
-        lstrip_blocks=True,
-    )
+    environment = page_templates("legworth.service.pages")
     environment.filters.update(money=money, price=price_text, instant=instant_text, days=days_text)
     environment.globals.update(to=address, file=file_address)
     return environment

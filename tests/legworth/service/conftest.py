@@ -3,11 +3,7 @@
 from __future__ import annotations
 
 import os
-import pwd
 import shutil
-import socket
-import subprocess
-import tempfile
 from collections.abc import Iterator
 from itertools import count
 from pathlib import Path
@@ -15,47 +11,22 @@ from pathlib import Path
 import psycopg
 import pytest
 
+from tests.legworth.service.postgres import postgres_programs, running_postgres
+from tests.legworth.service.stores import HUB, publish
+
 NUMBERS = count()
-
-
-def _programs() -> Path | None:
-    """Folder of PostgreSQL's server programs: Debian keeps them off the path."""
-    found = shutil.which("pg_ctl")
-    if found:
-        return Path(found).parent
-    return max(Path("/usr/lib/postgresql").glob("*/bin"), default=None)
 
 
 @pytest.fixture(scope="session")
 def postgres_server() -> Iterator[str]:
     """A PostgreSQL server on loopback with durable writes; yields its address."""
-    programs = _programs()
+    programs = postgres_programs()
     if programs is None:
         if os.environ.get("CI"):
             pytest.fail("PostgreSQL is not installed; CI must install Debian's package postgresql")
         pytest.skip("PostgreSQL is not installed")
-    root = os.geteuid() == 0
-    folder = Path(tempfile.mkdtemp(prefix="legworth-postgres-"))
-    with socket.socket() as probe:
-        probe.bind(("127.0.0.1", 0))
-        port = probe.getsockname()[1]
-    as_whom = {"user": "postgres", "group": "postgres"} if root else {}
-    owner = "postgres" if root else pwd.getpwuid(os.geteuid()).pw_name
-    if root:
-        shutil.chown(folder, "postgres", "postgres")
-    data = folder / "data"
-
-    def run(*words: str) -> None:
-        subprocess.run(words, check=True, cwd=folder, stdout=subprocess.DEVNULL, stderr=subprocess.STDOUT, **as_whom)
-
-    run(str(programs / "initdb"), "-D", str(data), "-A", "trust", "-U", owner, "--locale=C", "-E", "UTF8")
-    options = f"-c listen_addresses=127.0.0.1 -c port={port} -c unix_socket_directories={folder}"
-    run(str(programs / "pg_ctl"), "-D", str(data), "-w", "-l", str(folder / "log"), "-o", options, "start")
-    try:
-        yield f"postgresql+psycopg://{owner}@127.0.0.1:{port}"
-    finally:
-        run(str(programs / "pg_ctl"), "-D", str(data), "-m", "immediate", "stop")
-        shutil.rmtree(folder, ignore_errors=True)
+    with running_postgres(programs) as address:
+        yield address
 
 
 @pytest.fixture(params=["sqlite", "postgresql"])
@@ -68,3 +39,18 @@ def database(request: pytest.FixtureRequest, tmp_path: Path) -> str:
     with psycopg.connect(server.replace("+psycopg", "") + "/postgres", autocommit=True) as connection:
         connection.execute(f'CREATE DATABASE "{name}"')  # type: ignore[arg-type]
     return f"{server}/{name}"
+
+
+@pytest.fixture(scope="session")
+def published_hub(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    """A store with one night of a small hub; not to be written."""
+    folder = tmp_path_factory.mktemp("hub")
+    publish(folder / "network", folder / "store", **HUB)
+    return folder / "store"
+
+
+@pytest.fixture
+def store(published_hub: Path, tmp_path: Path) -> Path:
+    """A store of the test's own with one night of a small hub."""
+    shutil.copytree(published_hub, tmp_path / "store")
+    return tmp_path / "store"

@@ -69,7 +69,25 @@ def faults(
             found.append(f"key {event.key} stands in the journal as another order")
     sent = {event.key for event in events}
     found += [f"key {row.key} is in the journal but nobody sent it" for row in rows if row.key not in sent]
-    return found + _counts(before, after, rows)
+    return found + _counts(before, after, rows) + _acknowledged(before, after, events)
+
+
+def _acknowledged(
+    before: Mapping[str, SeatCount], after: Mapping[str, SeatCount], events: Sequence[Event]
+) -> list[str]:
+    """Compare the counts with what clients were told alone, without the journal; open orders allow a span."""
+    found = []
+    for leg, count in after.items():
+        least = most = before[leg].sold if leg in before else 0
+        for event in events:
+            if leg not in event.legs or event.accepted is False:
+                continue
+            moved = event.seats if event.kind == "sale" else -event.seats
+            least += moved if event.accepted else min(moved, 0)
+            most += moved if event.accepted else max(moved, 0)
+        if not least <= count.sold <= most:
+            found.append(f"{leg} has {count.sold} seats sold, clients were told of {least} to {most}")
+    return found
 
 
 def _counts(before: Mapping[str, SeatCount], after: Mapping[str, SeatCount], rows: Sequence[Entry]) -> list[str]:

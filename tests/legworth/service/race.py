@@ -7,23 +7,21 @@ import random
 import time
 from collections import Counter
 from dataclasses import dataclass, field, replace
-from datetime import UTC, datetime, timedelta
 from pathlib import Path
 from typing import Any
 
 from sqlalchemy import select
 
-from legworth.refresh import refresh
 from legworth.service.ledger import Ledger
 from legworth.service.ledger_tables import journal
 from legworth.service.tokens import TokenFile
 from tests.legworth.service.history_checker import Entry, Event, faults
 from tests.legworth.service.processes import ServiceProcess
+from tests.legworth.service.stores import publish
 from tests.legworth.service.wire import Wire
 
-__all__ = ["RaceResult", "run_race", "write_shared_legs"]
+__all__ = ["RaceResult", "run_race"]
 
-SPOKES = 3
 FARE = 900.0
 
 
@@ -35,38 +33,6 @@ class RaceResult:
     kills: int
     seconds: float
     happened: Counter[str] = field(default_factory=Counter)
-
-
-def write_shared_legs(folder: Path, capacity: int) -> list[tuple[str, ...]]:
-    """Write a hub day of three legs in and three out, ten days from now; returns the paths on sale."""
-    folder.mkdir(parents=True)
-    now = datetime.now(UTC).replace(microsecond=0)
-    day = (now + timedelta(days=10)).replace(hour=8, minute=0, second=0)
-    legs, paths = ["leg,origin,destination,departs,arrives,capacity,sold"], []
-    for number in range(SPOKES):
-        for name, ends, start in ((f"IN{number}", f"S{number},HUB", 0), (f"OUT{number}", f"HUB,S{number}", 3)):
-            times = [(day + timedelta(hours=start + plus)).isoformat() for plus in (0, 1)]
-            legs.append(f"{name},{ends},{times[0]},{times[1]},{capacity},0")
-            paths.append((name,))
-    paths += [(f"IN{a}", f"OUT{b}") for a in range(SPOKES) for b in range(SPOKES) if a != b]
-    stations = ["station,name,latitude,longitude,minimum_connection", "HUB,Hub,50,8,30"]
-    stations += [f"S{number},Spoke {number},{48 + number},{4 + number},30" for number in range(SPOKES)]
-    names = ["-".join(path) for path in paths]
-    tables = {
-        "stations": stations,
-        "legs": legs,
-        "itineraries": [
-            "itinerary,legs",
-            *(f"{name},{' '.join(path)}" for name, path in zip(names, paths, strict=True)),
-        ],
-        "fares": ["itinerary,fare_class,fare", *(f"{name},A,{FARE}" for name in names)],
-        "demand": ["itinerary,fare_class,mean,deviation", *(f"{name},A,5,3" for name in names)],
-    }
-    for name, rows in tables.items():
-        (folder / f"{name}.csv").write_text("\n".join(rows) + "\n")
-    as_of = now.isoformat()
-    (folder / "network.toml").write_text(f'name = "Shared legs"\ncurrency = "EUR"\nas_of = "{as_of}"\n')
-    return paths
 
 
 def run_race(
@@ -94,8 +60,7 @@ def run_race(
     number
         Seed of the random generator.
     """
-    paths = write_shared_legs(scratch / "network", capacity)
-    refresh(scratch / "network", scratch / "store")
+    paths = publish(scratch / "network", scratch / "store", capacity=capacity, fares={"A": FARE})
     settings = scratch / "service.toml"
     settings.write_text("" if database is None else f'database = "{database}"\n')
     token = TokenFile(scratch / "store" / "tokens.json").make("racer", ["sell"])

@@ -41,6 +41,13 @@ def counts(a: int, b: int) -> dict[str, SeatCount]:
         pytest.param(counts(1, 0), JOURNAL[3:], EVENTS, "not in the journal", id="lost sale"),
         pytest.param(counts(5, 2), [*JOURNAL, JOURNAL[3]], EVENTS, "2 times", id="key applied twice"),
         pytest.param(counts(5, 2), JOURNAL, EVENTS, "5 seats sold", id="count moved twice for one key"),
+        pytest.param(
+            counts(1, 0),
+            [],
+            [Event("1", "sale", ("A", "B"), 3, True)],
+            "told of 4 to 4",
+            id="sale gone from journal and counts alike",
+        ),
         pytest.param(counts(4, 3), JOURNAL, EVENTS, "3 seats sold", id="torn sale"),
         pytest.param(
             counts(6, 2),

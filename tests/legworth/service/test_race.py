@@ -11,7 +11,7 @@ from tests.legworth.service.race import run_race
 
 
 def test_nothing_is_lost_or_oversold_when_the_service_is_killed(database: str, tmp_path: Path) -> None:
-    found = run_race(tmp_path / "race", database, clients=50, seconds=6.0, kills=2)
+    found = run_race(tmp_path / "race", database, clients=50, seconds=4.0, kills=2)
     assert found.faults == []
     assert found.kills == 2
     assert found.happened["sale accepted"] > 50

@@ -50,14 +50,22 @@ class Wire:
         OSError, EOFError, ValueError
             If the connection breaks or what comes back is no answer.
         """
+        head = f"{method} {path} HTTP/1.1\r\nHost: 127.0.0.1\r\nContent-Length: {len(body)}\r\n"
+        status, _, answer = await self.exchange(f"{head}{self.fixed}{headers}\r\n".encode() + body)
+        return status, answer
+
+    async def exchange(self, data: bytes) -> tuple[int, bytes, bytes]:
+        """Send some bytes, and read status, head and body of one answer; raises as `raw` does."""
         try:
             if self._reader is None or self._writer is None:
                 self._reader, self._writer = await asyncio.open_connection("127.0.0.1", self.port)
-            head = f"{method} {path} HTTP/1.1\r\nHost: 127.0.0.1\r\nContent-Length: {len(body)}\r\n"
-            self._writer.write(f"{head}{self.fixed}{headers}\r\n".encode() + body)
-            top = await self._reader.readuntil(b"\r\n\r\n")
-            length = next(int(line[15:]) for line in top.split(b"\r\n") if line[:15].lower() == b"content-length:")
-            return int(top[9:12]), await self._reader.readexactly(length)
+            self._writer.write(data)
+            top = (await self._reader.readuntil(b"\r\n\r\n")).lower()
+            length = next(int(line[15:]) for line in top.split(b"\r\n") if line[:15] == b"content-length:")
+            body = await self._reader.readexactly(length)
+            if b"connection: close" in top:
+                self.drop()
+            return int(top[9:12]), top, body
         except BaseException:
             self.drop()
             raise
