@@ -1,8 +1,9 @@
 """GTFS feeds against published examples and sentences of the specification.
 
 Sources: the example feed of the GTFS documentation (gtfs.org, Documentation, Schedule, Example feed; published by its
-makers as a sample under the Apache licence 2.0, from memory), in ``data/gtfs_example`` as packaged with gtfs-kit 13.0.1, no value changed; and the GTFS
-Schedule Reference (gtfs.org, Documentation, Schedule, Reference), sentences told in our own words.
+makers as a sample under the Apache licence 2.0, from memory), in ``data/gtfs_example`` as packaged with gtfs-kit
+13.0.1, no value changed; and the GTFS Schedule Reference (gtfs.org, Documentation, Schedule, Reference), sentences told
+in our own words.
 """
 
 from __future__ import annotations
