@@ -13,7 +13,6 @@ from pydantic import BaseModel
 
 from legworth.cli import cli
 from legworth.results import result_schemas
-from legworth.service.settings import ServiceSettings
 from network.schema import TableSchema, input_schemas, table_schema
 from network.settings import NetworkSettings
 
@@ -44,14 +43,6 @@ def tables_document() -> str:
         "| setting | default | meaning |",
         "| --- | --- | --- |",
         *_settings(NetworkSettings, ""),
-        "",
-        "## Settings of the service",
-        "",
-        "For `legworth serve --settings FILE`, a TOML file.",
-        "",
-        "| setting | default | meaning |",
-        "| --- | --- | --- |",
-        *_settings(ServiceSettings, ""),
         "",
         "# What goes in",
         "",
