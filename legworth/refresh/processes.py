@@ -48,6 +48,7 @@ class Processes:
         self._environment = {**ONE_THREAD, **temporary}
         self._pools: list[ProcessPoolExecutor | None] = [None] * count
         self._loaded: list[Future[int] | None] = [None] * count
+        self._gone = [False] * count
         self._place: dict[Future[Any], int] = {}
 
     def capacity(self) -> int:
@@ -65,13 +66,16 @@ class Processes:
                 max_workers=1, env=self._environment, initializer=_outlive_nobody, initargs=(os.getpid(),)
             )
             self._loaded[place] = pool.submit(_load)
+            _only_the_worker_writes(pool)
         future: Future[Answer] = pool.submit(task, part)
         self._place[future] = place
         return future
 
     def waiting(self, future: Future[Any]) -> bool:
-        """Whether the process of a part is still loading libraries."""
-        loaded = self._loaded[self._place[future]]
+        """Whether the process of a part is still loading libraries; looks after processes that died as well."""
+        place = self._place[future]
+        self._bury(place)
+        loaded = self._loaded[place]
         return loaded is not None and not loaded.done()
 
     def end(self, future: Future[Any]) -> None:
@@ -91,16 +95,39 @@ class Processes:
             if future.exception() is not None:
                 self._drop(place)
 
+    def _bury(self, place: int) -> None:
+        """Let a pool know that its process is gone.
+
+        It listens for the rest of a result for ever if its process was killed while it sent one, since it holds the
+        sending end as well. A process must be gone at two looks: the pool may be about to notice by itself.
+        """
+        pool = self._pools[place]
+        gone = pool is not None and not any(process.is_alive() for process in list(pool._processes.values()))
+        if pool is not None and gone and self._gone[place]:
+            pool._result_queue._writer.close()
+        self._gone[place] = gone
+
     def _drop(self, place: int) -> None:
         pool, loaded = self._pools[place], self._loaded[place]
         self._pools[place] = self._loaded[place] = None
+        self._gone[place] = False
         if pool is None:
             return
+        pool._result_queue._writer.close()  # see _bury
         pool.shutdown(wait=True, kill_workers=True)
         if hasattr(os, "killpg") and loaded is not None and loaded.done() and loaded.exception() is None:
             # A process that was killed leaves the solver that it ran behind, alone in its group.
             with suppress(ProcessLookupError):
                 os.killpg(loaded.result(), signal.SIGKILL)
+
+
+def _only_the_worker_writes(pool: ProcessPoolExecutor) -> None:
+    """Close this process's own end for writing results, which the worker has by now.
+
+    As long as it is open, a worker that is killed in the middle of an answer leaves the reader waiting for the rest
+    for ever, since there is still somebody who could write it.
+    """
+    pool._result_queue._writer.close()
 
 
 def _outlive_nobody(parent: int) -> None:

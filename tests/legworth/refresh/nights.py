@@ -6,8 +6,10 @@ Tasks stand in a module of their own, so that the processes of a pool and the wo
 from __future__ import annotations
 
 import os
+import signal
 import subprocess
 import tempfile
+import threading
 import time
 from collections.abc import Callable
 from concurrent.futures import Future
@@ -106,6 +108,25 @@ class DiesOnce:
 
 
 @dataclass(frozen=True)
+class DiesSending:
+    """Begins to send a result, as processes of a pool do, and dies halfway, once."""
+
+    mark: Path
+
+    def __call__(self, part: PartInput) -> PartOutput:
+        if not self.mark.exists():
+            self.mark.touch()
+            frame = sys._getframe()
+            while "result_queue" not in frame.f_locals:
+                assert frame.f_back is not None
+                frame = frame.f_back
+            sending = frame.f_locals["result_queue"]._writer.fileno()
+            os.write(sending, struct.pack("!i", 1000) + b"half")  # the length of a message, and less than that
+            os._exit(9)
+        return run_part(part)
+
+
+@dataclass(frozen=True)
 class LosesItsWorker:
     """Starts a program that never ends, as a solver that hangs, notes its number, and dies itself, once."""
 
@@ -188,3 +209,9 @@ class Slow:
 def with_solver(part: PartInput, name: str) -> PartInput:
     """The part, solved by a solver of that name."""
     return replace(part, solver=name)  # type: ignore[arg-type]
+
+
+def answer_cut_short(delay: float) -> bytes:
+    """Return an answer too long for the pipe, from a process that is killed when it has sent some of it."""
+    threading.Timer(delay, os.kill, (os.getpid(), signal.SIGKILL)).start()
+    return bytes(150_000_000)

@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import threading
 import time
 from collections.abc import Callable
+from concurrent.futures.process import BrokenProcessPool
 from dataclasses import replace
 from pathlib import Path
 from typing import Any
@@ -16,7 +18,16 @@ from legworth.refresh.running import Failure, run_parts
 from network import NotCertifiedError, SolverStoppedError, read_folder
 from network.errors import LegworthError
 from tests.folders import Folder
-from tests.legworth.refresh.nights import PRICING, DiesOnce, Fails, Hangs, InPlace, LosesItsWorker
+from tests.legworth.refresh.nights import (
+    PRICING,
+    DiesOnce,
+    DiesSending,
+    Fails,
+    Hangs,
+    InPlace,
+    LosesItsWorker,
+    answer_cut_short,
+)
 
 ALL = ["2030-03-01", "2030-03-02", "2030-03-03"]
 MIDDLE = ALL[1]
@@ -78,6 +89,41 @@ def test_a_process_that_dies_is_replaced_and_its_part_run_again(parts: list[Part
     plain, _ = run(parts, InPlace(), Fails("none"))
     assert failures == [Failure(MIDDLE, "its process died", True, "cbc")]
     assert {name: output.written for name, output in found.items()} == {n: o.written for n, o in plain.items()}
+
+
+@pytest.mark.parametrize("delay", [0.02, 0.06, 0.1, 0.15])
+def test_a_process_killed_in_the_middle_of_its_answer_is_not_waited_for(delay: float) -> None:
+    workers = Processes(1)
+    future = workers.submit(answer_cut_short, delay)
+    try:
+        whole = future.result(timeout=60) == bytes(150_000_000)
+    except BrokenProcessPool:
+        whole = True  # the process is known to be gone, so the part is run again
+    assert whole
+    closing = threading.Thread(target=workers.close, daemon=True)
+    closing.start()
+    closing.join(60)
+    assert not closing.is_alive()
+
+
+def test_a_process_that_dies_while_it_sends_its_result_keeps_nobody_waiting(
+    parts: list[PartInput], tmp_path: Path
+) -> None:
+    found, failures = run(parts, Processes(1), DiesSending(tmp_path / "mark"), seconds=600.0)
+    assert sorted(found) == ALL
+    assert failures == [Failure(ALL[0], "its process died", True, "cbc")]
+
+
+def test_ending_a_process_that_died_while_it_sent_its_result_keeps_nobody_waiting(
+    parts: list[PartInput], tmp_path: Path
+) -> None:
+    workers, mark = Processes(1), tmp_path / "mark"
+    workers.submit(DiesSending(mark), parts[0])
+    while not mark.exists():
+        time.sleep(0.02)
+    workers.close()
+    assert workers.submit(run_part, parts[0]).result(timeout=60).name == ALL[0]
+    workers.close()
 
 
 def test_a_solver_whose_process_was_killed_is_ended_too(parts: list[PartInput], tmp_path: Path) -> None:
