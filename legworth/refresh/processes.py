@@ -18,6 +18,7 @@ from importlib import import_module
 from pathlib import Path
 from typing import Any, TypeVar
 
+from joblib.externals.loky import process_executor
 from joblib.externals.loky.process_executor import ProcessPoolExecutor
 
 __all__ = ["Processes"]
@@ -138,6 +139,8 @@ def _outlive_nobody(parent: int) -> None:
     """
     if hasattr(os, "setpgrp"):
         os.setpgrp()
+    # The pool would replace a process that has grown, and cannot: see _only_the_worker_writes.
+    process_executor._MAX_MEMORY_LEAK_SIZE = float("inf")
 
     def watch() -> None:
         while os.getppid() == parent:
