@@ -7,7 +7,9 @@ from __future__ import annotations
 
 import os
 import signal
+import struct
 import subprocess
+import sys
 import tempfile
 import threading
 import time
