@@ -21,7 +21,6 @@ from tests.folders import Folder
 from tests.legworth.refresh.nights import (
     PRICING,
     DiesOnce,
-    DiesSending,
     Fails,
     Hangs,
     InPlace,
@@ -104,26 +103,6 @@ def test_a_process_killed_in_the_middle_of_its_answer_is_not_waited_for(delay: f
     closing.start()
     closing.join(60)
     assert not closing.is_alive()
-
-
-def test_a_process_that_dies_while_it_sends_its_result_keeps_nobody_waiting(
-    parts: list[PartInput], tmp_path: Path
-) -> None:
-    found, failures = run(parts, Processes(1), DiesSending(tmp_path / "mark"), seconds=600.0)
-    assert sorted(found) == ALL
-    assert failures == [Failure(ALL[0], "its process died", True, "cbc")]
-
-
-def test_ending_a_process_that_died_while_it_sent_its_result_keeps_nobody_waiting(
-    parts: list[PartInput], tmp_path: Path
-) -> None:
-    workers, mark = Processes(1), tmp_path / "mark"
-    workers.submit(DiesSending(mark), parts[0])
-    while not mark.exists():
-        time.sleep(0.02)
-    workers.close()
-    assert workers.submit(run_part, parts[0]).result(timeout=60).name == ALL[0]
-    workers.close()
 
 
 def test_a_solver_whose_process_was_killed_is_ended_too(parts: list[PartInput], tmp_path: Path) -> None:
