@@ -19,6 +19,7 @@ from pathlib import Path
 from typing import Any, TypeVar
 
 from joblib.externals.loky import process_executor
+from joblib.externals.loky.backend.utils import kill_process_tree
 from joblib.externals.loky.process_executor import ProcessPoolExecutor
 
 __all__ = ["Processes"]
@@ -48,8 +49,8 @@ class Processes:
         temporary = {} if scratch is None else dict.fromkeys(("TMPDIR", "TMP", "TEMP"), str(scratch))
         self._environment = {**ONE_THREAD, **temporary}
         self._pools: list[ProcessPoolExecutor | None] = [None] * count
-        self._loaded: list[Future[int] | None] = [None] * count
-        self._gone = [False] * count
+        self._loaded: list[Future[None] | None] = [None] * count
+        self._groups: list[tuple[int, ...]] = [()] * count
         self._place: dict[Future[Any], int] = {}
 
     def capacity(self) -> int:
@@ -67,16 +68,15 @@ class Processes:
                 max_workers=1, env=self._environment, initializer=_outlive_nobody, initargs=(os.getpid(),)
             )
             self._loaded[place] = pool.submit(_load)
-            _only_the_worker_writes(pool)
+            self._groups[place] = tuple(pool._processes)
+            _leave_to_the_worker(pool)
         future: Future[Answer] = pool.submit(task, part)
         self._place[future] = place
         return future
 
     def waiting(self, future: Future[Any]) -> bool:
-        """Whether the process of a part is still loading libraries; looks after processes that died as well."""
-        place = self._place[future]
-        self._bury(place)
-        loaded = self._loaded[place]
+        """Whether the process of a part is still loading libraries."""
+        loaded = self._loaded[self._place[future]]
         return loaded is not None and not loaded.done()
 
     def end(self, future: Future[Any]) -> None:
@@ -96,39 +96,32 @@ class Processes:
             if future.exception() is not None:
                 self._drop(place)
 
-    def _bury(self, place: int) -> None:
-        """Let a pool know that its process is gone.
-
-        It listens for the rest of a result for ever if its process was killed while it sent one, since it holds the
-        sending end as well. A process must be gone at two looks: the pool may be about to notice by itself.
-        """
-        pool = self._pools[place]
-        gone = pool is not None and not any(process.is_alive() for process in list(pool._processes.values()))
-        if pool is not None and gone and self._gone[place]:
-            pool._result_queue._writer.close()
-        self._gone[place] = gone
-
     def _drop(self, place: int) -> None:
-        pool, loaded = self._pools[place], self._loaded[place]
-        self._pools[place] = self._loaded[place] = None
-        self._gone[place] = False
+        """Kill the process at a place and the solver that it runs, or left behind when it was killed itself.
+
+        Processes go first: a pool reads the answer that it is being sent to the end before it looks at anything else.
+        """
+        pool, group = self._pools[place], self._groups[place]
+        self._pools[place], self._loaded[place], self._groups[place] = None, None, ()
         if pool is None:
             return
-        pool._result_queue._writer.close()  # see _bury
+        for process in list(pool._processes.values()):
+            kill_process_tree(process)
+        if hasattr(os, "killpg"):
+            for leader in group:
+                with suppress(ProcessLookupError):
+                    os.killpg(leader, signal.SIGKILL)
         pool.shutdown(wait=True, kill_workers=True)
-        if hasattr(os, "killpg") and loaded is not None and loaded.done() and loaded.exception() is None:
-            # A process that was killed leaves the solver that it ran behind, alone in its group.
-            with suppress(ProcessLookupError):
-                os.killpg(loaded.result(), signal.SIGKILL)
 
 
-def _only_the_worker_writes(pool: ProcessPoolExecutor) -> None:
-    """Close this process's own end for writing results, which the worker has by now.
+def _leave_to_the_worker(pool: ProcessPoolExecutor) -> None:
+    """Close this process's copies of the ends that are the worker's, which has its own by now.
 
-    As long as it is open, a worker that is killed in the middle of an answer leaves the reader waiting for the rest
-    for ever, since there is still somebody who could write it.
+    As long as they are open, a worker that is killed in the middle of an answer leaves its reader here waiting for the
+    rest for ever, since there is still somebody who could write it; likewise whoever is sending it a part.
     """
     pool._result_queue._writer.close()
+    pool._call_queue._reader.close()
 
 
 def _outlive_nobody(parent: int) -> None:
@@ -139,7 +132,7 @@ def _outlive_nobody(parent: int) -> None:
     """
     if hasattr(os, "setpgrp"):
         os.setpgrp()
-    # The pool would replace a process that has grown, and cannot: see _only_the_worker_writes.
+    # The pool would replace a process that has grown, and cannot: see _leave_to_the_worker.
     process_executor._MAX_MEMORY_LEAK_SIZE = float("inf")
 
     def watch() -> None:
@@ -152,7 +145,6 @@ def _outlive_nobody(parent: int) -> None:
     threading.Thread(target=watch, daemon=True).start()
 
 
-def _load() -> int:
-    """Load what pricing a part needs; return the process, which is its process group too."""
+def _load() -> None:
+    """Load what pricing a part needs."""
     import_module("legworth.refresh.tasks")
-    return os.getpid()

@@ -7,9 +7,10 @@ from __future__ import annotations
 
 import os
 import signal
+import struct
 import subprocess
+import sys
 import tempfile
-import threading
 import time
 from collections.abc import Callable
 from concurrent.futures import Future
@@ -192,7 +193,25 @@ def with_solver(part: PartInput, name: str) -> PartInput:
     return replace(part, solver=name)  # type: ignore[arg-type]
 
 
-def answer_cut_short(delay: float) -> bytes:
-    """Return an answer too long for the pipe, from a process that is killed when it has sent some of it."""
-    threading.Timer(delay, os.kill, (os.getpid(), signal.SIGKILL)).start()
-    return bytes(150_000_000)
+def half_an_answer(hang: bool) -> None:
+    """Send the first half of an answer and die, or hang."""
+    frame = sys._getframe()
+    while "result_queue" not in frame.f_locals:
+        assert frame.f_back is not None
+        frame = frame.f_back
+    writer = frame.f_locals["result_queue"]._writer
+    os.write(writer.fileno(), struct.pack("!i", 1000) + bytes(500))
+    if hang:
+        time.sleep(3600)
+    os._exit(9)
+
+
+def stop_and_be_killed(seconds: float) -> None:
+    """Read nothing more from now on, and be killed after some time."""
+    subprocess.Popen(["sh", "-c", f"sleep {seconds}; kill -KILL {os.getpid()}"])
+    os.kill(os.getpid(), signal.SIGSTOP)
+
+
+def length(data: bytes) -> int:
+    """Number of bytes."""
+    return len(data)
