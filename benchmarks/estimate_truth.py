@@ -37,15 +37,17 @@ ANEW = ("curves+", "deterministic+")
 @click.option("--whole", is_flag=True, help="The whole demo carrier instead of the part around one hub.")
 @click.option("--paths", default=200, show_default=True, help="Booking horizons played for revenue.")
 @click.option("--anew", default=5, show_default=True, help="Of these, played by controls prepared path by path.")
+@click.option("--prepared", default=16, show_default=True, help="How often control is prepared anew in the history.")
+@click.option("--means-alone", is_flag=True, help="End after the means.")
 @click.option("--seed", default=20250108, show_default=True, help="Seed of the random generator.")
-def main(dates: int, *, whole: bool, paths: int, anew: int, seed: int) -> None:
+def main(dates: int, *, whole: bool, paths: int, anew: int, prepared: int, means_alone: bool, seed: int) -> None:
     """Simulate a history and hold estimates against its truth."""
     with tempfile.TemporaryDirectory() as name:
         folder = Path(name)
         day = service_day(None if whole else AROUND)
         network = read_service_day(day, folder / "day")
         begin = time.perf_counter()
-        simulated = simulate_history(demo_plan(network, world.AS_OF, dates, seed=seed))
+        simulated = simulate_history(replace(demo_plan(network, world.AS_OF, dates, seed=seed), prepared=prepared))
         rows = write_history(simulated, day, world.AS_OF, folder)
         click.echo(
             f"{rows:,} readings, {network.n_products:,} products on {dates:,} dates; "
@@ -56,6 +58,8 @@ def main(dates: int, *, whole: bool, paths: int, anew: int, seed: int) -> None:
             f"intervals: {(share <= 0).mean():.1%} closed, {((share > 0) & (share < 1)).mean():.1%} closed midway"
         )
         means(simulated)
+        if means_alone:
+            return
         intervals(simulated)
         revenue(folder, paths, anew)
 
@@ -76,9 +80,11 @@ def means(simulated: SimulatedHistory) -> None:
         click.echo(f"    within two standard errors: {truth.within:.1%} of {network.n_products:,} products")
         if closing == "shared":
             _line("    deviation of a departure", [*spread, truth.deviation_of()])
-    truth, _ = mean_truth(simulated, simulated.flags_alone(), as_of)
-    _line("estimate without open_share", [*(truth.bias_of(at) for at in range(len(classes))), truth.bias])
-    click.echo(f"    within two standard errors: {truth.within:.1%} of {network.n_products:,} products")
+    for label, throughout in (("since the reading before", True), ("at the reading", False)):
+        truth, _ = mean_truth(simulated, simulated.flags_alone(throughout=throughout), as_of)
+        figures = [truth.bias_of(at) for at in range(len(classes))]
+        _line(f"estimate without open_share, open {label}", [*figures, truth.bias])
+        click.echo(f"    within two standard errors: {truth.within:.1%} of {network.n_products:,} products")
     true = truth.true
     for label, naive in naive_means(simulated, as_of).items():
         known = ~np.isnan(naive)

@@ -208,16 +208,23 @@ class SimulatedHistory:
             open_share=share,
         )
 
-    def flags_alone(self) -> BookingHistory:
-        """Return the history of all dates as a table without ``open_share`` tells it: open at the readings, or not."""
+    def flags_alone(self, *, throughout: bool) -> BookingHistory:
+        """Return the history of all dates as a table without ``open_share`` tells it.
+
+        Parameters
+        ----------
+        throughout
+            Whether its flag says that the class was open all the time since the reading before, or at the reading.
+        """
         found = self.history()
-        is_open = self.open.transpose(1, 0, 2).ravel()
-        first = np.zeros(len(is_open), dtype=bool)
+        flag = (self.open_share >= 1.0 if throughout else self.open).transpose(1, 0, 2).ravel()
+        first = np.zeros(len(flag), dtype=bool)
         first[found.start[:-1]] = True
-        before = np.where(first, is_open, np.append(True, is_open[:-1]))
+        before = np.where(first, flag, np.append(True, flag[:-1]))
         rise = np.where(first, found.booked, np.diff(found.booked, prepend=0.0))
-        through, shut = is_open & before, ~is_open & ~before & (rise <= 0)
-        return replace(found, open=through, open_share=np.where(through, 1.0, np.where(shut, 0.0, np.nan)))
+        through, shut = flag & before, ~flag & ~before & (rise <= 0)
+        share = np.where(through, 1.0, np.where(shut, 0.0, np.nan))
+        return replace(found, open=through, open_share=share, begins_open=before)
 
     def tables(self, as_of: float | None = None, together: int = 20_000_000) -> Iterator[pa.Table]:
         """Yield the history as tables of the schema ``history``, date by date."""

@@ -44,6 +44,9 @@ class BookingHistory:
     open_share
         (R,) share of the time of that interval during which it was open, NaN where that is not known; None where
         it is known of no reading. Where ``open`` holds it is 1.
+    begins_open
+        (R,) whether the class is known to have been open when that interval began; None where the intervals that
+        follow one open throughout are all that is known of it.
     """
 
     itinerary: NameArray
@@ -57,6 +60,7 @@ class BookingHistory:
     cancelled: FloatArray
     open: BoolArray
     open_share: FloatArray | None = None
+    begins_open: BoolArray | None = None
 
     @property
     def n_series(self) -> int:
@@ -89,4 +93,5 @@ class BookingHistory:
             cancelled=self.cancelled[rows],
             open=self.open[rows],
             open_share=None if self.open_share is None else self.open_share[rows],
+            begins_open=None if self.begins_open is None else self.begins_open[rows],
         )

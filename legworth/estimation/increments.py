@@ -43,7 +43,7 @@ class Increments:
     share
         (R,) share of the interval during which it was open: 1 where ``open``, NaN where that is not known.
     edge
-        (R,) whether it was not open throughout, for a share not known, though open in the interval before.
+        (R,) whether it was not open throughout, for a share not known, though open when the interval began.
     """
 
     days: FloatArray
@@ -96,9 +96,10 @@ class Increments:
         is_open = history.open[rows]
         share = np.full(len(is_open), np.nan) if history.open_share is None else history.open_share[rows]
         share = np.where(is_open, 1.0, share)
+        begins_open = np.append(False, is_open[:-1]) if history.begins_open is None else history.begins_open[rows]
         if not np.all(known):
             days_before, owner, gross = days_before[known], owner[known], gross[known]
-            is_open, share = is_open[known], share[known]
+            is_open, share, begins_open = is_open[known], share[known], begins_open[known]
         grid, cell = _grid(days_before) if days is None else (days, nearest(days, days_before))
         begins = np.ones(len(owner), dtype=bool)
         begins[1:] = owner[1:] != owner[:-1]
@@ -110,13 +111,11 @@ class Increments:
             heads = np.flatnonzero(~again)
             count, is_open = np.add.reduceat(count, heads), np.logical_and.reduceat(is_open, heads)
             share = np.where(is_open, 1.0, np.where(np.diff(np.append(heads, len(again))) > 1, np.nan, share[heads]))
-            cell, owner, begins = cell[heads], owner[heads], begins[heads]
+            cell, owner, begins, begins_open = cell[heads], owner[heads], begins[heads], begins_open[heads]
         first = np.zeros(len(cell), dtype=np.int16)
         first[1:] = cell[:-1] + 1
         first[begins] = 0
         heads = np.flatnonzero(begins)
-        open_before = np.zeros(len(is_open), dtype=bool)
-        open_before[1:] = is_open[:-1] & ~begins[1:]
         return cls(
             days=grid,
             series=owner[heads].astype(np.int64),
@@ -126,7 +125,7 @@ class Increments:
             count=count,
             open=is_open,
             share=share,
-            edge=open_before & np.isnan(share),
+            edge=begins_open & np.isnan(share) & ~begins,
         )
 
     def __len__(self) -> int:

@@ -96,7 +96,7 @@ class Readings:
         """Sorted readings as a history; names that no reading uses are left out."""
         at = self.start[:-1]
         used, itinerary = np.unique(self.itinerary[at], return_inverse=True)
-        through, share = self._through()
+        through, share, begins_open = self._through()
         nobody = np.broadcast_to(0.0, len(self.booked))
         return BookingHistory(
             itinerary=names[used],
@@ -110,10 +110,11 @@ class Readings:
             cancelled=nobody if self.cancelled is None else self.cancelled,
             open=through,
             open_share=share,
+            begins_open=begins_open,
         )
 
-    def _through(self) -> tuple[BoolArray, FloatArray]:
-        """Whether the class was open all through the interval, and the share of it, NaN where that is not known.
+    def _through(self) -> tuple[BoolArray, FloatArray, BoolArray]:
+        """Whether the class was open all through an interval, in which share of it (NaN if unknown), at its beginning.
 
         The interval before the first reading is taken to be like the moment that ends it.
         """
@@ -124,7 +125,7 @@ class Readings:
         closed = ~self.open & ~before & ~(np.where(self.first, self.gross, rise) > 0)
         share = np.where(through, 1.0, np.where(closed, 0.0, np.nan))
         if self.open_share is None:
-            return through, share
+            return through, share, before
         known = ~np.isnan(self.open_share)
         share = np.where(known, self.open_share, share)
-        return share >= 1.0, share
+        return share >= 1.0, share, before

@@ -112,7 +112,7 @@ def test_the_demo_history_is_read_without_a_word(tmp_path: Path) -> None:
     pyarrow.parquet.write_table(bare, tmp_path / "bare.parquet")
     names, classes = folder.history_name, folder.network.fare_classes
     without = read_history(tmp_path / "bare.parquet", names, classes, folder.network.as_of, may_reopen=True).history
-    alone = found.flags_alone()
+    alone = found.flags_alone(throughout=False)
     today = np.datetime64(world.AS_OF.date(), "D")
     here, there = (each.chosen(np.flatnonzero(each.departure < today)) for each in (alone, without))
     assert here.open.sum() == there.open.sum() < here.n_readings
@@ -120,6 +120,9 @@ def test_the_demo_history_is_read_without_a_word(tmp_path: Path) -> None:
     assert there.open_share is not None
     assert np.isnan(here.open_share).sum() == np.isnan(there.open_share).sum() > 0
     assert (here.open_share == 0).sum() == (there.open_share == 0).sum() > 0
+    assert here.begins_open is not None
+    assert there.begins_open is not None
+    assert here.begins_open.sum() == there.begins_open.sum() > here.open.sum()
     direct = found.history(float(np.datetime64(world.AS_OF.replace(tzinfo=None), "s").astype(int)) / 86_400)
     assert direct.n_readings == rows
     assert direct.booked.sum() == read.history.booked.sum()
@@ -148,6 +151,16 @@ def test_means_are_recovered_where_naive_averages_are_low(carrier: SimulatedHist
     for naive, low in zip(naive_means(carrier, as_of).values(), (-0.2, -0.15), strict=True):
         known = ~np.isnan(naive)
         assert naive[known].sum() / truth.true[known].sum() - 1 < low
+
+
+def test_flags_alone_recover_most_of_the_means(carrier: SimulatedHistory) -> None:
+    """A flag for the whole interval says more than one at the reading, which misses what closed and opened before."""
+    as_of = carrier.plan.departure[-15]
+    whole, _ = mean_truth(carrier, carrier.flags_alone(throughout=True), as_of)
+    moment, _ = mean_truth(carrier, carrier.flags_alone(throughout=False), as_of)
+    assert whole.within >= 0.9
+    assert abs(whole.bias) <= 0.05
+    assert -0.11 <= moment.bias < whole.bias - 0.02
 
 
 def test_deviations_are_recovered(carrier: SimulatedHistory) -> None:

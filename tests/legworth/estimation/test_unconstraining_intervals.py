@@ -74,6 +74,18 @@ def test_intervals_closed_in_part_follow_open_ones() -> None:
     assert np.isnan(cut.share).tolist() == [False, True, True, True, False, True, True, True]
 
 
+def test_intervals_closed_in_part_begin_open_where_that_is_known() -> None:
+    readings = [(40, 1, 0, True), (30, 1, 0, False), (20, 1, 0, False), (10, 2, 0, True), (5, 2, 0, False)]
+    history = replace(history_of(readings), begins_open=np.array([True, True, False, False, True]))
+    assert Increments.of(history).edge.tolist() == [False, True, False, False, True]
+    both = history_of(readings, readings)
+    twice = replace(both, begins_open=np.tile([True, True, False, True, False], 2))
+    assert Increments.of(twice, series=np.array([1])).edge.tolist() == [False, True, False, False, False]
+    assert Increments.of(twice, least_days=np.array([20.0, 20.0])).edge.tolist() == [False, True, False] * 2
+    one_cell = Increments.of(replace(history, begins_open=np.ones(5, dtype=bool)), days=np.array([40.0, 5.0]))
+    assert one_cell.edge.tolist() == [False, True]
+
+
 def test_a_known_open_share_is_taken() -> None:
     history = history_of([(30, 1, 0, True), (10, 2, 0, False), (0, 2, 0, False)])
     cut = Increments.of(replace(history, open_share=np.array([np.nan, 0.25, np.nan])))
