@@ -17,6 +17,7 @@ from legworth.schedules.gtfs_calls import TripLegs, trip_legs
 from legworth.schedules.gtfs_runs import Runs, runs_of
 from legworth.schedules.gtfs_stations import feed_stations
 from legworth.schedules.gtfs_tables import GtfsTables, read_tables
+from legworth.schedules.gtfs_through import through_legs
 from legworth.schedules.local_time import offsets_at
 from legworth.schedules.operating_days import Window
 from legworth.schedules.places import Places
@@ -140,10 +141,12 @@ def read_gtfs(
     _note_unknown(tables, stations.of_stop, known, places, legs)
     if faults.errors:
         return None
-    return _timetable(known, stations.zone, legs, runs, capacity, kinds, window, left_out)
+    timetable = _timetable(tables, known, stations.zone, legs, runs, capacity, kinds, window, left_out)
+    return None if faults.errors else timetable
 
 
 def _timetable(
+    tables: GtfsTables,
     places: Places,
     zone: str,
     legs: TripLegs,
@@ -173,29 +176,10 @@ def _timetable(
         arrives_offset=offsets_at(arrives, at_zone[destination], zones) // 60,
         capacity=capacity[runs.trip][run],
         kind=kinds[runs.trip][run],
-        through=_through(runs, run, origin, destination, departs, arrives),
+        through=through_legs(tables, runs, run, (origin, destination), (departs, arrives)),
         traffic=Traffic(legs.board[leg], legs.alight[leg], np.full(len(leg), -1), Traffic.free(0).codes),
         left_out=left_out,
     )
-
-
-def _through(
-    runs: Runs, run: IntArray, origin: IntArray, destination: IntArray, departs: IntArray, arrives: IntArray
-) -> IntArray:
-    """Next leg of the same vehicle: of the same run, or of the next run of the same block."""
-    through = np.full(len(run), -1)
-    inside = np.flatnonzero(run[1:] == run[:-1])
-    through[inside] = inside + 1
-    first = np.searchsorted(run, np.arange(len(runs)))
-    last = np.searchsorted(run, np.arange(len(runs)), side="right") - 1
-    blocked = np.flatnonzero((runs.block >= 0) & (last >= first))
-    order = blocked[np.lexsort((departs[first[blocked]], runs.day[blocked], runs.block[blocked]))]
-    one, other = order[:-1], order[1:]
-    same = (runs.block[one] == runs.block[other]) & (runs.day[one] == runs.day[other])
-    before, after = last[one], first[other]
-    joined = same & (destination[before] == origin[after]) & (arrives[before] <= departs[after])
-    through[before[joined]] = after[joined]
-    return through
 
 
 def _seats_of_trips(

@@ -90,22 +90,6 @@ def test_a_table_of_stations_comes_first(tmp_path: Path) -> None:
     assert places.timezone.tolist()[0] == "Europe/Vienna"
 
 
-def test_through_legs_run_along_trips_and_blocks(tmp_path: Path) -> None:
-    timetable = sound(as_folder(FEED, tmp_path), Window(date(2027, 3, 27), date(2027, 3, 27)))
-    onward = {
-        str(timetable.name[leg]): str(timetable.name[next_leg])
-        for leg, next_leg in enumerate(timetable.through.tolist())
-        if next_leg >= 0
-    }
-    assert onward == {
-        "up_1-0327": "up_1-0327B",
-        "up_1-0327B": "down1-0327",
-        "down1-0327": "down1-0327B",
-        "night-0327": "night-0327B",
-        "night-0327B": "night-0327C",
-    }
-
-
 def test_where_passengers_may_not_board_or_alight_no_ride_begins_or_ends(tmp_path: Path) -> None:
     timetable = sound(as_folder(FEED, tmp_path), Window(date(2027, 3, 27), date(2027, 3, 27)))
     at = {name: leg for leg, name in enumerate(timetable.name.tolist())}
