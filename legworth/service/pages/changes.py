@@ -3,31 +3,20 @@
 from __future__ import annotations
 
 import asyncio
-import json
-from typing import Any
 
 from fastapi import Request
 from starlette.responses import HTMLResponse, Response
 
 from legworth.refresh.checks import check_line
 from legworth.service.errors import UnknownError
+from legworth.service.pages.changes_file import read_changes
 from legworth.service.pages.routes import page_router, planner_of
-from legworth.store import Night
 
-__all__ = ["pages", "read_changes"]
+__all__ = ["pages"]
 
 pages = page_router()
 REPORT_POLICY = "default-src 'none'; style-src 'unsafe-inline'; img-src data:; base-uri 'none'; frame-ancestors 'none'"
 """The written report holds its style and pictures in itself, and needs no script."""
-
-
-def read_changes(night: Night) -> dict[str, Any]:
-    """What ``changes.json`` of a night says; nothing if it has none or it cannot be read."""
-    try:
-        found = json.loads((night.folder / "changes.json").read_bytes())
-    except (OSError, ValueError):
-        return {}
-    return found if isinstance(found, dict) else {}
 
 
 @pages.get("/changes")
@@ -44,12 +33,7 @@ async def changes(request: Request) -> Response:
         checks=sorted(checks),
         certified=sum(part.certified for part in manifest.parts),
         taken_over=sum(part.taken_over_from is not None for part in manifest.parts),
-        last=found.get("last"),
-        note=found.get("note") or "",
-        prices=found.get("prices"),
-        departures=found.get("departures"),
-        products=found.get("products"),
-        revenue=found.get("revenue"),
+        changes=found,
         written=(night.folder / "changes.html").exists(),
     )
 

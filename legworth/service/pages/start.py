@@ -12,7 +12,7 @@ from starlette.responses import JSONResponse, RedirectResponse, Response
 
 from legworth.refresh.checks import check_line
 from legworth.service.interface import state_of
-from legworth.service.pages.changes import read_changes
+from legworth.service.pages.changes_file import read_changes
 from legworth.service.pages.night_index import NightIndex, Row
 from legworth.service.pages.rendering import address
 from legworth.service.pages.routes import page_router, planner_of
@@ -46,7 +46,6 @@ def _first(index: NightIndex, store: Store) -> dict[str, Any]:
     index.need_disagreements()
     manifest = index.night.manifest
     changes = read_changes(index.night)
-    moves = ((changes.get("prices") or {}).get("moves") or [])[:FIRST]
     checks = check_lines(manifest.checks)
     total = index.one("SELECT count(*) AS products, coalesce(sum(at_stake), 0) AS money FROM disagreements")
     return {
@@ -54,7 +53,8 @@ def _first(index: NightIndex, store: Store) -> dict[str, Any]:
         "failed": [line for passed, line in checks if not passed],
         "checks": len(checks),
         "stopped": _stopped(store, index.night.number),
-        "moves": moves,
+        "moves": changes.prices.moves[:FIRST] if changes.prices is not None else [],
+        "moves_unread": "prices" in changes.unread,
         "total": total,
         "disagreements": index.disagreements("true", (), "at_stake DESC, number, fare_class", FIRST),
         "dearest": index.rows(
