@@ -6,6 +6,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
+import numpy.typing as npt
 import pandas as pd
 
 from legworth.schedules.flights import timetable_of
@@ -13,7 +14,7 @@ from legworth.schedules.operating_days import Window
 from legworth.schedules.periodic import Departures, PeriodicLegs, departures_of
 from legworth.schedules.places import Places
 from legworth.schedules.seats import ANY_EQUIPMENT, UNKNOWN
-from legworth.schedules.ssim_layout import SEGMENT
+from legworth.schedules.ssim_layout import FLIGHT_LEG, SEGMENT
 from legworth.schedules.ssim_legs import read_legs
 from legworth.schedules.ssim_records import read_records
 from legworth.schedules.ssim_segments import Segments, read_segments, restriction_rows
@@ -97,7 +98,8 @@ def read_ssim(
         left_out[f"leg records of service type {kind}"] = int((found.service == kind).sum())
     legs = _with_seats(_only(found.legs, taken), seats)
     dated = departures_of(legs, found.places, window, faults, LONGEST_LEG)
-    dated = _without_duplicates(legs, segments, dated, options, left_out, faults)
+    carrier = found.records.text(FLIGHT_LEG["airline_designator"])
+    dated = _without_duplicates(legs, carrier, segments, dated, options, left_out, faults)
     timetable = timetable_of(legs, dated, found.places, window, traffic, faults)
     return None if faults.errors else replace(timetable, left_out=left_out)
 
@@ -125,6 +127,7 @@ def _next_record(legs: PeriodicLegs) -> IntArray:
 
 def _without_duplicates(
     legs: PeriodicLegs,
+    carrier: npt.NDArray[np.bytes_],
     segments: Segments,
     dated: Departures,
     options: SsimOptions,
@@ -134,9 +137,10 @@ def _without_duplicates(
     """Leave out legs under which another flight is sold, so that no seat is counted twice.
 
     A record with data element 50 is one. So is a departure of a flight that the operating leg names in data element
-    10, if it is between the same stations at the same instant.
+    10, if it is between the same stations at the same instant, and one of which only the operating carrier is told, if
+    that carrier has a leg of its own there and then.
     """
-    if len(dated) == 0 or not (segments.operated_as or segments.sold_as):
+    if len(dated) == 0 or not (segments.operated_as or segments.operated_by or segments.sold_as):
         return dated
     flights, names = pd.factorize(pd.Series(legs.flight, dtype=object))
     position = {str(name): at for at, name in enumerate(names)}
@@ -167,6 +171,15 @@ def _without_duplicates(
             flights[dated.record] * span + when_and_where,
             np.repeat(flight, ends - begins) * span + when_and_where[rows],
         )
+    if segments.operated_by:
+        carriers, by = np.unique(np.char.strip(carrier), return_inverse=True)
+        told = np.full(len(legs), -1)
+        for record, name in segments.operated_by.items():
+            at = int(np.searchsorted(carriers, name.encode()))
+            if at < len(carriers) and carriers[at] == name.encode() and at != by[record]:
+                told[record] = at
+        theirs = (by[dated.record] * span + when_and_where)[~marketed]
+        marketed |= (told[dated.record] >= 0) & np.isin(told[dated.record] * span + when_and_where, theirs)
     own = (flights[dated.record] * span + when_and_where)[~marketed]
     unseen = (operating[dated.record] >= 0) & ~np.isin(operating[dated.record] * span + when_and_where, own)
     left_out["legs sold under another flight (codeshares)"] = int((marketed & ~unseen).sum())

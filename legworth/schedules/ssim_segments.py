@@ -1,7 +1,8 @@
 """Segment records of an airline schedule: codeshares and traffic restrictions.
 
 Data elements that are read, with their meaning from memory of the manual: 8, a traffic restriction of one segment; 10,
-the flights under which other carriers sell the leg; 50, the flight that operates the leg. The others are left alone.
+the flights under which other carriers sell the leg; 50, the flight that operates the leg; 2, 9 and 127, the carrier
+that operates it, for a codeshare, a wet lease or in words. The others are left alone.
 """
 
 from __future__ import annotations
@@ -21,7 +22,9 @@ from network.faults import Faults
 __all__ = ["Segments", "read_segments", "restriction_rows"]
 
 RESTRICTION, SOLD_AS, OPERATED_AS = b"008", b"010", b"050"
+OPERATED_BY = (b"002", b"009", b"127")
 ANY_POINT = b"QQQ"
+CARRIER = re.compile(r"(?=\d?[A-Z])([A-Z0-9]{2}[A-Z]?)(?![A-Z0-9])")
 FLIGHT = re.compile(r"([A-Z0-9]{2}[A-Z ]?) *0*([1-9]\d{0,3}) *([A-Z]?)")
 
 
@@ -29,11 +32,13 @@ FLIGHT = re.compile(r"([A-Z0-9]{2}[A-Z ]?) *0*([1-9]\d{0,3}) *([A-Z]?)")
 class Segments:
     """What segment records say, by position of the leg record that they follow.
 
-    ``operated_as`` names the flight that operates a leg, ``sold_as`` the flights that sell it besides. Restrictions
-    are triples of leg, off point (None for every one) and code.
+    ``operated_as`` names the flight that operates a leg, ``operated_by`` the carrier where only that is told, and
+    ``sold_as`` the flights that sell it besides. Restrictions are triples of leg, off point (None for every one) and
+    code.
     """
 
     operated_as: dict[int, str]
+    operated_by: dict[int, str]
     sold_as: dict[int, tuple[str, ...]]
     restrictions: tuple[tuple[int, bytes | None, bytes], ...]
 
@@ -42,6 +47,7 @@ class Segments:
         at = {old: new for new, old in enumerate(kept.tolist())}
         return Segments(
             {at[leg]: name for leg, name in self.operated_as.items() if leg in at},
+            {at[leg]: name for leg, name in self.operated_by.items() if leg in at},
             {at[leg]: names for leg, names in self.sold_as.items() if leg in at},
             tuple((at[leg], off, code) for leg, off, code in self.restrictions if leg in at),
         )
@@ -66,7 +72,7 @@ def read_segments(records: SsimRecords, faults: Faults) -> Segments:
     follows = (before >= 0) & complete
     segments, before = segments.take(follows), before[follows]
     if len(segments) == 0:
-        return Segments({}, {}, ())
+        return Segments({}, {}, {}, ())
     _note_strays(legs, segments, before, faults)
     element = segments.text(SEGMENT["data_element_identifier"])
     numeric = np.array([value.isdigit() and len(value) == 3 for value in element.tolist()], dtype=bool)
@@ -102,7 +108,13 @@ def read_segments(records: SsimRecords, faults: Faults) -> Segments:
         (int(before[row]), None if off[row] == ANY_POINT else bytes(off[row]), bytes(data[row].strip()[:1]))
         for row in restricted.tolist()
     )
-    return Segments({leg: names[0] for leg, names in flights[OPERATED_AS].items()}, flights[SOLD_AS], restrictions)
+    operated_as = {leg: names[0] for leg, names in flights[OPERATED_AS].items()}
+    operated_by: dict[int, str] = {}
+    for row in np.flatnonzero(np.isin(element, OPERATED_BY) & of_leg).tolist():
+        carrier, leg = CARRIER.match(data[row].decode().lstrip("/ ")), int(before[row])
+        if carrier is not None and leg not in operated_as:
+            operated_by[leg] = carrier[1]
+    return Segments(operated_as, operated_by, flights[SOLD_AS], restrictions)
 
 
 def _note_strays(legs: SsimRecords, segments: SsimRecords, before: IntArray, faults: Faults) -> None:

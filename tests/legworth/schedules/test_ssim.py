@@ -299,8 +299,11 @@ SOLD_AS = Leg(carrier="YY", number=4001, configuration="")
             SOLD_AS.but(segments=(Segment(50, "ZQ 0010", "AAA", "BBB"),)),
             OPERATING.but(segments=(Segment(10, "YY 4001"),)),
         ],
+        [SOLD_AS.but(segments=(Segment(2, "ZQ"),)), OPERATING],
+        [SOLD_AS.but(segments=(Segment(127, "ZQ /STERNKAP LINES"),)), OPERATING],
+        [SOLD_AS.but(segments=(Segment(127, "/ZQ"),)), OPERATING],
     ],
-    ids=["element 50", "element 10", "both"],
+    ids=["element 50", "element 10", "both", "element 2", "element 127", "element 127 after a stroke"],
 )
 def test_codeshares_are_not_counted_twice(legs: list[Leg]) -> None:
     timetable = sound(file_of(legs))
@@ -323,6 +326,23 @@ def test_codeshares_operated_outside_the_file() -> None:
     assert "YY7, which is not in this file" in str(faults.warnings[0])
     kept = sound(file_of(legs), ONE_DAY, options=SsimOptions(partner_legs=True))
     assert kept.name.tolist() == ["ZQ10-0301", "ZQ4001-0301"]
+
+
+@pytest.mark.parametrize(
+    "told",
+    [Segment(127, "YY SOMEBODY"), Segment(127, "ZQX"), Segment(127, "ZQUICK AIR"), Segment(3, "ZQ"), Segment(127, "")],
+    ids=["its own carrier", "another carrier", "a name", "the owner of the aircraft", "nothing"],
+)
+def test_a_leg_is_no_codeshare_by_what_does_not_name_its_operator(told: Segment) -> None:
+    timetable = sound(file_of([OPERATING, SOLD_AS.but(configuration="Y100", segments=(told,))]), ONE_DAY)
+    assert sorted(timetable.name.tolist()) == ["YY4001-0301", "ZQ10-0301"]
+
+
+def test_a_leg_operated_by_another_carrier_without_a_leg_of_its_own_is_counted() -> None:
+    """A wet lease has one record, that of the carrier that sells it."""
+    leased = SOLD_AS.but(departs=700, arrives=790, configuration="Y100", segments=(Segment(9, "ZQ"),))
+    timetable = sound(file_of([OPERATING, leased]), ONE_DAY)
+    assert timetable.name.tolist() == ["ZQ10-0301", "YY4001-0301"]
 
 
 def test_other_elements_are_left_alone() -> None:
