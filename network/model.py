@@ -131,7 +131,8 @@ class Network:
     fare_classes
         Names of the fare classes, best first.
     product_itinerary, product_class
-        (J,) position of the itinerary and of the fare class of every product, sorted by both.
+        (J,) position of the itinerary (int32 as read from a folder) and of the fare class (as few bits as hold it) of
+        every product, sorted by both.
     fare
         (J,) currency per passenger, net to the carrier.
     demand

@@ -106,7 +106,7 @@ def assemble_products(
         row = _match_demand(fares, demand, itineraries, classes, key, order, faults)
     return Products(
         classes,
-        itinerary[order],
+        itinerary[order].astype(np.int32),  # wide enough for the arithmetic that positions are put to
         fare_class[order],
         amount,
         mean=_taken(means, row, 0.0),

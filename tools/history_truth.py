@@ -82,7 +82,6 @@ def mean_truth(
         found = forecast(fit, network.product_itinerary, network.product_class, departure, whole)
         mean += found.mean
         spread += found.deviation**2
-    # Positions may be of eight bits, which a product of the two would overflow.
     product = network.product_itinerary.astype(np.int64) * len(network.fare_classes) + network.product_class
     n = len(dates)
     return (

@@ -31,6 +31,7 @@ def test_the_order_of_rows_changes_only_the_order(seed: int, tmp_path: Path) -> 
     assert by_name(found) == by_name(plain)
     assert found.legs.name.tolist() == folder.table("legs.csv")["leg"].tolist()
     assert found.itinerary.tolist() == folder.table("itineraries.csv")["itinerary"].tolist()
+    assert found.product_itinerary.dtype == np.int32
     key = found.product_itinerary * len(found.fare_classes) + found.product_class
     assert np.all(np.diff(key) > 0)
 
