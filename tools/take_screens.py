@@ -69,7 +69,7 @@ def publish_demo(store: Path, scratch: Path) -> None:
 
 @contextmanager
 def serving(store: Path) -> Iterator[str]:
-    """Serve a store on a free port of loopback; gives its address."""
+    """Serve a store on a free port of loopback; gives its address as soon as pages can be shown."""
     with socket.socket() as probe:
         probe.bind(("127.0.0.1", 0))
         port = probe.getsockname()[1]
@@ -79,7 +79,7 @@ def serving(store: Path) -> Iterator[str]:
     try:
         for _ in range(600):
             try:
-                urlopen(f"{address}/v1/health", timeout=5).close()
+                urlopen(f"{address}/", timeout=5).close()
                 break
             except (URLError, OSError):
                 if process.poll() is not None:

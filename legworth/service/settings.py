@@ -61,6 +61,10 @@ class ServiceSettings(BaseModel):
         ),
     ] = 1.0
 
+    def ledger_url(self, store: Path) -> str:
+        """SQLAlchemy URL of the ledger of a store."""
+        return self.database or f"sqlite:///{store.resolve() / 'seats.sqlite'}"
+
 
 def read_service_settings(path: Path | None) -> ServiceSettings:
     """Read the settings file; the defaults if there is none.

@@ -50,6 +50,8 @@ class ServiceState:
         Seconds by which the service's clock is ahead of the machine's, for drills; 0 otherwise.
     troubles
         What is wrong at present: for ``STORE`` and ``LEDGER`` the reason.
+    when_taken_over
+        Called with every night that is taken over while the service runs, in the loop that answers requests.
     """
 
     store: Store
@@ -61,6 +63,7 @@ class ServiceState:
     served: ServedNight | None = None
     ahead: float = 0.0
     troubles: dict[str, str] = field(default_factory=dict)
+    when_taken_over: list[Callable[[ServedNight], None]] = field(default_factory=list)
 
     @classmethod
     def start(cls, store: Store, settings: ServiceSettings, at: datetime | None = None) -> ServiceState:
@@ -79,7 +82,7 @@ class ServiceState:
             If the ledger cannot be opened or read. A damaged night is no reason not to start: the service answers that
             it has no night, takes cancellations, and follows the store until there is a sound one.
         """
-        ledger = Ledger(settings.database or f"sqlite:///{store.path.resolve() / 'seats.sqlite'}")
+        ledger = Ledger(settings.ledger_url(store.path))
         seats = SeatsLeft(ledger)
         writer = LedgerWriter(ledger, settings.waiting_limit, seats.note)
         state = cls(store, settings, ledger, writer, seats, TokenFile(store.path / "tokens.json"))
@@ -134,6 +137,8 @@ class ServiceState:
         # What a night holds stays for a day: the collector need not look through it again and again.
         gc.freeze()
         structlog.get_logger().info("night taken over", night=night.name)
+        for tell in self.when_taken_over:
+            tell(night)
 
     async def follow(self) -> None:
         """Look at the store, and at the orders that other services carried out, again and again."""

@@ -6,6 +6,7 @@ other host for anything, and a strict Content-Security-Policy says so to the bro
 
 from __future__ import annotations
 
+import asyncio
 from collections.abc import AsyncIterator
 from contextlib import asynccontextmanager
 from typing import TYPE_CHECKING
@@ -27,10 +28,15 @@ def install_pages(app: FastAPI) -> None:
     @asynccontextmanager
     async def running(app: FastAPI) -> AsyncIterator[None]:
         async with service_runs(app):
+            state = app.state.service
+            state.when_taken_over.append(planner.preparation.prepare)
+            if state.served is not None:
+                planner.preparation.prepare(state.served)
             try:
                 yield
             finally:
                 planner.solver.close()
+                await asyncio.to_thread(planner.preparation.close)
 
     app.state.planner, app.router.lifespan_context = planner, running
     for module in (start, route_map, leg, itinerary, disagreements, changes, sign_in):

@@ -134,7 +134,6 @@ async def disagreements(
 
 
 def _model(index: NightIndex, asked: Filter, page: int) -> dict[str, Any]:
-    index.need_disagreements()
     where, values = asked.where()
     total = index.rows(
         f"SELECT count(*) AS products, coalesce(sum(at_stake), 0) AS money FROM disagreements WHERE {where}", *values

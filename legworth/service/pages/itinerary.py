@@ -91,7 +91,7 @@ async def itinerary(request: Request, name: Name, n: Party = 1) -> Response:
     """Show an itinerary."""
     planner = await planner_of(request)
     part, row = await _itinerary(planner, name)
-    view = itinerary_view(part, name, state_of(request), planner.now)
+    view = itinerary_view(part, name, state_of(request), planner.now, planner.night.name)
     model = await asyncio.to_thread(_model, planner, part, row, n)
     return await planner.page("itinerary.html", view=view, row=row, n=n, **model)
 

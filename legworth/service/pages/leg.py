@@ -43,7 +43,7 @@ async def leg(request: Request, name: Name, all_: Annotated[bool, Query(alias="a
     """Show a leg."""
     planner = await planner_of(request)
     part, row = await _leg(planner, name)
-    view = leg_view(part, name, state_of(request), planner.now)
+    view = leg_view(part, name, state_of(request), planner.now, planner.night.name)
     model = await asyncio.to_thread(_model, planner, part, row, view.remaining, all_)
     return await planner.page("leg.html", view=view, row=row, all=all_, few=FEW, **model)
 
@@ -53,7 +53,7 @@ async def now(request: Request, name: Name) -> Response:
     """Seats and price now, for the page to show again and again."""
     planner = await planner_of(request)
     part, _ = await _leg(planner, name)
-    view = leg_view(part, name, state_of(request), planner.now)
+    view = leg_view(part, name, state_of(request), planner.now, planner.night.name)
     price = "" if view.price_now is None else f"{view.price_now:,.2f}"
     return JSONResponse({"sold": f"{view.sold:,}", "remaining": f"{view.remaining:,}", "price": price})
 

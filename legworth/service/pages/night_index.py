@@ -1,13 +1,13 @@
 """Lists over the whole night in force: legs, itineraries, stations and disagreements, in DuckDB.
 
-Small columns of all parts are read once for each night; a page then asks for the few rows that it shows.
+Small columns of all parts are read once for each night, by one thread, so that control keeps the other processors; a
+page then asks for the few rows that it shows.
 """
 
 from __future__ import annotations
 
 import json
 import re
-import threading
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from functools import cached_property
@@ -19,7 +19,7 @@ import duckdb
 from legworth.store import Night
 from network.errors import NightDamagedError
 
-__all__ = ["NightIndex", "Row"]
+__all__ = ["GivenUpError", "NightIndex", "Row"]
 
 Row = dict[str, Any]
 
@@ -27,15 +27,15 @@ LEGS = """
 CREATE TABLE legs AS
 SELECT l.leg, l.part, l.origin, l.destination, CAST(l.departs AS VARCHAR) AS departs,
        CAST(l.arrives AS VARCHAR) AS arrives, left(CAST(l.departs AS VARCHAR), 10) AS date,
-       l.capacity, b.bid_price, b.next_seat, b.expected_sales, c.adjusted_seat_value, c.leg_seat_value, c.agrees
+       l.capacity, b.bid_price, b.next_seat, b.expected_sales, c.adjusted_seat_value, c.leg_seat_value, c.agrees,
+       CAST(dense_rank() OVER (ORDER BY CAST(l.departs AS VARCHAR)) AS INTEGER) AS departs_rank
 FROM {legs} AS l JOIN {bid_prices} AS b USING (part, leg) JOIN {comparison} AS c USING (part, leg)
 """
 ITINERARIES = """
 CREATE TABLE itineraries AS
-SELECT CAST(row_number() OVER (ORDER BY i.itinerary) AS INTEGER) AS number, i.itinerary, i.part, i.legs,
-       f.origin, t.destination, f.departs, t.arrives, f.date,
-       CAST(rank() OVER (ORDER BY f.departs) AS INTEGER) AS departs_rank
-FROM {itineraries} AS i
+SELECT i.number, i.itinerary, i.part, i.legs, f.origin, t.destination, f.departs, t.arrives, f.date, f.departs_rank
+FROM (SELECT itinerary, part, legs, CAST(row_number() OVER (ORDER BY itinerary) AS INTEGER) AS number
+      FROM {itineraries}) AS i
 JOIN legs AS f ON f.leg = split_part(i.legs, ' ', 1)
 JOIN legs AS t ON t.leg = split_part(i.legs, ' ', -1)
 """
@@ -62,6 +62,10 @@ ORDER BY {order}
 """The millions of rows hold figures alone; names are joined to the few that a page shows."""
 
 
+class GivenUpError(Exception):
+    """The lists of a night were given up before they were made."""
+
+
 @dataclass(frozen=True)
 class _Facts:
     network: str
@@ -69,17 +73,12 @@ class _Facts:
 
 
 class NightIndex:
-    """Lists over one night.
+    """Lists over one night; `make` makes them, and everything else asks them.
 
     Parameters
     ----------
     night
         The night.
-
-    Raises
-    ------
-    NightDamagedError
-        If a table cannot be read.
     """
 
     def __init__(self, night: Night) -> None:
@@ -88,10 +87,28 @@ class NightIndex:
         self._connection = duckdb.connect(":memory:")
         self._connection.execute("SET TimeZone = 'UTC'")
         self._connection.execute("SET preserve_insertion_order = false")
-        self._lock = threading.Lock()
-        self._has_disagreements = False
-        for statement in (LEGS, ITINERARIES, STATIONS):
+        self._connection.execute("SET threads = 1")
+        self._given_up = False
+
+    def make(self) -> None:
+        """Make the lists, and all that pages look up again and again.
+
+        Raises
+        ------
+        NightDamagedError
+            If a table cannot be read.
+        GivenUpError
+            If it was given up meanwhile.
+        """
+        for statement in (LEGS, ITINERARIES, STATIONS, DISAGREEMENTS):
             self._make(statement)
+        for _ in (self.facts, self.dates, self.stations):
+            pass
+
+    def give_up(self) -> None:
+        """Let another thread's `make` end soon, without its lists."""
+        self._given_up = True
+        self._connection.interrupt()
 
     @cached_property
     def facts(self) -> _Facts:
@@ -128,7 +145,6 @@ class NightIndex:
 
     def disagreements(self, where: str, values: Sequence[Any], order: str, limit: int, offset: int = 0) -> list[Row]:
         """Some disagreements with their names; condition and order are on the columns of ``disagreements``."""
-        self.need_disagreements()
         statement = NAMED.format(where=where, order=order, limit=f"LIMIT {int(limit)} OFFSET {int(offset)}")
         return self.rows(statement, *values)
 
@@ -136,7 +152,6 @@ class NightIndex:
         self, where: str, values: Sequence[Any], order: str, size: int
     ) -> Iterator[list[tuple[Any, ...]]]:
         """All of them, piece by piece, with the columns of `NAMED`."""
-        self.need_disagreements()
         found = self._connection.cursor().execute(NAMED.format(where=where, order=order, limit=""), list(values))
         while rows := found.fetchmany(size):
             yield rows
@@ -148,18 +163,15 @@ class NightIndex:
             f"SELECT * FROM read_parquet({_text(_plain(path))}) WHERE {column} = ? ORDER BY {order}", value
         )
 
-    def need_disagreements(self) -> None:
-        """Make the list of disagreements, once; it is the longest."""
-        with self._lock:
-            if not self._has_disagreements:
-                self._make(DISAGREEMENTS)
-                self._has_disagreements = True
-
     def _make(self, statement: str) -> None:
         tables = ("legs", "bid_prices", "comparison", "itineraries", "stations", "connections")
         sources = {table: self._source(table) for table in tables if f"{{{table}}}" in statement}
+        if self._given_up:
+            raise GivenUpError(self.name)
         try:
-            self._connection.cursor().execute(statement.format(**sources))
+            self._connection.execute(statement.format(**sources))
+        except duckdb.InterruptException:
+            raise GivenUpError(self.name) from None
         except duckdb.Error as error:
             raise self._damaged(error) from None
 

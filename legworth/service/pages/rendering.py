@@ -57,14 +57,17 @@ def html(request: Request, template: str, *, status: int = 200, **model: Any) ->
     """
     state = state_of(request)
     health = health_of(state)
+    index = model.get("index")
+    as_of = health.as_of if index is None else index.night.manifest.as_of
     base = {
         "health": health,
-        "night_age": "" if health.as_of is None else age(state.now() - health.as_of.timestamp()),
+        "night_age": "" if as_of is None else age(state.now() - as_of.timestamp()),
         "caution": CAUTION,
         "version": __version__,
         "path": request.url.path,
         "signs": state.settings.read_needs_token,
         "index": None,
+        "trouble": "",
     }
     return HTMLResponse(_templates().get_template(template).render(base | model), status)
 

@@ -20,6 +20,7 @@ from starlette.types import Scope
 
 from legworth.service.interface import state_of
 from legworth.service.pages.night_index import NightIndex
+from legworth.service.pages.preparing import PagesWaitError, Preparation
 from legworth.service.pages.rendering import html
 from legworth.service.pages.solving import Solver
 from legworth.service.served_night import ServedNight
@@ -47,11 +48,10 @@ _Handler = Callable[[Request], Coroutine[Any, Any, Response]]
 
 @dataclass(eq=False)
 class PlannerState:
-    """What the pages share: the index of the night in force, and the solves asked for."""
+    """What the pages share: the night that they show, and the solves asked for."""
 
-    index: NightIndex | None = None
+    preparation: Preparation = field(default_factory=Preparation)
     solver: Solver = field(default_factory=Solver)
-    making: asyncio.Lock = field(default_factory=asyncio.Lock)
 
 
 @dataclass(frozen=True)
@@ -63,7 +63,10 @@ class Planner:
     request
         The request.
     night, index
-        The night in force, as requests are judged by it and as lists are made from it.
+        The night that is shown, as requests are judged by it and as lists are made from it: the one in force, or the
+        one shown before as long as the lists of that are not made.
+    trouble
+        Why the lists of the night in force cannot be made, if so.
     now
         The instant by the service's clock, seconds since 1970-01-01 UTC.
     """
@@ -72,6 +75,7 @@ class Planner:
     night: ServedNight
     index: NightIndex
     now: float
+    trouble: str
 
     async def part(self, name: str) -> ServedPart:
         """A part of the night."""
@@ -84,25 +88,23 @@ class Planner:
 
     async def page(self, template: str, **model: Any) -> Response:
         """Render a page away from the loop that answers requests."""
-        return await asyncio.to_thread(html, self.request, template, night=self.night, index=self.index, **model)
+        model |= {"night": self.night, "index": self.index, "trouble": self.trouble}
+        return await asyncio.to_thread(html, self.request, template, **model)
 
 
 async def planner_of(request: Request) -> Planner:
-    """Take the night in force, and index it if it is a new one.
+    """Take the night to show: the one in force if its lists are made, else the one shown before.
 
     Raises
     ------
     NoNightError
-        If there is none.
+        If none is in force.
+    PagesWaitError
+        If the lists of the first one are not made yet.
     """
-    state, planner = state_of(request), request.app.state.planner
-    night = state.night()
-    async with planner.making:
-        index = planner.index
-        if index is None or index.name != night.name:
-            index = await asyncio.to_thread(NightIndex, night.night)
-            planner.index = index
-    return Planner(request, night, index, state.now())
+    state, preparation = state_of(request), request.app.state.planner.preparation
+    shown = await preparation.latest(state.night())
+    return Planner(request, shown.night, shown.index, state.now(), preparation.trouble)
 
 
 def permitted(request: Request) -> bool:
@@ -134,6 +136,9 @@ class PageRoute(APIRoute):
                 response = _fault(request, HTTPStatus.BAD_REQUEST, "\n".join(faults))
             except HTTPException as error:
                 response = _fault(request, error.status_code, str(error.detail))
+            except PagesWaitError as error:
+                response = html(request, "preparing.html", status=error.http_status, line=str(error))
+                response.headers["Retry-After"] = "2"
             except LegworthError as error:
                 response = _fault(request, error.http_status, str(error))
             except Exception as error:

@@ -6,6 +6,7 @@ import asyncio
 import csv
 import os
 import shutil
+import time
 from collections.abc import Iterator
 from concurrent.futures import ThreadPoolExecutor
 from pathlib import Path
@@ -89,7 +90,10 @@ def service(chromium: Browser, store: Store) -> Iterator[str]:
         # Playwright runs a loop in this thread.
         with ThreadPoolExecutor(1) as thread:
             thread.submit(asyncio.run, process.listening()).result()
-        yield f"http://127.0.0.1:{process.port}"
+        address = f"http://127.0.0.1:{process.port}"
+        while httpx.get(address, timeout=30).status_code == httpx.codes.SERVICE_UNAVAILABLE:
+            time.sleep(0.1)  # the first pages are being made ready
+        yield address
     finally:
         process.stop()
 
