@@ -1,8 +1,9 @@
-"""The commands that look after a store of nights: list, show, compare, restore, query, verify, hand-over."""
+"""The commands that look after a store of nights: list, show, compare, restore, thin, query, verify, hand-over."""
 
 from __future__ import annotations
 
 import sys
+from contextlib import nullcontext
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -14,6 +15,7 @@ if TYPE_CHECKING:
     from datetime import datetime
 
     from legworth.store import Night, Store
+    from network.store_settings import StoreSettings
 
 __all__ = ["nights"]
 
@@ -123,6 +125,63 @@ def restore(context: click.Context, name: str, reason: str, *, as_json: bool) ->
         print_json({"in_force": night.name, "reason": reason})
         return
     click.echo(f"Night {night.name} is in force.")
+
+
+@nights.command(epilog=EXIT_CODES)
+@click.argument("folder", required=False, type=click.Path(path_type=Path))
+@click.option("--newest", type=click.IntRange(1), help="Newest nights kept, in place of keep_newest of FOLDER.")
+@click.option("--weeks", type=click.IntRange(0), help="Weeks of which a night is kept, in place of keep_weeks.")
+@click.option("--months", type=click.IntRange(0), help="Months of which a night is kept, in place of keep_months.")
+@click.option("--remove", is_flag=True, help="Remove the nights for good; without it they are only shown.")
+@AS_JSON
+@click.pass_context
+def thin(
+    context: click.Context,
+    folder: Path | None,
+    newest: int | None,
+    weeks: int | None,
+    months: int | None,
+    *,
+    remove: bool,
+    as_json: bool,
+) -> None:
+    """Show which nights section [store] of FOLDER/network.toml keeps, and why; remove the others with --remove.
+
+    The night in force, the one before it and the newest always stay. Every refresh thins by the same rule. Without
+    FOLDER give all three numbers.
+    """
+    from legworth.store.thinning import freed_bytes
+    from legworth.store.thinning_report import print_thinning, rule_words, thinning_as_json
+
+    store, rule = _store(context), _rule(folder, newest, weeks, months)
+    with store.lock() if remove else nullcontext():
+        plan = store.thinning(rule)
+        freed = freed_bytes(store.night(name).folder for name in plan.gone)
+        if remove:
+            store.thin(rule, f"by hand, keeping {rule_words(rule)}")
+    if as_json:
+        print_json(thinning_as_json(plan, rule, freed, remove))
+        return
+    print_thinning(plan, rule, freed, remove)
+
+
+def _rule(folder: Path | None, newest: int | None, weeks: int | None, months: int | None) -> StoreSettings:
+    """Read the rule of a network folder, with the numbers given in place of its own."""
+    from network import Faults, InputError
+    from network.settings import read_settings
+    from network.store_settings import StoreSettings
+
+    given = {"keep_newest": newest, "keep_weeks": weeks, "keep_months": months}
+    numbers = {name: number for name, number in given.items() if number is not None}
+    if folder is None:
+        if len(numbers) < len(given):
+            raise click.UsageError("name the network folder whose rule counts, or give --newest, --weeks and --months")
+        return StoreSettings(**numbers)
+    faults = Faults()
+    settings = read_settings(folder, faults)
+    if settings is None:
+        raise InputError(faults.errors)
+    return settings.store.model_copy(update=numbers)
 
 
 @nights.command(epilog=EXIT_CODES)

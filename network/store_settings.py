@@ -10,7 +10,7 @@ __all__ = ["StoreSettings"]
 
 
 class StoreSettings(BaseModel):
-    """How many nights the store keeps; the night in force and the newest are always kept."""
+    """How many nights the store keeps; the night in force, the one before it and the newest are always kept."""
 
     model_config = ConfigDict(frozen=True, extra="forbid")
 

@@ -9,6 +9,7 @@ from legworth.store.history import HistoryEntry
 from legworth.store.manifest import Check, FileEntry, Forced, Manifest, PartEntry
 from legworth.store.night import Night
 from legworth.store.store import Store
+from legworth.store.thinning import Thinning
 from legworth.store.unfinished import UnfinishedNight
 from network.errors import NightDamagedError, StoreBusyError, StoreError
 
@@ -24,5 +25,6 @@ __all__ = [
     "Store",
     "StoreBusyError",
     "StoreError",
+    "Thinning",
     "UnfinishedNight",
 ]

@@ -5,7 +5,7 @@ from __future__ import annotations
 import json
 import re
 import shutil
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
 from dataclasses import replace
 from datetime import datetime
@@ -20,7 +20,7 @@ from legworth.store.layout import ROOMS, open_folder
 from legworth.store.manifest import Manifest, night_name, night_number
 from legworth.store.night import MANIFEST, Night
 from legworth.store.sql import connect
-from legworth.store.thinning import kept_nights
+from legworth.store.thinning import Thinning, reasons_to_keep
 from legworth.store.unfinished import UnfinishedNight
 from network.errors import NightDamagedError, StoreBusyError, StoreError
 from network.store_settings import StoreSettings
@@ -210,31 +210,73 @@ class Store:
                 self._put_in_force(night, manifest, HistoryEntry.now("restore", name, digest(manifest), who, reason))
         return replace(night, expected=digest(manifest))
 
-    def thin(self, rule: StoreSettings) -> tuple[str, ...]:
-        """Remove the nights that the rule does not keep; never the one in force nor the newest.
+    def thinning(self, rule: StoreSettings) -> Thinning:
+        """Say what `thin` would do now; it needs no lock and changes nothing.
 
-        Files that a later night shares by hard link stay with it.
+        Raises
+        ------
+        NightDamagedError
+            If nobody can tell which night is in force.
+        """
+        nights = {night.name: night for night in self.nights()}
+        kept = reasons_to_keep(list(nights), rule)
+        mark = self._mark()
+        if mark is not None:
+            in_force = self._said(mark)[0]
+            before = self._before(in_force, nights)
+            kept |= {} if before is None else {before: "the night before the one in force"}
+            kept |= {in_force: "in force"} if in_force in nights else {}
+        return Thinning(
+            {name: kept[name] for name in nights if name in kept}, tuple(name for name in nights if name not in kept)
+        )
+
+    def thin(self, rule: StoreSettings, reason: str | None = None) -> tuple[str, ...]:
+        """Remove the nights that the rule does not keep; never the one in force, the one before it, nor the newest.
+
+        The one before is that which the night in force was compared with. Files that a later night shares by hard
+        link stay with it.
+
+        Parameters
+        ----------
+        rule
+            How many nights are kept.
+        reason
+            Goes into the history beside the user's name.
 
         Returns
         -------
         tuple of str
             Names of the nights removed, oldest first.
+
+        Raises
+        ------
+        StoreBusyError
+            If another process holds the store.
+        NightDamagedError
+            If nobody can tell which night is in force; nothing is removed.
         """
         with self.lock():
-            nights = self.nights()
-            keep = kept_nights([night.name for night in nights], rule)
-            mark = self._mark()
-            in_force = None if mark is None else self._said(mark)[0]
-            gone = tuple(night.name for night in nights if night.name not in keep and night.name != in_force)
+            gone = self.thinning(rule).gone
             with one_line_errors(self.path, "write to"):
                 for name in gone:
-                    append_entry(self.history_file, HistoryEntry.now("thin", name, None))
+                    append_entry(self.history_file, HistoryEntry.now("thin", name, None, reason=reason))
                     aside = self.path / "aside" / f"thinned-{name}"
                     self._folder(name).rename(aside)
                     shutil.rmtree(aside, ignore_errors=True)
                 if gone:
                     sync(self.path / "nights")
         return gone
+
+    def _before(self, in_force: str, nights: Mapping[str, Night]) -> str | None:
+        """The night that the one in force was compared with; where that cannot be told, the next earlier one."""
+        try:
+            before = nights[in_force].manifest.before
+            if before is None or before in nights:
+                return before
+        except (KeyError, NightDamagedError):
+            pass
+        number = night_number(in_force) or 0
+        return next((name for name in reversed(list(nights)) if (night_number(name) or 0) < number), None)
 
     def sql(self) -> duckdb.DuckDBPyConnection:
         """Open a DuckDB connection with a view per table over all nights; see `legworth.store.sql`."""

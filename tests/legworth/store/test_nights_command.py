@@ -12,6 +12,7 @@ import pytest
 
 from legworth.store import Check, Forced, Store
 from tests.commands import Outcome, run
+from tests.folders import Folder
 from tests.legworth.store.small_nights import PARTS, publish, publish_priced
 
 
@@ -184,7 +185,15 @@ def test_hand_over_is_valid_from_the_instant_of_publication_or_restoring(store: 
 
 @pytest.mark.parametrize(
     "arguments",
-    [("list",), ("show",), ("compare", "x"), ("query", "SELECT 1"), ("verify",), ("hand-over", "--to", "x")],
+    [
+        ("list",),
+        ("show",),
+        ("compare", "x"),
+        ("query", "SELECT 1"),
+        ("verify",),
+        ("thin", "--newest", "1", "--weeks", "0", "--months", "0"),
+        ("hand-over", "--to", "x"),
+    ],
 )
 def test_a_store_must_be_named_and_be_one(tmp_path: Path, arguments: tuple[str, ...]) -> None:
     unnamed = run("nights", *arguments)
@@ -207,3 +216,48 @@ def test_an_empty_store_has_no_night_in_force(tmp_path: Path) -> None:
     assert refused.code == 2
     assert "is given twice" in refused.err
     assert set(store.nights()[0].parts()) == set(PARTS)
+
+
+def test_thin_only_looks_until_it_is_told_to_remove(tmp_path: Path) -> None:
+    store = Store.open(tmp_path / "store", create=True)
+    names = [publish(store, float(day), day=day).name for day in range(5)]
+    folder = Folder().mutate("network.toml", lambda text: f"{text}\n[store]\nkeep_newest = 3\nkeep_weeks = 0\n")
+    place = folder.write(tmp_path / "folder")
+    seen = nights(store, "thin", str(place), "--months", "0")
+    assert seen.code == 0
+    assert "2 nights would go" in seen.out
+    assert "Nothing has been removed" in seen.out
+    rows = [line for line in seen.out.splitlines() if "2030-" in line]
+    assert [("yes" in row, "no " in row) for row in rows] == [(False, True)] * 2 + [(True, False)] * 3
+    assert "in force" in rows[-1]
+    plan = json.loads(nights(store, "thin", str(place), "--months", "0", "--json").out)
+    assert plan["rule"] == {"keep_newest": 3, "keep_weeks": 0, "keep_months": 0}
+    assert plan["would_remove"] == names[:2]
+    assert [night.name for night in store.nights()] == names
+    kept = json.loads(nights(store, "thin", str(place), "--json").out)["kept"]
+    assert kept[names[0]] == "the first of its month", "what is not given is as in the network folder"
+    room = sum(path.stat().st_size for name in names[:2] for path in store.night(name).folder.rglob("*.*"))
+    done = json.loads(nights(store, "thin", str(place), "--months", "0", "--remove", "--json").out)
+    assert (done["removed"], done["freed_bytes"]) == (names[:2], room)
+    assert [night.name for night in store.nights()] == names[2:]
+    thinned = [entry for entry in store.history() if entry.event == "thin"]
+    assert [entry.night for entry in thinned] == names[:2]
+    assert thinned[0].reason is not None
+    assert thinned[0].reason.startswith("by hand, keeping the newest 3, and of those before them")
+    assert "0 nights would go" in nights(store, "thin", "--newest", "3", "--weeks", "0", "--months", "0").out
+
+
+def test_thin_asks_for_a_whole_rule_and_honours_the_lock(store: Store, tmp_path: Path) -> None:
+    unsaid = nights(store, "thin", "--newest", "3")
+    assert unsaid.code == 2
+    assert "name the network folder" in unsaid.err
+    absent = nights(store, "thin", str(tmp_path / "nowhere"))
+    assert absent.code == 2
+    assert "network.toml: " in absent.err
+    whole = ("--newest", "1", "--weeks", "0", "--months", "0")
+    with Store.open(store.path).lock():
+        assert nights(store, "thin", *whole).code == 0
+        busy = nights(store, "thin", *whole, "--remove")
+    assert busy.code == 2
+    assert "another process" in busy.err
+    assert len(store.nights()) == 2

@@ -9,9 +9,9 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from legworth.store import Store
+from legworth.store import NightDamagedError, Store
 from legworth.store.manifest import night_name
-from legworth.store.thinning import kept_nights
+from legworth.store.thinning import freed_bytes, kept_nights, reasons_to_keep
 from network.store_settings import StoreSettings
 from tests.legworth.store.small_nights import PARTS, price_of, publish
 from tests.networks import examples
@@ -98,6 +98,73 @@ def test_thinning_leaves_what_is_in_force_the_newest_and_shared_files(tmp_path: 
     assert [entry.night for entry in store.history() if entry.event == "thin"] == list(gone)
     assert publish(store).number == 10
     assert list((store.path / "aside").iterdir()) == []
+
+
+def test_the_night_before_the_one_in_force_stays_and_every_night_that_stays_says_why(tmp_path: Path) -> None:
+    store = Store.open(tmp_path / "store", create=True)
+    nights = [publish(store, day=0)]
+    for day in range(1, 5):
+        nights.append(publish(store, day=day, before=nights[-1].name))
+    rule = StoreSettings(keep_newest=1, keep_weeks=0, keep_months=0)
+    store.restore(nights[2].name, "desk", "later nights are doubtful")
+    plan = store.thinning(rule)
+    assert plan.kept == {
+        nights[1].name: "the night before the one in force",
+        nights[2].name: "in force",
+        nights[4].name: "among the newest 1",
+    }
+    assert plan.gone == (nights[0].name, nights[3].name)
+    assert len(store.nights()) == 5, "looking removes nothing"
+    (nights[2].folder / "manifest.json").write_text("{")
+    assert store.thinning(rule) == plan, "where it cannot be read which night that was, the next earlier one stays"
+    assert store.thin(rule, "room is short") == plan.gone
+    assert [(entry.night, entry.reason) for entry in store.history() if entry.event == "thin"] == [
+        (name, "room is short") for name in plan.gone
+    ]
+
+
+def test_nothing_is_thinned_while_nobody_can_tell_which_night_is_in_force(tmp_path: Path) -> None:
+    store = Store.open(tmp_path / "store", create=True)
+    for day in range(4):
+        publish(store, day=day)
+    (store.path / "in_force").write_text("night")
+    rule = StoreSettings(keep_newest=1, keep_weeks=0, keep_months=0)
+    with pytest.raises(NightDamagedError, match="in_force is damaged"):
+        store.thin(rule)
+    assert len(store.nights()) == 4
+
+
+@examples(100)
+@given(steps=gaps, rule=rules)
+def test_every_reason_is_true(steps: list[int], rule: StoreSettings) -> None:
+    names = names_of(days_of(steps))
+    for name, reason in reasons_to_keep(names, rule).items():
+        day = date.fromisoformat(name.split("-", 1)[1])
+        earlier = [date.fromisoformat(other.split("-", 1)[1]) for other in names if other < name]
+        if reason.startswith("among the newest"):
+            assert name in names[-rule.keep_newest :]
+        elif reason == "the first of its week":
+            assert day.isocalendar()[:2] not in {other.isocalendar()[:2] for other in earlier}
+        else:
+            assert reason == "the first of its month"
+            assert (day.year, day.month) not in {(other.year, other.month) for other in earlier}
+
+
+def test_room_is_counted_once_and_only_where_no_other_night_holds_it(tmp_path: Path) -> None:
+    store = Store.open(tmp_path / "store", create=True)
+    first = publish(store, 1.0, day=0)
+    second = publish(store, 2.0, day=1, last=first)
+    third = publish(store, 3.0, day=2, last=second)
+    shared = first.folder / f"part={PARTS[-1]}" / "bid_prices.parquet"
+    assert shared.stat().st_nlink == 3
+
+    def room(*folders: Path) -> int:
+        return sum(path.stat().st_size for folder in folders for path in folder.rglob("*") if path.is_file())
+
+    both = [first.folder, second.folder]
+    assert freed_bytes(both) == room(*both) - 2 * shared.stat().st_size
+    assert freed_bytes([*both, third.folder]) == room(*both, third.folder) - 2 * shared.stat().st_size
+    assert freed_bytes([tmp_path / "not there"]) == 0
 
 
 def test_numbers_of_thinned_nights_are_not_given_again(tmp_path: Path) -> None:
