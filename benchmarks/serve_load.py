@@ -1,12 +1,14 @@
 """Requests per second, and how long they take, of a service on loopback with its generator beside it.
 
-``python -m benchmarks.serve_load STORE [--seconds 10] [--connections 8] [--batch 1000] [--database URL]``
+``python -m benchmarks.serve_load STORE [--seconds 10] [--connections 8] [--batch 1000] [--greatest 10000]``
 
 Starts ``legworth serve`` on the store, at its snapshot, and sends questions one by one, in batches, and orders to sell,
 each for some seconds over connections that are kept. The generator is a process of its own and waits for every
 answer before it sends the next request on a connection. Prints a Markdown table; the last column is processor
-time of the service for one request, which other work on the machine moves less than the rest. Seats are sold in a
-database made for the run, unless ``--database`` names one.
+time of the service for one request, which other work on the machine moves less than the rest. A second table tells
+how long single questions wait while two connections send batches of ``--greatest`` requests without a pause, with and
+without sentences, beside how long they wait without. Seats are sold in a database made for the run, unless
+``--database`` names one.
 """
 
 from __future__ import annotations
@@ -48,6 +50,8 @@ class Load:
     batch: int
     connections: int
     seconds: float
+    rest: float = 0.0
+    sentences: bool = False
 
 
 def request_bytes(path: str, body: dict[str, object], more: str = "") -> bytes:
@@ -67,9 +71,10 @@ def requests_of(load: Load) -> Iterator[bytes]:
             yield request_bytes("/v1/sales", {"itinerary": draw.choice(load.names), "fare": 9e6}, key)
     if load.kind == "decisions in batches":
         ready = []
-        for _ in range(50):
+        for _ in range(50 if load.batch < 5_000 else 5):
             names, classes = (draw.choices(each, k=load.batch) for each in (load.names, load.classes))
-            ready.append(request_bytes("/v1/decisions/batch", {"itinerary": names, "fare_class": classes}))
+            body = {"itinerary": names, "fare_class": classes, "sentences": load.sentences}
+            ready.append(request_bytes("/v1/decisions/batch", body))
     else:
         ready = [
             request_bytes(
@@ -91,6 +96,8 @@ def generate(load: Load) -> list[float]:
                 taken.append(time.perf_counter() - begin)
                 if status != 200:
                     raise RuntimeError(f"{status} {body[:200]!r}")
+                if load.rest:
+                    await asyncio.sleep(load.rest)
 
     async def run() -> None:
         requests = requests_of(load)
@@ -122,13 +129,31 @@ def measured(service: ServiceProcess, load: Load, pool: ProcessPoolExecutor) -> 
     )
 
 
+def beside(load: Load, greatest: int, pool: ProcessPoolExecutor) -> Iterator[str]:
+    """Single questions alone, and beside batches of the greatest size: the rows of a table."""
+    single = replace(load, kind="decisions one by one", rest=0.005)
+    many = replace(load, kind="decisions in batches", batch=greatest, connections=2, seconds=load.seconds + 2.0)
+    yield "| single decisions | of them | p50, ms | p99, ms | longest, ms | batches/s |"
+    yield "|---|---|---|---|---|---|"
+    for what, sentences in (("alone", None), (f"beside batches of {greatest:,}", False), ("the same, sentences", True)):
+        other = None if sentences is None else pool.submit(generate, replace(many, sentences=sentences))
+        time.sleep(1.0)
+        taken = np.array(pool.submit(generate, single).result()) * 1e3
+        batches = 0 if other is None else len(other.result())
+        p50, p99 = np.percentile(taken, [50, 99])
+        yield (
+            f"| {what} | {len(taken):,} | {p50:.1f} | {p99:.1f} | {taken.max():.0f} | {batches / many.seconds:.1f} |"
+        )
+
+
 @click.command()
 @click.argument("store", type=click.Path(path_type=Path, exists=True, file_okay=False))
 @click.option("--seconds", default=10.0, show_default=True)
 @click.option("--connections", default=8, show_default=True)
 @click.option("--batch", default=1_000, show_default=True)
+@click.option("--greatest", default=10_000, show_default=True, help="Requests of a batch of the second table.")
 @click.option("--database", help="URL of an empty database for the sales; a SQLite file of the run's own otherwise.")
-def main(store: Path, seconds: float, connections: int, batch: int, database: str | None) -> None:
+def main(store: Path, seconds: float, connections: int, batch: int, greatest: int, database: str | None) -> None:
     """Measure."""
     night = Store.open(store).in_force()
     if night is None:
@@ -151,10 +176,13 @@ def main(store: Path, seconds: float, connections: int, batch: int, database: st
         context = multiprocessing.get_context("spawn")
         try:
             asyncio.run(service.listening())
-            with ProcessPoolExecutor(1, context) as pool:
+            with ProcessPoolExecutor(2, context) as pool:
                 for kind in KINDS:
                     load = Load(service.port, kind, token, names, classes, batch, connections, seconds)
                     click.echo(measured(service, load, pool))
+                click.echo()
+                for line in beside(load, greatest, pool):
+                    click.echo(line)
         finally:
             service.stop()
             tokens.withdraw("load")

@@ -18,7 +18,7 @@ from legworth.price_table import PriceTable
 from network import Network
 from network.arrays import BoolArray, FloatArray, IntArray
 
-__all__ = ["SENTENCES", "Decisions", "Reason", "Requests", "decide", "decisions_table"]
+__all__ = ["SENTENCES", "Decisions", "Reason", "Requests", "decide", "decisions_table", "sentences"]
 
 UNPRICED, SHORT, EMPTY, DEPARTED = 1e15, 2e15, 3e15, 4e15
 """Weights of a leg without price, with too few seats, with none, or departed: far above any price."""
@@ -207,9 +207,7 @@ def _first_equal(figure: FloatArray, wanted: FloatArray, leg_start: IntArray, le
 
 def decisions_table(network: Network, asked: pd.DataFrame, requests: Requests, found: Decisions) -> pd.DataFrame:
     """Label the answers as the schema ``decisions`` declares, with a sentence each."""
-    names = pa.array(network.legs.name, pa.string())
-    binding = names.take(pa.array(found.binding_leg, mask=found.binding_leg < 0))
-    prices = _joined_prices(found)
+    binding, prices = _binding_names(network, found), _joined_prices(found)
     words = [reason.name.lower() for reason in Reason]
     sentence = _sentences(found, requests, binding, prices)
     return pd.DataFrame(
@@ -227,6 +225,17 @@ def decisions_table(network: Network, asked: pd.DataFrame, requests: Requests, f
             "sentence": sentence.to_pandas(),
         }
     )
+
+
+def sentences(network: Network, requests: Requests, found: Decisions) -> pa.Array:
+    """Say every answer in a sentence, as `decisions_table` does."""
+    return _sentences(found, requests, _binding_names(network, found), _joined_prices(found))
+
+
+def _binding_names(network: Network, found: Decisions) -> pa.Array:
+    """Name of the binding leg of every answer; missing where there is none."""
+    names = pa.array(network.legs.name, pa.string())
+    return names.take(pa.array(found.binding_leg, mask=found.binding_leg < 0))
 
 
 def _money(values: FloatArray) -> pa.Array:
@@ -253,7 +262,10 @@ def _sentences(found: Decisions, requests: Requests, binding: pa.Array, prices: 
     }
     filled = {name: pc.fill_null(column, "") for name, column in words.items()}
     chosen = pa.array([""] * len(found.reason))
+    met = set(np.unique(found.reason).tolist())
     for reason, sentence in SENTENCES.items():
+        if reason not in met:
+            continue
         parts: list[pa.Array | pa.Scalar] = []
         for plain, name, _, _ in Formatter().parse(sentence):
             parts += [pa.scalar(plain)] + ([filled[name]] if name else [])

@@ -151,7 +151,7 @@ async def decisions(request: Request) -> Response:
     count, limit = len(asked.itinerary), state.settings.batch_limit
     if count > limit:
         raise MalformedError([f"body.itinerary: {count:,} requests are more than {limit:,}; split them"])
-    return _json(await answer_many(state.night(), asked, state.seats.left, state.now()))
+    return _json(await answer_many(state.night(), asked, state.seats.left, state.now(), state.turns))
 
 
 @interface.post(

@@ -46,23 +46,33 @@ class NameIndex:
     def __len__(self) -> int:
         return len(self._keys)
 
-    def parts_of(self, names: Sequence[str]) -> list[tuple[str | None, npt.NDArray[np.int64]]]:
-        """Sort many names by part.
+    def codes_of(self, names: Sequence[str]) -> npt.NDArray[np.int32]:
+        """(N,) code of the part of every name, -1 for unknown names."""
+        wanted = np.array([name.encode() for name in names], dtype=np.bytes_)
+        if not len(self._keys):
+            return np.full(len(wanted), -1, dtype=np.int32)
+        at = np.minimum(np.searchsorted(self._keys, wanted), len(self._keys) - 1)
+        return np.where(self._keys[at] == wanted, self._parts[at], np.int32(-1))
+
+    def by_part(self, codes: npt.NDArray[np.int32]) -> list[tuple[str | None, npt.NDArray[np.int64]]]:
+        """Sort names by part.
+
+        Parameters
+        ----------
+        codes
+            What `codes_of` gives for them.
 
         Returns
         -------
         list of (str or None, array)
-            Every part met, None for unknown names, and where its names stand among those given.
+            Every part met, None for unknown names, and where its names stand among those given, in rising order.
         """
-        wanted = np.array([name.encode() for name in names], dtype=np.bytes_)
-        at = np.minimum(np.searchsorted(self._keys, wanted), max(len(self._keys) - 1, 0))
-        if not len(self._keys):
-            return [(None, np.arange(len(names)))]
-        code = np.where(self._keys[at] == wanted, self._parts[at], -1)
-        if len(code) and (code == code[0]).all():
-            return [(None if code[0] < 0 else self._names[code[0]], np.arange(len(code)))]
-        order = np.argsort(code, kind="stable")
-        met, begin = np.unique(code[order], return_index=True)
+        if not len(codes):
+            return []
+        if (codes == codes[0]).all():
+            return [(None if codes[0] < 0 else self._names[codes[0]], np.arange(len(codes)))]
+        order = np.argsort(codes, kind="stable")
+        met, begin = np.unique(codes[order], return_index=True)
         rows = np.split(order, begin[1:])
         return [(None if each < 0 else self._names[each], some) for each, some in zip(met, rows, strict=True)]
 

@@ -13,6 +13,7 @@ from typing import TypeVar
 
 import structlog
 
+from legworth.service.asking_many import Turns
 from legworth.service.errors import NoNightError
 from legworth.service.ledger import Ledger
 from legworth.service.orders import Order, Outcome, Overwriting, SeatCount
@@ -50,6 +51,8 @@ class ServiceState:
         Seconds by which the service's clock is ahead of the machine's, for drills; 0 otherwise.
     troubles
         What is wrong at present: for ``STORE`` and ``LEDGER`` the reason.
+    turns
+        Whose turn it is among the batches that are judged.
     when_taken_over
         Called with every night that is taken over while the service runs, in the loop that answers requests.
     """
@@ -63,6 +66,7 @@ class ServiceState:
     served: ServedNight | None = None
     ahead: float = 0.0
     troubles: dict[str, str] = field(default_factory=dict)
+    turns: Turns = field(default_factory=Turns)
     when_taken_over: list[Callable[[ServedNight], None]] = field(default_factory=list)
 
     @classmethod

@@ -16,7 +16,7 @@ from legworth.decisions import Reason, decide, decisions_table
 from legworth.price_table import PriceTable
 from legworth.request_table import located
 from legworth.service.asking import ask
-from legworth.service.asking_many import answer_many
+from legworth.service.asking_many import Turns, answer_many
 from legworth.service.errors import UnknownError
 from legworth.service.messages import Ask, AskMany
 from legworth.service.served_part import ServedPart
@@ -39,9 +39,12 @@ class OnePart:
         known = name in self.one.itinerary_position or name in self.one.leg_position
         return self.one.name if known else None
 
-    def parts_of(self, names: Any) -> Any:
-        known = np.array([name in self.one.itinerary_position for name in names])
-        return [(None, np.flatnonzero(~known)), (self.one.name, np.flatnonzero(known))]
+    def codes_of(self, names: Any) -> Any:
+        return np.array([0 if name in self.one.itinerary_position else -1 for name in names])
+
+    def by_part(self, codes: Any) -> Any:
+        parts = ((None, np.flatnonzero(codes < 0)), (self.one.name, np.flatnonzero(codes == 0)))
+        return [(name, rows) for name, rows in parts if len(rows)]
 
     def ready(self, _name: str) -> ServedPart:
         return self.one
@@ -135,7 +138,7 @@ def test_one_many_and_tables_agree(plan: Plan, number: int) -> None:
         assert {name: answer[name] for name in FIELDS} == wanted
         assert answer["night"] == night.name
     columns: dict[str, Any] = {name: tuple(one[name] for one in asked) for name in asked[0]}
-    many = asyncio.run(answer_many(night, AskMany(**columns, sentences=True), left, now))
+    many = asyncio.run(answer_many(night, AskMany(**columns, sentences=True), left, now, Turns()))
     for name in FIELDS:
         said = [
             None if isinstance(each, float) and np.isnan(each) else each for each in np.asarray(many[name]).tolist()

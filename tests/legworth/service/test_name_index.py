@@ -24,7 +24,7 @@ def test_every_name_is_found_where_it_is(known: dict[str, str], others: list[str
     assert len(index) == len(known)
     assert [index.part_of(name) for name in asked] == [known.get(name) for name in asked]
     many: dict[int, str | None] = {}
-    for part, rows in index.parts_of(asked):
+    for part, rows in index.by_part(index.codes_of(asked)):
         many |= dict.fromkeys(rows.tolist(), part)
     found = [many[place] for place in range(len(asked))]
     # Bytes of numpy end at their last that is not zero: such names are sorted out in the part itself.
