@@ -144,7 +144,7 @@ def read_prices(folder: Path, network: Network) -> PriceTable:
         raise InputError(faults.errors)
     bid_price = np.full(network.n_legs, np.nan)
     bid_price[legs[0]] = prices.frame["bid_price"].to_numpy()
-    if curves is None:
+    if curves is None or len(curves) == 0:
         nothing, none = np.zeros(0), np.zeros(network.n_legs + 1, dtype=np.int64)
         return PriceTable(bid_price, none, nothing, np.zeros(1, dtype=np.int64), nothing)
     return _with_curves(bid_price, curves, legs[1], network.n_legs, faults)

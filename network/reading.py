@@ -61,7 +61,7 @@ def read_file(
         raw = _read_csv(path, schema, faults)
     if raw is None:
         return None
-    if len(raw.at_fault) == 0:
+    if len(raw.at_fault) == 0 and not schema.may_be_empty:
         faults.add(path.name, 0, "", "has a header but no rows; add rows, or remove the file if it is optional")
         return None
     return typed_table(raw, faults)

@@ -1,7 +1,7 @@
 """Table schemas: every column of every table is declared once, in a Table Schema JSON file.
 
-The files follow the open Table Schema standard of the Data Package project, with two properties of
-our own that the standard permits: ``unit`` and ``optional`` (the column may be left out). Reader,
+The files follow the open Table Schema standard of the Data Package project, with three properties of
+our own that the standard permits: ``unit``, ``optional`` (the column or table may be left out) and ``mayBeEmpty``. Reader,
 validator, documentation and result writers all work from the objects made here.
 """
 
@@ -58,7 +58,7 @@ class Column:
 
 @dataclass(frozen=True)
 class TableSchema:
-    """One table: its columns in order, its key, and whether a folder may lack it."""
+    """One table: its columns in order, its key, whether a folder may lack it, and whether it may have no rows."""
 
     name: str
     title: str
@@ -66,6 +66,7 @@ class TableSchema:
     columns: tuple[Column, ...]
     key: tuple[str, ...]
     optional: bool = False
+    may_be_empty: bool = False
 
     def __iter__(self) -> Iterator[Column]:
         return iter(self.columns)
@@ -136,6 +137,7 @@ def table_schema(package: str, name: str) -> TableSchema:
         columns=tuple(columns),
         key=tuple(declared["primaryKey"]),
         optional=declared.get("optional", False),
+        may_be_empty=declared.get("mayBeEmpty", False),
     )
 
 
