@@ -16,6 +16,8 @@ import numpy as np
 
 from legworth.estimation.closing import CLOSINGS
 from legworth.estimation.estimate import DemandOptions
+from legworth.estimation.method_comparison import compare_methods
+from legworth.estimation.method_report import LABELS
 from legworth.estimation.recipe import EstimateOptions, estimate_folder
 from legworth.simulation.entries import entries_of, play_anew, play_schedule, prepare_schedule
 from legworth.simulation.forecast import reading_instants
@@ -73,13 +75,14 @@ def means(simulated: SimulatedHistory) -> None:
     click.echo("\nMean demand of a departure against the truth, bias by class")
     click.echo(f"{'':64}{'  '.join(f'{name:>6}' for name in (*classes, 'all'))}")
     for closing in CLOSINGS:
-        truth, _ = mean_truth(simulated, history, as_of, DemandOptions(closing=closing))
+        truth, fit = mean_truth(simulated, history, as_of, DemandOptions(closing=closing))
         figures = [truth.bias_of(at) for at in range(len(classes))]
         spread = [truth.deviation_of(at) for at in range(len(classes))]
         _line(f"estimate, closing {closing}", [*figures, truth.bias])
         click.echo(f"    within two standard errors: {truth.within:.1%} of {network.n_products:,} products")
         if closing == "shared":
             _line("    deviation of a departure", [*spread, truth.deviation_of()])
+            alike = replace(fit, as_of=as_of + 1, options=replace(fit.options, half_life=None))
     for label, throughout in (("since the reading before", True), ("at the reading", False)):
         truth, _ = mean_truth(simulated, simulated.flags_alone(throughout=throughout), as_of)
         figures = [truth.bias_of(at) for at in range(len(classes))]
@@ -94,6 +97,11 @@ def means(simulated: SimulatedHistory) -> None:
             for mine in [known & (network.product_class == at)]
         ]
         _line(f"naive, {label}", [*figures, float(naive[known].sum() / true[known].sum() - 1)])
+    compared = compare_methods(history, alike)
+    assert compared is not None
+    by_class = np.array([true[network.product_class == at].mean() for at in range(len(classes))])
+    for line in compared.lines:
+        _line(f"side by side, {LABELS[line.method]}", [*(line.by_class / by_class - 1), line.every / true.mean() - 1])
 
 
 def _line(label: str, figures: list[float]) -> None:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -68,7 +69,7 @@ __all__ = ["estimate"]
     type=click.FloatRange(0, min_open=True),
     default=365.0,
     show_default=True,
-    help="Age in days at which a departure counts half.",
+    help="Age in days at which a departure counts half; inf for no ageing.",
 )
 @click.option("--no-weekday", is_flag=True, help="Fit no effects of the weekday.")
 @click.option("--no-season", is_flag=True, help="Fit no effects of the time of year.")
@@ -81,6 +82,11 @@ __all__ = ["estimate"]
 )
 @click.option("--spacing", type=click.IntRange(1), default=28, show_default=True, help="Days between these days.")
 @click.option(
+    "--methods",
+    is_flag=True,
+    help="Show what other methods of unconstraining make of the same history; the page and estimate.json always do.",
+)
+@click.option(
     "--format",
     "table_format",
     type=click.Choice(["csv", "parquet"]),
@@ -89,7 +95,9 @@ __all__ = ["estimate"]
     help="Format of the tables.",
 )
 @AS_JSON
-def estimate(history: Path, folder: Path, out: Path | None, table_format: Any, *, as_json: bool, **how: Any) -> None:
+def estimate(
+    history: Path, folder: Path, out: Path | None, table_format: Any, *, methods: bool, as_json: bool, **how: Any
+) -> None:
     """Estimate the demand to come of the departures in a network folder from HISTORY, a table of booking history.
 
     What was booked is unconstrained by when classes were open; small itineraries borrow from ones like them; departures
@@ -109,7 +117,7 @@ def estimate(history: Path, folder: Path, out: Path | None, table_format: Any, *
     if as_json:
         print_json({**document, "written": [str(file) for file in files]})
         return
-    print_estimate(found, files)
+    print_estimate(found, files, methods=methods)
 
 
 def _options(how: dict[str, Any]) -> EstimateOptions:
@@ -124,7 +132,7 @@ def _options(how: dict[str, Any]) -> EstimateOptions:
         demand=DemandOptions(
             closing=how["closing"],
             pickup=how["pickup"],
-            half_life=how["half_life"],
+            half_life=None if how["half_life"] == math.inf else how["half_life"],
             weekday=not how["no_weekday"],
             season=not how["no_season"],
         ),

@@ -80,7 +80,7 @@ def mean_truth(
         variance += demand.variance
         departure = np.full(network.n_products, plan.departure[date])
         found = forecast(fit, network.product_itinerary, network.product_class, departure, whole)
-        mean += found.mean
+        mean += found.rate * found.effect  # a forecast leaves out what came before the first reading
         spread += found.deviation**2
     product = network.product_itinerary.astype(np.int64) * len(network.fare_classes) + network.product_class
     n = len(dates)

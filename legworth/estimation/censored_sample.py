@@ -42,7 +42,7 @@ class CensoredSample:
     group
         (n,) group of every observation.
     weight
-        (n,) how many times it was made.
+        (n,) how many times it was made, or how much it counts.
     n_groups
         Number of groups G.
     """
@@ -60,8 +60,9 @@ class CensoredSample:
         closed: npt.ArrayLike,
         group: npt.ArrayLike | None = None,
         n_groups: int = 1,
+        weight: npt.ArrayLike | None = None,
     ) -> CensoredSample:
-        """Count equal observations once.
+        """Put equal observations together.
 
         Parameters
         ----------
@@ -69,28 +70,43 @@ class CensoredSample:
             (m,) demand seen and whether it is only a lower bound.
         group, n_groups
             (m,) group of every observation, from 0 to ``n_groups`` - 1; one group if left out.
+        weight
+            (m,) how much every observation counts, above 0; 1 if left out.
 
         Raises
         ------
         ValueError
-            If shapes differ, a value is negative or not finite, or a group is out of range.
+            If shapes differ, a value is negative or not finite, a weight is not above 0, or a group is out of range.
         """
         values = np.asarray(value, dtype=np.float64)
         shut = np.asarray(closed, dtype=bool)
         groups = np.zeros(values.shape, dtype=np.int64) if group is None else np.asarray(group, dtype=np.int64)
-        if values.ndim != 1 or not values.shape == shut.shape == groups.shape:
-            raise ValueError(f"shapes differ: {values.shape}, {shut.shape}, {groups.shape}")
+        weights = np.ones(values.shape) if weight is None else np.asarray(weight, dtype=np.float64)
+        if values.ndim != 1 or not values.shape == shut.shape == groups.shape == weights.shape:
+            raise ValueError(f"shapes differ: {values.shape}, {shut.shape}, {groups.shape}, {weights.shape}")
         if not np.all(np.isfinite(values)) or np.any(values < 0):
             raise ValueError("demand seen must be finite and not negative")
+        if not np.all(np.isfinite(weights)) or np.any(weights <= 0):
+            raise ValueError("weights must be finite and above 0")
         if len(groups) and not (groups.min() >= 0 and groups.max() < n_groups):
             raise ValueError(f"groups must lie from 0 to {n_groups - 1}")
-        order = np.lexsort((shut, values, groups))
-        values, shut, groups = values[order], shut[order], groups[order]
-        new = np.ones(len(values), dtype=bool)
-        new[1:] = (np.diff(values) != 0) | (shut[1:] != shut[:-1]) | (np.diff(groups) != 0)
-        first = np.flatnonzero(new)
-        weight = np.diff(np.append(first, len(values))).astype(np.float64)
-        return cls(values[first], shut[first], groups[first], weight, n_groups)
+        distinct, code = _codes(values)
+        key = (groups * len(distinct) + code) * 2 + shut
+        if n_groups * len(distinct) * 2 <= max(len(values), 1_000):
+            total = np.bincount(key, weights, minlength=n_groups * len(distinct) * 2)
+            known = np.flatnonzero(total)
+            total = total[known]
+        else:
+            known, place = np.unique(key, return_inverse=True)
+            total = np.bincount(place, weights, minlength=len(known))
+        rest = known // 2
+        return cls(
+            value=distinct[rest % len(distinct)],
+            closed=known % 2 == 1,
+            group=rest // len(distinct),
+            weight=total.astype(np.float64),
+            n_groups=n_groups,
+        )
 
     def sums(self, per_observation: npt.ArrayLike) -> FloatArray:
         """(G,) weighted sums of a figure per observation."""
@@ -103,7 +119,7 @@ class CensoredSample:
 
     @property
     def size(self) -> FloatArray:
-        """(G,) observations."""
+        """(G,) observations, each as much as it counts."""
         return self.sums(1.0)
 
     @property
@@ -113,15 +129,30 @@ class CensoredSample:
 
     def pooled(self) -> CensoredSample:
         """Return all observations as one group."""
-        return CensoredSample.of(
-            np.repeat(self.value, self.weight.astype(np.int64)),
-            np.repeat(self.closed, self.weight.astype(np.int64)),
+        return CensoredSample.of(self.value, self.closed, weight=self.weight)
+
+    def part(self, first: int, end: int) -> CensoredSample:
+        """Return the groups from ``first`` up to ``end``, the first of them as group 0."""
+        kept = (self.group >= first) & (self.group < end)
+        return CensoredSample(
+            self.value[kept], self.closed[kept], self.group[kept] - first, self.weight[kept], end - first
         )
 
     def only_open(self) -> CensoredSample:
         """Return the observations that are no mere lower bounds."""
         kept = ~self.closed
         return CensoredSample(self.value[kept], self.closed[kept], self.group[kept], self.weight[kept], self.n_groups)
+
+
+def _codes(values: FloatArray) -> tuple[FloatArray, IntArray]:
+    """Rising distinct values, and the position of every value among them."""
+    most = values.max(initial=0.0)
+    if most <= len(values):
+        code = values.astype(np.int64)
+        if np.array_equal(code, values):
+            return np.arange(int(most) + 1, dtype=np.float64), code
+    distinct, place = np.unique(values, return_inverse=True)
+    return distinct, place
 
 
 @dataclass(frozen=True, eq=False)

@@ -101,17 +101,14 @@ class _Series:
     weight: FloatArray
 
     @classmethod
-    def of(
-        cls, history: BookingHistory, increments: Increments, day: np.datetime64, half_life: float | None
-    ) -> _Series:
+    def of(cls, history: BookingHistory, increments: Increments, day: np.datetime64, options: DemandOptions) -> _Series:
         at, n_classes = increments.series, len(history.fare_classes)
         departure, fare_class = history.departure[at].astype("datetime64[D]"), history.series_class[at]
-        age = np.maximum((day - departure).astype(np.float64), 0.0)
         return cls(
             product=history.series_itinerary[at].astype(np.int64) * n_classes + fare_class,
             fare_class=fare_class,
             departure=departure,
-            weight=np.ones(len(at)) if half_life is None else 0.5 ** (age / half_life),
+            weight=options.weight((day - departure).astype(np.float64)),
         )
 
     def take(self, chosen: IntArray) -> _Series:
@@ -145,7 +142,7 @@ def fit_demand(
     increments = Increments.of(history, day)
     if len(increments) == 0:
         raise SettingError(f"no reading is known by {day}; take a later day or more history")
-    series = _Series.of(history, increments, day, options.half_life)
+    series = _Series.of(history, increments, day, options)
     model = _begin(increments, series, len(history.itinerary), len(history.fare_classes))
     sampled = _sample(increments, options.seed)
     if sampled is None:

@@ -4,8 +4,11 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
+import numpy as np
+
 from legworth.estimation.closing import CLOSINGS, Closing
 from legworth.estimation.pickup import PICKUPS, Pickup
+from network.arrays import FloatArray
 from network.errors import SettingError
 
 __all__ = ["DemandOptions"]
@@ -50,7 +53,13 @@ class DemandOptions:
             raise SettingError(f"closing {self.closing!r} is unknown; choose {', '.join(CLOSINGS)}")
         if self.pickup not in PICKUPS:
             raise SettingError(f"pickup {self.pickup!r} is unknown; choose {', '.join(PICKUPS)}")
-        if self.half_life is not None and not self.half_life > 0:
-            raise SettingError(f"half_life must be above 0 days, got {self.half_life}")
+        if self.half_life is not None and not 0 < self.half_life < np.inf:
+            raise SettingError(f"half_life must be above 0 days, or None for no ageing, got {self.half_life}")
         if self.seed < 0:
             raise SettingError(f"seed must not be negative, got {self.seed}")
+
+    def weight(self, age: FloatArray) -> FloatArray:
+        """(n,) how much departures of an age in days count; those ahead are of age 0."""
+        if self.half_life is None:
+            return np.ones(len(age))
+        return np.asarray(0.5 ** (np.maximum(age, 0.0) / self.half_life))

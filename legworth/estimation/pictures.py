@@ -10,12 +10,21 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.ticker import MaxNLocator, PercentFormatter, StrMethodFormatter
 
+from legworth.estimation.method_comparison import ESTIMATE, MethodComparison
+from legworth.estimation.method_report import LABELS
 from legworth.estimation.recipe import Estimated
 from legworth.estimation.scores import Score, Scores
 from legworth.themed_svg import INK, LINE, Picture, bare_axes, svg_data
 from network.arrays import FloatArray
 
-__all__ = ["bias_picture", "coverage_picture", "curve_picture", "demand_picture", "error_picture"]
+__all__ = [
+    "bias_picture",
+    "coverage_picture",
+    "curve_picture",
+    "demand_picture",
+    "error_picture",
+    "method_picture",
+]
 
 WIDE, NARROW = 8.6, 3.9
 OWN, LAST_YEAR, AVERAGE, CHANCE = (
@@ -190,6 +199,46 @@ def coverage_picture(scores: Scores, share: float) -> Picture:
         return _svg(figure, COLOURS)
 
     about = f"Points of the share of outcomes inside the {share:.0%} interval; the table below has the figures."
+    return Picture(draw(WIDE), draw(NARROW), about)
+
+
+METHOD_MARKS = {
+    "discard": ("average", "v"),
+    "replace": ("average", "^"),
+    "projection": ("last-year", "s"),
+    "normal": ("last-year", "D"),
+    "poisson": ("chance", "<"),
+    "negative_binomial": ("chance", ">"),
+    ESTIMATE: ("own", "o"),
+}
+"""Colour and mark of every method: those of a colour are of one kind: naive, of normal demand, of counts."""
+
+
+def method_picture(found: MethodComparison) -> Picture:
+    """Draw by class how far methods and estimate are above bookings."""
+    names = ("all", *found.fare_classes)
+
+    def draw(width: float) -> str:
+        figure, axes = _sheet(width, 1.2 + 0.34 * len(names) + (0.3 if width < 6 else 0.0))
+        place = np.arange(len(names))[::-1]
+        axes.hlines(place, 0.0, 1.0, transform=axes.get_yaxis_transform(), color=BAND[0], linewidth=1.0, zorder=0)
+        axes.axvline(0.0, color=LINE[0], linewidth=1.0)
+        for method, (colour, mark) in METHOD_MARKS.items():
+            by_class, in_all = found.above_bookings(found.line(method))
+            figures = np.append(in_all, by_class)
+            if np.isfinite(figures).any():
+                size = 8 if method == ESTIMATE else 6
+                axes.plot(figures, place, mark, color=COLOURS[colour][0], markersize=size, label=LABELS[method])
+        axes.set_yticks(place, names)
+        axes.set_ylim(-0.6, len(names) - 0.4)
+        axes.xaxis.set_major_locator(MaxNLocator(4 if width < 6 else 8))
+        axes.xaxis.set_major_formatter(PercentFormatter(1.0, decimals=0))
+        axes.set_xlabel("mean demand above what was booked")
+        axes.set_ylabel("fare class")
+        figure.legend(loc="outside upper left", ncols=2 if width < 6 else 4, frameon=False)
+        return _svg(figure, COLOURS)
+
+    about = "Marks by fare class of how far methods are above bookings; the table below has the figures."
     return Picture(draw(WIDE), draw(NARROW), about)
 
 

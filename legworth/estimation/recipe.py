@@ -19,6 +19,7 @@ from legworth.estimation.departures import Departures, network_departures
 from legworth.estimation.estimate import DemandEstimate, DemandOptions, Pools, estimate_demand
 from legworth.estimation.history import BookingHistory
 from legworth.estimation.history_table import Unknown, read_history
+from legworth.estimation.method_comparison import MethodComparison, compare_methods
 from legworth.estimation.scores import Scores, score_backtest
 from network import Demand, Fault, InputError, Network, read_folder
 from network.faults import Faults
@@ -74,6 +75,8 @@ class Estimated:
         Readings, and the rows of their table.
     estimate
         The estimate before adjustments.
+    methods
+        What other methods of unconstraining make of the same history, None where no departure has left.
     adjusted
         Demand after them, and their log.
     backtest, scores
@@ -92,6 +95,7 @@ class Estimated:
     history: BookingHistory
     rows: int
     estimate: DemandEstimate
+    methods: MethodComparison | None
     adjusted: Adjusted
     backtest: Backtest | None
     scores: Scores | None
@@ -152,6 +156,8 @@ def estimate_folder(
     tell(1, steps)
     estimate = estimate_demand(readings.history, network, network.as_of, options.demand, departures.history_name)
     clock.lap("estimate")
+    methods = compare_methods(readings.history, estimate.fit)
+    clock.lap("methods")
     tell(2, steps)
     at = network.product_itinerary
     demand = Demand.of(estimate.mean, estimate.deviation)
@@ -174,6 +180,7 @@ def estimate_folder(
         history=readings.history,
         rows=readings.rows,
         estimate=estimate,
+        methods=methods,
         adjusted=adjusted,
         backtest=backtest,
         scores=scores,

@@ -8,9 +8,11 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
+from rich.console import Console
 from rich.table import Table
 
 from legworth import __version__
+from legworth.estimation.method_report import method_notes, methods_as_json, methods_table
 from legworth.estimation.recipe import Estimated
 from legworth.estimation.scores import Score
 from legworth.report import CAUTION, console_for_output, faults_as_json
@@ -48,6 +50,7 @@ def estimate_as_json(found: Estimated) -> dict[str, Any]:
         },
         "demand": _demand(found),
         "by_class": [_demand(found, at) for at in range(len(network.fare_classes))],
+        "methods": methods_as_json(found.methods),
         "adjustments": [row.as_dict() for row in found.adjusted.log],
         "backtest": None if found.scores is None or found.backtest is None else _backtest(found),
         "notes": list(fit.warnings),
@@ -97,8 +100,18 @@ def _backtest(found: Estimated) -> dict[str, Any]:
     }
 
 
-def print_estimate(found: Estimated, files: Sequence[Path]) -> None:
-    """Print what was estimated, how it did on the past, and where it was written."""
+def print_estimate(found: Estimated, files: Sequence[Path], *, methods: bool = False) -> None:
+    """Print what was estimated, how it did on the past, and where it was written.
+
+    Parameters
+    ----------
+    found
+        The estimate.
+    files
+        What was written.
+    methods
+        Whether other methods are shown beside it.
+    """
     console = console_for_output()
     network, history = found.network, found.history
     for warning in found.warnings[:WARNINGS_TOLD]:
@@ -115,6 +128,8 @@ def print_estimate(found: Estimated, files: Sequence[Path]) -> None:
         highlight=False,
     )
     console.print(_classes(found), highlight=False)
+    if methods:
+        _print_methods(console, found)
     for row in found.adjusted.log:
         console.print(_told(row.as_dict()), highlight=False, soft_wrap=True)
     if found.scores is not None:
@@ -126,6 +141,15 @@ def print_estimate(found: Estimated, files: Sequence[Path]) -> None:
     took = ", ".join(f"{step} {seconds:.1f} s" for step, seconds in found.seconds.items())
     console.print(took, style="dim", highlight=False)
     console.print(CAUTION, style="dim", highlight=False, soft_wrap=True)
+
+
+def _print_methods(console: Console, found: Estimated) -> None:
+    if found.methods is None:
+        console.print("No departure has left whose readings are whole, so methods cannot be compared", highlight=False)
+        return
+    console.print(methods_table(found.methods), highlight=False)
+    for note in method_notes(found.methods):
+        console.print(note, highlight=False, soft_wrap=True)
 
 
 def _told(row: dict[str, Any]) -> str:

@@ -10,12 +10,14 @@ import numpy as np
 from jinja2 import Template
 
 from legworth.estimation.adjustments import Adjustment
+from legworth.estimation.method_report import method_notes, method_rows, share_rows
 from legworth.estimation.pictures import (
     bias_picture,
     coverage_picture,
     curve_picture,
     demand_picture,
     error_picture,
+    method_picture,
 )
 from legworth.estimation.recipe import Estimated
 from legworth.estimation.report import moved_by_bookings, percent
@@ -73,6 +75,10 @@ def estimate_page(found: Estimated) -> str:
         own_weight=_mean(parts.own_weight[ahead], parts.mean[ahead]),
         demand=demand_picture(found),
         curves=curve_picture(found),
+        methods=found.methods,
+        method_notes=method_notes(found.methods) if found.methods is not None else [],
+        method_sheets=_method_sheets(found),
+        method_marks=method_picture(found.methods) if found.methods is not None else None,
         adjusted=_adjustments(found.adjusted.log) if found.adjusted.log else None,
         adjusted_products=_adjusted_products(found),
         weak_products=_weak_products(found),
@@ -135,6 +141,26 @@ def _adjustments(log: Sequence[Adjustment]) -> Sheet:
         tuple(rows),
         words=(0, 1, 2, 3, 8, 9, 10, 11),
     )
+
+
+def _method_sheets(found: Estimated) -> list[Sheet]:
+    if found.methods is None:
+        return []
+    classes = found.methods.fare_classes
+    return [
+        Sheet(
+            "methods",
+            "Mean demand of a departure of a product, by class",
+            ("Method", "All", "Against bookings", *classes),
+            tuple(method_rows(found.methods)),
+        ),
+        Sheet(
+            "methods-share",
+            "The same against what was booked",
+            ("Method", "All", *classes, "Rounds", "Not settled"),
+            tuple(share_rows(found.methods)),
+        ),
+    ]
 
 
 def _adjusted_products(found: Estimated) -> Sheet | None:

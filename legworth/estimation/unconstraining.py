@@ -8,6 +8,7 @@ the open ones in place of the closed ones where that is higher.
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import dataclass
 from types import MappingProxyType
 from typing import Protocol
 
@@ -18,9 +19,9 @@ from legworth.estimation.censored_normal import fit_censored_normal
 from legworth.estimation.censored_sample import CensoredFit, CensoredSample, EmOptions
 from legworth.estimation.detruncation import detruncate
 from legworth.estimation.increments import Increments
-from network.arrays import FloatArray, IntArray
+from network.arrays import BoolArray, FloatArray, IntArray
 
-__all__ = ["METHODS", "mean_by_class", "unconstrain"]
+__all__ = ["METHODS", "ClassFits", "ClassSamples", "mean_by_class", "unconstrain"]
 
 
 class Method(Protocol):
@@ -66,6 +67,112 @@ METHODS: Mapping[str, Method] = MappingProxyType(
 )
 
 
+@dataclass(frozen=True, eq=False)
+class ClassFits:
+    """What a method makes of the samples of every class.
+
+    Attributes
+    ----------
+    mean
+        (K,) whole demand of a departure of a product; NaN of a class that history does not hold or that was never
+        open.
+    rounds
+        Most rounds made for a class.
+    unsettled
+        Groups that still moved when the limit of rounds was reached.
+    """
+
+    mean: FloatArray
+    rounds: int
+    unsettled: int
+
+
+@dataclass(frozen=True, eq=False)
+class ClassSamples:
+    """Departures of products as samples, one a class.
+
+    The intervals of a class that reach over the same cells are one group, of all products and departures together. Of
+    every departure each interval is replaced by the mean of its group, and the mean is taken of the departures
+    so filled; so departures that lack readings count like the others.
+
+    Attributes
+    ----------
+    sample
+        Of every class, K of them.
+    departures
+        (K,) departures of products, each as much as it counts.
+    """
+
+    sample: tuple[CensoredSample, ...]
+    departures: FloatArray
+
+    @classmethod
+    def of(
+        cls, increments: Increments, fare_class: IntArray, n_classes: int, weight: FloatArray | None = None
+    ) -> ClassSamples:
+        """Sort intervals into samples.
+
+        Parameters
+        ----------
+        increments
+            Intervals of S series.
+        fare_class, n_classes
+            (S,) class of every series, and their number.
+        weight
+            (S,) how much a departure counts, above 0; 1 if left out.
+        """
+        weight = np.ones(len(fare_class)) if weight is None else weight
+        n_cells = increments.n_cells
+        of_row = fare_class.astype(np.int64)[increments.owner]
+        span = (of_row * n_cells + increments.first) * n_cells + increments.last
+        known = np.flatnonzero(np.bincount(span, minlength=n_classes * n_cells**2))
+        place = np.zeros(n_classes * n_cells**2, dtype=np.int64)
+        place[known] = np.arange(len(known))
+        every = CensoredSample.of(increments.count, ~increments.open, place[span], len(known), weight[increments.owner])
+        first = np.searchsorted(known // n_cells**2, np.arange(n_classes + 1))
+        return cls(
+            tuple(every.part(int(first[k]), int(first[k + 1])) for k in range(n_classes)),
+            np.bincount(fare_class, weight, minlength=n_classes).astype(np.float64),
+        )
+
+    @property
+    def groups(self) -> int:
+        """Number of groups of all classes."""
+        return sum(sample.n_groups for sample in self.sample)
+
+    @property
+    def never_open(self) -> BoolArray:
+        """(K,) classes that were closed in part at least of every interval."""
+        return np.array([not np.any(sample.size_open > 0) for sample in self.sample], dtype=bool)
+
+    @property
+    def pooled(self) -> int:
+        """Groups that were never open though their class was: they take the mean of all intervals of the class."""
+        return sum(
+            int(np.sum(sample.size_open == 0))
+            for sample, never in zip(self.sample, self.never_open, strict=True)
+            if not never
+        )
+
+    def fit(self, method: str, options: EmOptions | None = None) -> ClassFits:
+        """Fit every class by one of `METHODS`.
+
+        Parameters
+        ----------
+        method
+            Name of the method.
+        options
+            Stopping rule; the defaults if left out.
+        """
+        mean = np.full(len(self.sample), np.nan)
+        rounds, unsettled = 0, 0
+        for k in np.flatnonzero(~self.never_open).tolist():
+            found = unconstrain(self.sample[k], method, options)
+            mean[k] = float(self.sample[k].size @ found.mean) / self.departures[k]
+            rounds, unsettled = max(rounds, found.iterations), unsettled + int(np.sum(~found.converged))
+        return ClassFits(mean, rounds, unsettled)
+
+
 def mean_by_class(
     increments: Increments, fare_class: IntArray, n_classes: int, method: str, options: EmOptions | None = None
 ) -> FloatArray:
@@ -74,7 +181,7 @@ def mean_by_class(
     Parameters
     ----------
     increments
-        Rows; one of several cells counts for its last.
+        Intervals of S series.
     fare_class, n_classes
         (S,) class of every series, and their number.
     method
@@ -85,14 +192,9 @@ def mean_by_class(
     Returns
     -------
     FloatArray
-        (K,) sums over the intervals.
+        (K,) means; NaN of a class that history does not hold or that was never open.
     """
-    n_cells = increments.n_cells
-    group = fare_class[increments.owner].astype(np.int64) * n_cells + increments.last
-    sample = CensoredSample.of(increments.count, ~increments.open, group, n_classes * n_cells)
-    seen = sample.size > 0
-    mean = np.where(seen, unconstrain(sample, method, options).mean, 0.0)
-    return np.asarray(mean.reshape(n_classes, n_cells).sum(axis=1))
+    return ClassSamples.of(increments, fare_class, n_classes).fit(method, options).mean
 
 
 def unconstrain(

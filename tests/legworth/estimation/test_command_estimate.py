@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import hashlib
+import html
 import json
 import re
 from pathlib import Path
@@ -172,7 +173,7 @@ def test_adjustments_are_told_in_every_output(table: Path, folder: Path) -> None
 def test_the_page_stands_by_itself(table: Path, folder: Path) -> None:
     assert run("estimate", table, "--network", folder).code == 0
     page = (folder / "estimate.html").read_text(encoding="utf-8")
-    assert page.count("<picture>") == 5
+    assert page.count("<picture>") == 6
     assert "<script" not in page
     addresses = re.findall(r"""(?:src|srcset|href)\s*=\s*["']([^"']*)""", page)
     assert len(addresses) > 10
@@ -209,6 +210,7 @@ def test_faults_of_history_and_adjustments_are_told_together_and_nothing_is_writ
         (["--adjustments", "none.csv"], "there is no such file; name a table of adjustments"),
         (["--adjustments", "none.csv", "--no-adjustments"], "contradict each other"),
         (["--half-life", "0"], "0.0 is not in the range"),
+        (["--half-life", "nan"], "half_life must be above 0 days"),
         (["--closing", "perhaps"], "'perhaps' is not one of"),
     ],
 )
@@ -252,3 +254,112 @@ def test_parquet_history_says_the_same(table: Path, folder: Path, tmp_path: Path
         outcome = run("estimate", path, "--network", folder, "--out", tmp_path / name, "--backtest", "0")
         assert outcome.code == 0, outcome.err
     assert digest(tmp_path / "csv" / "demand.csv") == digest(tmp_path / "parquet" / "demand.csv")
+
+
+def test_methods_are_the_plain_mean_where_no_class_closed(table: Path, folder: Path) -> None:
+    """Of the departures before the snapshot, each by its age with the half-life of a year, worked out here."""
+    outcome = run("estimate", table, "--network", folder, "--backtest", "0")
+    assert outcome.code == 0
+    assert "by other methods" not in outcome.out
+    found = json.loads((folder / "estimate.json").read_text(encoding="utf-8"))["methods"]
+    rows = pd.read_csv(table, parse_dates=["departure"])
+    rows = rows[(rows["departure"] < "2030-02-25") & (rows["days_before"] == 0)]
+    age = (pd.Timestamp("2030-02-25") - rows["departure"]).dt.days
+    rows = rows.assign(weight=0.5 ** (age / 365.0))
+    rows["weighed"] = rows["weight"] * rows["booked"]
+    total = rows.groupby("fare_class")[["weighed", "weight"]].sum()
+    assert found["departures"] == len(rows)
+    assert found["closed_intervals"] == found["pooled_samples"] == found["left_out"] == 0
+    assert [line["method"] for line in found["lines"]] == [
+        "booked",
+        "ignore",
+        "discard",
+        "replace",
+        "projection",
+        "normal",
+        "poisson",
+        "negative_binomial",
+        "estimate",
+    ]
+    for line in found["lines"]:
+        exact = 0.02 if line["method"] == "estimate" else 1e-12
+        assert line["mean"] == pytest.approx(total["weighed"].sum() / total["weight"].sum(), rel=exact)
+        for one in line["by_class"]:
+            mine = total.loc[one["fare_class"]]
+            assert one["mean"] == pytest.approx(mine["weighed"] / mine["weight"], rel=5 * exact)
+            assert abs(one["above_bookings"]) <= 5 * exact
+
+
+def closed_history() -> pd.DataFrame:
+    """The history with class C closed from the reading at 14 days on where more than 2 had booked in all by then."""
+    frame = history(2)
+    keys = ["departure", "itinerary", "days_before"]
+    by_then = frame[frame["days_before"] == 30].groupby(["departure", "itinerary"])["booked"].sum()
+    busy = pd.MultiIndex.from_frame(frame[["departure", "itinerary"]]).map(by_then).to_numpy() > 2
+    shut = busy & (frame["fare_class"] == "C").to_numpy() & (frame["days_before"] <= 14).to_numpy()
+    early = frame[frame["days_before"] == 30].set_index([*keys[:2], "fare_class"])["booked"]
+    at = pd.MultiIndex.from_frame(frame[[*keys[:2], "fare_class"]])
+    booked = np.where(shut, early.reindex(at).to_numpy(), frame["booked"])
+    return frame.assign(booked=booked.astype(int), open=~shut)
+
+
+def test_methods_say_the_same_of_every_format_and_stand_in_all_three_places(folder: Path, tmp_path: Path) -> None:
+    frame = closed_history()
+    frame.to_csv(tmp_path / "history.csv", index=False)
+    pyarrow.parquet.write_table(
+        pyarrow.Table.from_pandas(frame.assign(departure=pd.to_datetime(frame["departure"]).dt.date)),
+        tmp_path / "history.parquet",
+    )
+    told = {}
+    for ending in ("csv", "parquet"):
+        arguments = (tmp_path / f"history.{ending}", "--network", folder, "--out", tmp_path / ending)
+        outcome = run("estimate", *arguments, "--backtest", "0", "--methods")
+        assert outcome.code == 0, outcome.err
+        told[ending] = json.loads((tmp_path / ending / "estimate.json").read_text(encoding="utf-8"))["methods"]
+    assert told["csv"] == told["parquet"]
+    found = told["csv"]
+    assert found["closed_intervals"] > 100
+    lines = {line["method"]: line for line in found["lines"]}
+    for at, name in enumerate(CLASSES):
+        above = {method: line["by_class"][at]["above_bookings"] for method, line in lines.items()}
+        assert (above["poisson"] > 0.05) == (name == "C")
+        assert (above["estimate"] > 0.05) == (name == "C")
+        assert above["ignore"] == pytest.approx(0.0, abs=1e-12)
+    page = (tmp_path / "csv" / "estimate.html").read_text(encoding="utf-8")
+    assert "The same history by other methods" in outcome.out
+    for note in found["notes"]:
+        assert note in outcome.out
+        assert html.escape(note) in page
+    for method in ("poisson", "estimate"):
+        figure = f"{lines[method]['mean']:.2f}"
+        assert f"{figure} ┃" in outcome.out or f"{figure} │" in outcome.out
+        assert f"<td>{figure}</td>" in page
+
+
+def test_methods_have_no_figure_of_a_class_that_was_never_open(folder: Path, tmp_path: Path) -> None:
+    frame = history()
+    shut = frame["fare_class"] == "C"
+    frame = frame.assign(booked=frame["booked"].where(~shut, 0), open=~shut)
+    frame.to_csv(tmp_path / "history.csv", index=False)
+    outcome = run("estimate", tmp_path / "history.csv", "--network", folder, "--backtest", "0", "--methods")
+    assert outcome.code == 0, outcome.err
+    found = json.loads((folder / "estimate.json").read_text(encoding="utf-8"))["methods"]
+    assert found["never_open"] == ["C"]
+    for line in found["lines"]:
+        kept = line["method"] in ("booked", "estimate")
+        assert line["by_class"][2] == {"fare_class": "C", "mean": 0.0 if kept else None, "above_bookings": None}
+        assert line["mean"] > 2.0
+    assert "Class C was closed" in outcome.out
+    assert "NaN" not in (folder / "estimate.html").read_text(encoding="utf-8")
+    assert "nan" not in outcome.out
+
+
+def test_without_ageing_all_departures_count_alike(table: Path, folder: Path) -> None:
+    outcome = run("estimate", table, "--network", folder, "--backtest", "0", "--half-life", "inf")
+    assert outcome.code == 0, outcome.err
+    document = json.loads((folder / "estimate.json").read_text(encoding="utf-8"))
+    rows = pd.read_csv(table, parse_dates=["departure"])
+    rows = rows[(rows["departure"] < "2030-02-25") & (rows["days_before"] == 0)]
+    assert document["settings"]["half_life"] is None
+    assert document["methods"]["half_life"] is None
+    assert document["methods"]["lines"][0]["mean"] == pytest.approx(rows["booked"].mean(), rel=1e-12)
