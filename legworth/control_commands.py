@@ -120,7 +120,9 @@ def connection(
 
 @click.command(epilog=EXIT_CODES)
 @FOLDER
-@click.option("--seats", multiple=True, metavar="LEG=+N", help="More or fewer seats on a leg; may be repeated.")
+@click.option(
+    "--seats", multiple=True, metavar="LEG=+N", help="So many seats more (+N) or fewer (-N) on a leg; may be repeated."
+)
 @click.option("--cancel", multiple=True, metavar="LEG", help="A leg that does not run; may be repeated.")
 @click.option("--fare", multiple=True, metavar="ITINERARY/CLASS=F", help="Another fare; may be repeated.")
 @click.option(
@@ -141,7 +143,8 @@ def change(
     **how: Any,
 ) -> None:
     """Price FOLDER before and after a change: revenue, and the legs whose prices move most."""
-    from legworth.change import changed_network, parse_changes, study_change
+    from legworth.change import study_change
+    from legworth.changed_network import changed_network, parse_changes
     from legworth.control_report import change_as_json, print_change
     from network import read_folder
 
@@ -158,4 +161,4 @@ def change(
     if as_json:
         print_json(change_as_json(study))
         return
-    print_change(before, study, str(options.lp.method), fares=bool(fare))
+    print_change(before, study, str(options.lp.method))

@@ -9,6 +9,7 @@ import pandas as pd
 from rich.table import Table
 
 from legworth.change import ChangeStudy
+from legworth.change_lines import change_lines
 from legworth.connection import ConnectionStudy
 from legworth.report import CAUTION, console_for_output, money, price_text
 from network import Network
@@ -116,9 +117,11 @@ def connections_as_json(studies: list[ConnectionStudy], picture: str | None) -> 
     return {"connections": [asdict(study) for study in studies], "picture": picture}
 
 
-def print_change(network: Network, study: ChangeStudy, method: str, *, fares: bool) -> None:
-    """Print revenue before and after, and what moves."""
+def print_change(network: Network, study: ChangeStudy, method: str) -> None:
+    """Print what is changed, revenue before and after, and what moves."""
     console = console_for_output()
+    for line in change_lines(study.account, network.currency):
+        console.print(line, highlight=False, soft_wrap=True)
     gain = study.after - study.before
     console.print(
         f"Optimum of the {method} program before {money(study.before)}, after {money(study.after)}: "
@@ -126,12 +129,12 @@ def print_change(network: Network, study: ChangeStudy, method: str, *, fares: bo
         style="bold",
         highlight=False,
     )
-    if fares:
+    if study.account.fares and not study.account.products_with_other_demand:
         console.print("Demand is taken to stay the same at the new fares.", highlight=False)
     if study.lost_itineraries:
+        lost = "1 itinerary is" if study.lost_itineraries == 1 else f"{study.lost_itineraries:,} itineraries are"
         console.print(
-            f"{study.lost_itineraries:,} itineraries are no longer sold; carrying their passengers another way is not "
-            "looked at",
+            f"{lost} no longer sold; carrying their passengers another way is not looked at",
             highlight=False,
             soft_wrap=True,
         )
@@ -156,4 +159,5 @@ def print_change(network: Network, study: ChangeStudy, method: str, *, fares: bo
 
 def change_as_json(study: ChangeStudy) -> dict[str, Any]:
     """The study as one document."""
-    return {**asdict(study), "gain": study.after - study.before}
+    found = asdict(study)
+    return {"changes": found.pop("account"), **found, "gain": study.after - study.before}

@@ -1,5 +1,6 @@
 """What is sold: tables, route graph, demand to come, and one `Network` of ordered arrays."""
 
+from network.counted import counted
 from network.demand import Demand, Family
 from network.errors import (
     InputError,
@@ -36,6 +37,7 @@ __all__ = [
     "Stations",
     "TableSchema",
     "components",
+    "counted",
     "input_schemas",
     "read_folder",
     "route_graph",

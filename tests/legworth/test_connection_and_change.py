@@ -9,7 +9,9 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from legworth.change import changed_network, parse_changes, study_change
+from legworth.change import study_change
+from legworth.change_account import account_of_change
+from legworth.changed_network import changed_network, parse_changes
 from legworth.connection import itineraries_between, itinerary_named, study_connection
 from legworth.pricing import PricingOptions
 from lp import LpOptions, Method, solve_network
@@ -102,9 +104,18 @@ def test_a_new_leg_is_compared_by_folder(network: Network, tmp_path: Path, folde
         (("L2=-10",), (), (), "9 seats left"),
         ((), ("L9",), (), "no leg 'L9'"),
         ((), (), ("NOR-SUD=5",), "ITINERARY/CLASS"),
-        ((), (), ("NOR-SUD/A=-5",), "not below zero"),
+        ((), (), ("NOR-SUD/A=-5",), "from 0 to"),
         ((), (), ("NOR-SUD/Z=5",), "not sold in class 'Z'"),
         ((), (), ("NOWHERE/A=5",), "no itinerary 'NOWHERE'"),
+        (("L2=30",), (), (), "write L2=+30 for 30 more or L2=-30 for 30 fewer"),
+        (("L2=+99981",), (), (), "L2 would have 100,001 seats"),
+        (("L2=+" + "9" * 400,), (), (), "cannot be read"),
+        (("L2=+1", "L2=+1"), (), (), "--seats names L2 more than once"),
+        (("L2=+1",), ("L2",), (), "contradict each other"),
+        ((), ("L2",), ("NOR-SUD/A=150",), "--fare of NOR-SUD and --cancel L2 contradict each other"),
+        ((), (), ("NOR-SUD/A=150", "NOR-SUD/A=160"), "--fare names NOR-SUD/A more than once"),
+        ((), (), ("NOR-SUD/A=nan",), "ITINERARY/CLASS=120"),
+        ((), (), ("NOR-SUD/A=1e300",), "from 0 to 1,000,000,000"),
     ],
 )
 def test_changes_that_make_no_sense_are_refused(
@@ -153,3 +164,54 @@ def test_changes_that_cannot_be_compared_are_refused(tmp_path: Path, network: Ne
     assert "one program" in run("change", folder, "--seats", "L1=+1", "--method", "randomised").err
     departed = Folder().replace("network.toml", "2030-02-25T02:30", "2030-03-01T07:00").write(tmp_path / "departed")
     assert "L1 has departed" in run("change", departed, "--seats", "L1=+1").err
+    assert "L1 has departed" in run("change", departed, "--cancel", "L1").err
+
+
+def test_what_was_changed_is_said(folder: Path) -> None:
+    arguments = ("change", folder, "--seats", "L3=-2", "--cancel", "L2", "--fare", "OST-NOR/B=90")
+    text = run(*arguments).out
+    assert "L3: 16 -> 14 seats, 8 -> 6 left to sell" in text
+    assert "L2: cancelled, 11 seats are sold on it" in text
+    assert "OST-NOR B: fare 95.00 -> 90.00 EUR" in text
+    assert "2 itineraries are no longer sold" in text
+    changes = json.loads(run(*arguments, "--json").out)["changes"]
+    assert changes["seats"] == [{"leg": "L3", "seats_before": 16, "seats_after": 14, "left_before": 8, "left_after": 6}]
+    assert changes["cancelled"] == [{"leg": "L2", "seats": 20, "sold": 11}]
+    assert changes["fares"] == [{"itinerary": "OST-NOR", "fare_class": "B", "fare_before": 95.0, "fare_after": 90.0}]
+    assert changes["itineraries_lost"] == 2
+    assert not any(changes[name] for name in ("added", "products_lost", "products_with_other_demand"))
+
+
+def test_two_folders_are_compared_name_by_name(folder: Path, tmp_path: Path, network: Network) -> None:
+    other = Folder().add("legs.csv", "L6,NOR,HUB,2030-03-04T06:00+01:00,2030-03-04T07:30+01:00,20,5")
+    other.add("itineraries.csv", "NEW,L6").add("fares.csv", "NEW,A,100", "OST-NOR,C,50")
+    other.add("demand.csv", "NEW,A,5,2.5,", "OST-NOR,C,1,1,").cell("demand.csv", 3, "mean", "4.5")
+    other.cell("legs.csv", 6, "departs", "2030-03-03T17:30+01:00").cell("legs.csv", 2, "sold", "13")
+    other.replace("fares.csv", "SUD-HUB,B,65\n", "").replace("demand.csv", "SUD-HUB,B,3,2,\n", "")
+    for file in ("legs.csv", "itineraries.csv", "fares.csv", "demand.csv"):
+        other.frame(file, lambda frame: frame.sample(frac=1.0, random_state=8))
+    found = account_of_change(network, read_folder(other.write(tmp_path / "other")).network)
+    assert [(move.leg, move.left_before, move.left_after) for move in found.seats] == [("L1", 12, 11)]
+    assert [(leg.leg, leg.seats, leg.left) for leg in found.added] == [("L6", 20, 15)]
+    assert (found.cancelled, found.fares) == ((), ())
+    assert (found.legs_at_other_times, found.itineraries_lost, found.itineraries_added) == (1, 0, 1)
+    assert (found.itineraries_rerouted, found.products_lost, found.products_added) == (0, 1, 1)
+    assert found.products_with_other_demand == 1
+    rerouted = Folder().replace("itineraries.csv", "NOR-OST,L1 L3", "NOR-OST,L1").write(tmp_path / "rerouted")
+    assert account_of_change(network, read_folder(rerouted).network).itineraries_rerouted == 1
+
+
+def test_the_same_network_in_another_order_is_no_change(folder: Path, tmp_path: Path, network: Network) -> None:
+    shuffled = Folder()
+    for file in ("stations.csv", "legs.csv", "itineraries.csv", "fares.csv", "demand.csv"):
+        shuffled.frame(file, lambda frame: frame.sample(frac=1.0, random_state=3))
+    path = shuffled.write(tmp_path / "shuffled")
+    assert account_of_change(network, read_folder(path).network).is_empty
+    assert "Nothing that is priced is changed." in run("change", folder, "--becomes", path).out
+
+
+def test_of_many_changes_the_first_are_listed(folder: Path, tmp_path: Path) -> None:
+    dearer = Folder().frame("fares.csv", lambda frame: frame.assign(fare=frame["fare"].astype(float) + 1))
+    outcome = run("change", folder, "--becomes", dearer.write(tmp_path / "dearer"))
+    assert outcome.out.count(": fare ") == 10
+    assert "and 7 more products with other fares" in outcome.out
