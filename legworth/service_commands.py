@@ -33,7 +33,12 @@ STORE = click.option(
     help="Let the service's clock begin at this instant, ISO 8601 with offset, or at the snapshot in force with "
     "`snapshot`: for drills and demonstrations.",
 )
-def serve(store: Path, host: str, port: int, settings: Path | None, at: str | None) -> None:
+@click.option(
+    "--bring-ledger-forward",
+    is_flag=True,
+    help="First bring the ledger of an older version forward. Stop every service that uses it, and back it up, before.",
+)
+def serve(store: Path, host: str, port: int, settings: Path | None, at: str | None, bring_ledger_forward: bool) -> None:
     """Answer requests and show pages by the night in force of a store, until stopped.
 
     Asking needs no token unless the settings say so; selling, cancelling and overwriting counts always do.
@@ -47,7 +52,7 @@ def serve(store: Path, host: str, port: int, settings: Path | None, at: str | No
         raise SettingError(f"the service needs {', '.join(missing)}; install legworth[service]")
     from legworth.service.serving import run_service
 
-    run_service(store, host, port, settings, at)
+    run_service(store, host, port, settings, at, bring_ledger_forward)
 
 
 @click.group(epilog=EXIT_CODES)

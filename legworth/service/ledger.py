@@ -13,18 +13,18 @@ from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
 from typing import Any, TypeVar
 
-from sqlalchemy import Connection, Select, bindparam, func, insert, select, update
+from sqlalchemy import Connection, Engine, Select, bindparam, func, insert, select, update
 from sqlalchemy.exc import (
     ArgumentError,
     DBAPIError,
     IntegrityError,
     NoSuchModuleError,
-    ProgrammingError,
     SQLAlchemyError,
 )
 
 from legworth.service.errors import LedgerError
-from legworth.service.ledger_tables import durable_engine, journal, metadata, overwritings, seat_counts
+from legworth.service.ledger_tables import durable_engine, journal, overwritings, seat_counts
+from legworth.service.ledger_versions import bring_forward, make_ready
 from legworth.service.orders import Batch, Cancellation, Order, Outcome, Sale, SeatCount, answer_order, present
 from network import SettingError
 
@@ -75,27 +75,28 @@ class Ledger:
     SettingError
         If the URL cannot be used or its driver is not installed.
     LedgerError
-        If the database cannot be reached.
+        If the database cannot be reached, or the ledger in it is of another version.
     """
 
     def __init__(self, url: str) -> None:
+        self.engine = _engine_of(url)
         try:
-            self.engine = durable_engine(url)
-        except (ArgumentError, NoSuchModuleError, ModuleNotFoundError) as error:
-            raise SettingError(
-                f"the database URL cannot be used ({error}); correct it or install its driver"
-            ) from error
-        try:
-            self._make_tables()
+            make_ready(self.engine)
         except SQLAlchemyError as error:
+            self.close()
             raise LedgerError(f"the ledger cannot be opened ({_cause(error)}); start the database") from error
+        except LedgerError:
+            self.close()
+            raise
 
-    def _make_tables(self) -> None:
-        """Make the tables unless they are there; a service that starts at the same time may be quicker."""
+    @staticmethod
+    def bring_forward(url: str) -> tuple[int, int]:
+        """Bring an older ledger forward; see `ledger_versions.bring_forward`."""
+        engine = _engine_of(url)
         try:
-            metadata.create_all(self.engine)
-        except (IntegrityError, ProgrammingError):
-            metadata.create_all(self.engine)
+            return bring_forward(engine)
+        finally:
+            engine.dispose()
 
     def close(self) -> None:
         """Give the connections back."""
@@ -247,6 +248,13 @@ class Ledger:
                         f"the ledger could not write ({_cause(error)}); send the order again under the same key"
                     ) from error
         raise AssertionError("a last attempt either returns or raises")
+
+
+def _engine_of(url: str) -> Engine:
+    try:
+        return durable_engine(url)
+    except (ArgumentError, NoSuchModuleError, ModuleNotFoundError) as error:
+        raise SettingError(f"the database URL cannot be used ({error}); correct it or install its driver") from error
 
 
 def _locked(connection: Connection, legs: Iterable[str]) -> dict[str, SeatCount]:

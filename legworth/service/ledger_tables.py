@@ -23,7 +23,7 @@ from sqlalchemy import (
 
 from network import SettingError
 
-__all__ = ["durable_engine", "journal", "metadata", "overwritings", "seat_counts"]
+__all__ = ["durable_engine", "journal", "ledger_version", "metadata", "overwritings", "seat_counts"]
 
 metadata = MetaData()
 seat_counts = Table(
@@ -61,6 +61,12 @@ overwritings = Table(
     Column("who", String(200), nullable=False),
     Column("why", Text, nullable=False),
     Column("at", String(40), nullable=False),
+)
+ledger_version = Table(
+    "ledger_version",
+    metadata,
+    Column("mark", Integer, CheckConstraint("mark = 1"), primary_key=True, autoincrement=False),
+    Column("version", Integer, CheckConstraint("version > 0"), nullable=False),
 )
 
 

@@ -15,6 +15,7 @@ import uvicorn
 
 from legworth.service.app import make_app
 from legworth.service.connections import BoundedConnection
+from legworth.service.ledger import Ledger
 from legworth.service.settings import ServiceSettings, read_service_settings
 from legworth.service.state import ServiceState
 from legworth.store import Store
@@ -26,21 +27,26 @@ BACKLOG = 2_048
 """Connections that may wait to be taken."""
 
 
-def run_service(store: Path, host: str, port: int, settings: Path | None, at: str | None = None) -> None:
-    """Serve the night in force of a store.
+def run_service(
+    store: Path, host: str, port: int, settings: Path | None, at: str | None = None, forward: bool = False
+) -> None:
+    """Serve the night in force of a store, after bringing its ledger forward if that is wanted.
 
     Raises
     ------
     SettingError
         If the store is none, a setting is wrong, or the address cannot be listened on.
     LedgerError
-        If the ledger cannot be opened.
+        If the ledger cannot be opened or brought forward.
     """
     log_in_lines()
     opened = Store.open(store)
     chosen = read_service_settings(settings)
     listening = _listen(host, port)
     with listening:
+        if forward:
+            before, now = Ledger.bring_forward(chosen.ledger_url(opened.path))
+            structlog.get_logger().info("ledger brought forward", version_before=before, version=now)
         state = ServiceState.start(opened, chosen, _instant(opened, at))
         app = make_app(opened, chosen, state=state)
         server = uvicorn.Server(_config(app, chosen))
