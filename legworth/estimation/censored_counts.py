@@ -75,26 +75,32 @@ def fit_censored_negative_binomial(sample: CensoredSample, options: EmOptions | 
 
 
 def _fit(sample: CensoredSample, options: EmOptions, *, over_dispersed: bool) -> CensoredFit:
-    group, value = sample.group, sample.value
     weak = sample.size_open == 0
-    shut = sample.closed & ~weak[group]
-    mean = np.maximum(sample.mean(value), 1e-12)
+    mean = np.maximum(sample.mean(sample.value), 1e-12)
     log_shape = _first_shape(sample, mean) if over_dispersed else np.full(sample.n_groups, np.inf)
-    imputed = value.copy()
-    moving = ~weak & ((sample.sums(shut) > 0) | over_dispersed)
-    rounds = 0
+    imputed = sample.value.copy()
+    moving = ~weak & ((sample.sums(sample.closed) > 0) | over_dispersed)
+    rounds, settled = 0, True
     while np.any(moving) and rounds < options.iterations:
         rounds += 1
-        at = group[shut]
+        if settled:  # groups that have settled are left as they are
+            rows = np.flatnonzero(moving[sample.group])
+            part = sample.observations(rows)
+            shut = np.flatnonzero(part.closed)
+        at = part.group[shut]
         shape = np.exp(log_shape[at]) if over_dispersed else None
-        imputed[shut] = mean_given_at_least(value[shut], mean[at], shape)
-        before, mean = mean, np.maximum(sample.mean(imputed), 1e-12)
-        step = np.abs(mean - before) / np.sqrt(mean)
+        filled = part.value.copy()
+        filled[shut] = mean_given_at_least(part.value[shut], mean[at], shape)
+        imputed[rows] = filled
+        new = np.where(moving, np.maximum(part.mean(filled), 1e-12), mean)
+        step = np.abs(new - mean) / np.sqrt(new)
+        mean = new
         if over_dispersed:
-            climbed = _climb(sample, mean, log_shape)
+            climbed = np.where(moving, _climb(part, mean, log_shape), log_shape)
             step = np.maximum(step, 1e-2 * np.abs(climbed - log_shape))
             log_shape = climbed
-        moving &= step > options.tolerance
+        before, moving = moving, moving & (step > options.tolerance)
+        settled = not np.array_equal(before, moving)
     deviation = np.sqrt(mean + mean**2 * np.exp(-log_shape))
     return CensoredFit.of(
         sample,
@@ -115,10 +121,18 @@ def _first_shape(sample: CensoredSample, mean: FloatArray) -> FloatArray:
 
 def _likelihood(sample: CensoredSample, mean: FloatArray, log_shape: FloatArray) -> FloatArray:
     """(G,) logarithm of the likelihood of what was seen, constants left out."""
-    n, m, r = sample.value, mean[sample.group], np.exp(log_shape[sample.group])
-    seen = special.gammaln(n + r) - special.gammaln(r) + special.xlogy(n, m / (m + r)) - r * np.log1p(m / r)
-    bound = np.log(np.maximum(at_least(n, m, r), _FAINT))
-    return sample.sums(np.where(sample.closed, bound, seen))
+    told = np.empty(len(sample.value))
+    for closed in (False, True):
+        rows = np.flatnonzero(sample.closed == closed)
+        at = sample.group[rows]
+        n, m, r = sample.value[rows], mean[at], np.exp(log_shape[at])
+        if closed:
+            told[rows] = np.log(np.maximum(at_least(n, m, r), _FAINT))
+        else:
+            told[rows] = (
+                special.gammaln(n + r) - special.gammaln(r) + special.xlogy(n, m / (m + r)) - r * np.log1p(m / r)
+            )
+    return sample.sums(told)
 
 
 def _climb(sample: CensoredSample, mean: FloatArray, log_shape: FloatArray) -> FloatArray:

@@ -140,7 +140,10 @@ class CensoredSample:
 
     def only_open(self) -> CensoredSample:
         """Return the observations that are no mere lower bounds."""
-        kept = ~self.closed
+        return self.observations(np.flatnonzero(~self.closed))
+
+    def observations(self, kept: IntArray) -> CensoredSample:
+        """Return some of the observations, given by position; the groups stay what they are."""
         return CensoredSample(self.value[kept], self.closed[kept], self.group[kept], self.weight[kept], self.n_groups)
 
 

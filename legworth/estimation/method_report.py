@@ -73,8 +73,8 @@ _BEWARE = (
     "demand of at least b, which is never below that of all demand and above it from the first booking on; where a "
     "class closes on the bookings of others, as under leg control, its own demand in closed intervals is no higher on "
     "that account, so they are filled too high.",
-    "Against that, the busiest products and dates close first, and one sample of all of them fills theirs too low; "
-    "which error is larger cannot be seen from the history.",
+    "Against that, the busiest products and dates tend to close first, and one sample of all of them fills theirs too "
+    "low; which error is larger cannot be seen from the history.",
 )
 
 
@@ -82,17 +82,17 @@ def _compared(found: MethodComparison) -> list[str]:
     age = "alike" if found.half_life is None else f"by its age as in the estimate (half at {found.half_life:g} days)"
     late = f"; {found.left_out:,} more whose readings end early are left out" if found.left_out else ""
     own = (
-        f"{found.pooled:,} of them were never open throughout and take the mean of all intervals of their class"
+        f"{found.pooled:,} of them never open throughout, which take the mean of all intervals of their class"
         if found.pooled
-        else "each of them has intervals that were open throughout"
+        else "each with intervals that were open throughout"
     )
     return [
         f"Mean whole demand of a departure of a product, over the same {found.departures:,} departures of products "
         f"that have left, each counted {age}{late}.",
         f"{found.closed:,} of {found.intervals:,} intervals between readings ({found.closed / found.intervals:.1%}) "
         f"were closed, for a part at least; {found.closed_unbooked:,} of these hold no booking.",
-        f"A method takes every interval of a class as one sample of all products and dates, {found.groups:,} samples "
-        f"in all; {own}.",
+        f"A method takes every interval of a class as one sample of all products and dates, {found.groups:,} "
+        f"samples in all, {own}.",
     ]
 
 

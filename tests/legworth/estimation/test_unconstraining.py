@@ -130,3 +130,17 @@ def test_methods_of_a_whole_history_rank_as_they_should() -> None:
 @pytest.mark.parametrize("method", NAIVE)
 def test_naive_methods_do_not_iterate(method: str) -> None:
     assert unconstrain(CensoredSample.of(*censored(1, 50)), method).iterations == 0
+
+
+@pytest.mark.parametrize("method", ["poisson", "negative_binomial"])
+def test_what_has_settled_does_not_move_with_others(method: str) -> None:
+    """A group that is nearly always closed takes many more rounds; the other ends as if it were alone."""
+    seen, closed = censored(4, 400, a=0.3)
+    slow, shut = censored(6, 400, mean=5.0)
+    shut[20:] = True
+    alone = unconstrain(CensoredSample.of(seen, closed), method)
+    values, flags = np.append(seen, slow), np.append(closed, shut)
+    both = unconstrain(CensoredSample.of(values, flags, np.repeat([0, 1], 400), 2), method)
+    assert both.iterations > 3 * alone.iterations
+    assert both.mean[0] == alone.mean[0]
+    assert both.deviation[0] == alone.deviation[0]
