@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from legworth.option_types import Figure
 from legworth.options import AS_JSON, EXIT_CODES, print_json
 
 if TYPE_CHECKING:
@@ -66,7 +67,7 @@ __all__ = ["estimate"]
 )
 @click.option(
     "--half-life",
-    type=click.FloatRange(0, min_open=True),
+    type=Figure(0, min_open=True),
     default=365.0,
     show_default=True,
     help="Age in days at which a departure counts half; inf for no ageing.",
@@ -113,11 +114,11 @@ def estimate(
     with progress_bar("Estimating demand") as progress:
         found = estimate_folder(history, folder, _options(how), progress)
     document = estimate_as_json(found)
-    files = write_estimate(out or folder, estimate_tables(found), document, estimate_page(found), table_format)
+    files, kept = write_estimate(out or folder, estimate_tables(found), document, estimate_page(found), table_format)
     if as_json:
-        print_json({**document, "written": [str(file) for file in files]})
+        print_json({**document, "written": [str(file) for file in files], "kept": [str(file) for file in kept]})
         return
-    print_estimate(found, files, methods=methods)
+    print_estimate(found, files, kept, methods=methods)
 
 
 def _options(how: dict[str, Any]) -> EstimateOptions:

@@ -1,7 +1,7 @@
 """Table schemas: every column of every table is declared once, in a Table Schema JSON file.
 
-The files follow the open Table Schema standard of the Data Package project, with three properties of
-our own that the standard permits: ``unit``, ``optional`` (the column or table may be left out) and ``mayBeEmpty``. Reader,
+The files follow the open Table Schema standard of the Data Package project, with three properties of our own that
+the standard permits: ``unit``, ``optional`` (the column or table may be left out) and ``mayBeEmpty``. Reader,
 validator, documentation and result writers all work from the objects made here.
 """
 

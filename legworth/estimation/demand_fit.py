@@ -32,6 +32,9 @@ __all__ = ["DemandFit", "fit_demand"]
 SAMPLE = 1_500_000
 """Rows from which curves, closing and persistence are fitted; rates, effects and dispersion use all."""
 
+UNKNOWN = 0.02
+"""Share of intervals not known to be open for how long from which on that is said."""
+
 TURNS = 3
 """Turns of rates and curves, effects, dispersion, shrinkage."""
 
@@ -151,7 +154,7 @@ def fit_demand(
     else:
         fitted = _fit(increments.take(sampled), series.take(sampled), model, pools, options)
         model, view, effects = _widen(increments, series, fitted, options)
-    notes = _notes(model, view, history.fare_classes, day, settled=fitted.settled)
+    notes = _notes(increments, model, view, history.fare_classes, day, settled=fitted.settled)
     model = replace(model, dispersion=class_dispersion(model, view, options.seed))
     model = replace(model, dispersion=products_dispersion(model, view))
     model = refit_rates(model, view)
@@ -176,7 +179,13 @@ def fit_demand(
 
 
 def _notes(
-    model: RateModel, view: Sight, fare_classes: tuple[str, ...], day: np.datetime64, *, settled: bool
+    increments: Increments,
+    model: RateModel,
+    view: Sight,
+    fare_classes: tuple[str, ...],
+    day: np.datetime64,
+    *,
+    settled: bool,
 ) -> tuple[str, ...]:
     """Say what was not to be had, in sentences."""
     reach = np.bincount(model.fare_class[view.product], view.reach, minlength=len(fare_classes))
@@ -196,6 +205,16 @@ def _notes(
     if hardly:
         notes.append(
             f"Hardly ever open in some interval: {', '.join(hardly)}; that part of the booking curves is borrowed"
+        )
+    if not np.any(view.came):
+        notes.append(
+            "Nothing was booked in this history: 0 was written for every product, which keeps no seats for any"
+        )
+    unknown = float(np.mean(np.isnan(increments.share)))
+    if unknown > UNKNOWN:
+        notes.append(
+            f"Of {unknown:.0%} of the intervals it is not known how long the class was open (no open_share): most of "
+            "them count for nothing, and classes that are closed often are probably estimated low"
         )
     if not settled:
         notes.append("Booking curves had not settled when the limit of rounds was reached; history may be too thin")

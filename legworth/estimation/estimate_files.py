@@ -24,13 +24,13 @@ KEPT = ("demand", "booking_curves")
 
 def write_estimate(
     out: Path, tables: dict[str, pd.DataFrame], document: dict[str, Any], page: str, table_format: TableFormat = "csv"
-) -> list[Path]:
+) -> tuple[list[Path], list[Path]]:
     """Write an estimate into a folder.
 
     All files are written aside first and moved into place at the end, booking curves before the demand that
     names them, so that a run that fails leaves the folder as it was. Demand and booking curves that stand there and
     are not known from ``estimate.json`` as those of an earlier estimate are kept, under their names with ``.before`` at
-    the end.
+    the end, or ``.before2`` and so on where something else is kept already.
 
     Parameters
     ----------
@@ -47,8 +47,8 @@ def write_estimate(
 
     Returns
     -------
-    list of Path
-        The files in their places.
+    written, kept
+        The files in their places, and those that were kept.
 
     Raises
     ------
@@ -70,7 +70,7 @@ def write_estimate(
             text = json.dumps(document, indent=2, ensure_ascii=False, allow_nan=False)
             (aside / DOCUMENT).write_text(text + "\n", encoding="utf-8")
             (aside / PAGE).write_text(page, encoding="utf-8")
-            _keep(out)
+            kept = _keep(out)
             # A folder may hold a table in one format only.
             other = "parquet" if table_format == "csv" else "csv"
             gone = [Path(name).with_suffix(f".{other}").name for name in names]
@@ -81,19 +81,23 @@ def write_estimate(
                 out.rmdir()
     except OSError as error:
         raise SettingError(f"cannot write to {out} ({error.strerror}); free space or name another folder") from error
-    return [out / name for name in (*names, DOCUMENT, PAGE)]
+    return [out / name for name in (*names, DOCUMENT, PAGE)], kept
 
 
-def _keep(out: Path) -> None:
-    """Keep copies of tables that people wrote."""
-    known = _known(out / DOCUMENT)
+def _keep(out: Path) -> list[Path]:
+    """Keep copies of tables that people wrote, and of nothing twice; returns them."""
+    known, kept = _known(out / DOCUMENT), []
     for name in KEPT:
         for ending in ("csv", "parquet"):
             path = out / f"{name}.{ending}"
             if path.is_file() and known.get(path.name) != _digest(path):
+                names = (out / f"{path.name}.before{number or ''}" for number in (0, *range(2, 10_000)))
+                place = next(name for name in names if not name.exists() or _digest(name) == _digest(path))
                 copy = out / f".{path.name}.keeping"
                 shutil.copy2(path, copy)
-                copy.replace(out / f"{path.name}.before")
+                copy.replace(place)
+                kept.append(place)
+    return kept
 
 
 def _known(document: Path) -> dict[str, str]:

@@ -235,7 +235,8 @@ def method_picture(found: MethodComparison) -> Picture:
         axes.xaxis.set_major_formatter(PercentFormatter(1.0, decimals=0))
         axes.set_xlabel("mean demand above what was booked")
         axes.set_ylabel("fare class")
-        figure.legend(loc="outside upper left", ncols=2 if width < 6 else 4, frameon=False)
+        if axes.get_legend_handles_labels()[0]:
+            figure.legend(loc="outside upper left", ncols=2 if width < 6 else 4, frameon=False)
         return _svg(figure, COLOURS)
 
     about = "Marks by fare class of how far methods are above bookings; the table below has the figures."

@@ -100,15 +100,17 @@ def _backtest(found: Estimated) -> dict[str, Any]:
     }
 
 
-def print_estimate(found: Estimated, files: Sequence[Path], *, methods: bool = False) -> None:
+def print_estimate(
+    found: Estimated, files: Sequence[Path], kept: Sequence[Path] = (), *, methods: bool = False
+) -> None:
     """Print what was estimated, how it did on the past, and where it was written.
 
     Parameters
     ----------
     found
         The estimate.
-    files
-        What was written.
+    files, kept
+        What was written, and what people had written there before.
     methods
         Whether other methods are shown beside it.
     """
@@ -138,6 +140,8 @@ def print_estimate(found: Estimated, files: Sequence[Path], *, methods: bool = F
         console.print("History is too short to be tested on the past", highlight=False)
     for file in files:
         console.print(f"Written: {file}", highlight=False, markup=False, soft_wrap=True)
+    for file in kept:
+        console.print(f"Kept what was there before: {file}", highlight=False, markup=False, soft_wrap=True)
     took = ", ".join(f"{step} {seconds:.1f} s" for step, seconds in found.seconds.items())
     console.print(took, style="dim", highlight=False)
     console.print(CAUTION, style="dim", highlight=False, soft_wrap=True)

@@ -72,7 +72,8 @@ class ShrunkRates:
     rate
         Passengers of an average departure.
     own_weight
-        Weight of the own history, 0 to 1.
+        Weight of the own history, 0 to 1: by how much the rate moves with the own rate seen, through the levels above
+        as well, of which a product alone in its city pair is all there is.
     variance
         Relative variance of the rate.
     pair_rate, pair_variance
@@ -132,9 +133,16 @@ def shrink_rates(
     above = middle.variance.reshape(n_pairs, n_classes) + (1 - middle.weight.reshape(n_pairs, n_classes)) ** 2 * (
         pair.variance[:, None] + top
     )
+    plans = weighed * class_rate
+    in_middle, in_pair = (
+        np.divide(plans, total, out=np.zeros(came.shape), where=total > 0)
+        for total in (pair_plan[city_pair], plan[city_pair, None])
+    )
+    of_middle = middle.weight.reshape(n_pairs, n_classes)[city_pair]
+    above_own = of_middle * in_middle + (1 - of_middle) * pair.weight[city_pair, None] * in_pair
     return ShrunkRates(
         rate=own_prior.ravel() * own.factor,
-        own_weight=own.weight,
+        own_weight=own.weight + (1 - own.weight) * above_own.ravel(),
         variance=own.variance + (1 - own.weight) ** 2 * above[city_pair].ravel(),
         pair_rate=np.vstack([prior, class_rate]),
         pair_variance=own.spread + np.vstack([above, pair.spread + middle.spread + top]),

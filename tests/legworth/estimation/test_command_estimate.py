@@ -135,6 +135,39 @@ def test_what_people_wrote_is_kept_and_what_we_wrote_is_not(table: Path, tmp_pat
     assert not list(folder.glob(".*"))
 
 
+def test_nothing_that_people_wrote_is_lost_the_second_time(table: Path, tmp_path: Path) -> None:
+    folder = Folder().write(tmp_path / "network")
+    arguments = ("estimate", table, "--network", folder, "--backtest", "0")
+    first = (folder / "demand.csv").read_text()
+    by_hand = first.replace("2.5,1.6", "2.6,1.6")
+    assert by_hand != first
+    told = [run(*arguments).out]
+    for text in (by_hand, first):
+        (folder / "demand.csv").write_text(text)
+        told.append(run(*arguments).out)
+    kept = {path.name: path.read_text() for path in folder.glob("demand.csv.before*")}
+    assert kept == {"demand.csv.before": first, "demand.csv.before2": by_hand}
+    names = ("demand.csv.before", "demand.csv.before2", "demand.csv.before")
+    for out, name in zip(told, names, strict=True):
+        assert f"Kept what was there before: {folder / name}\n" in out
+
+
+def test_what_history_does_not_tell_is_said(table: Path, folder: Path, tmp_path: Path) -> None:
+    history = pd.read_csv(table) if table.suffix == ".csv" else pd.read_parquet(table)
+    quiet = tmp_path / "quiet.csv"
+    history.assign(booked=0).to_csv(quiet, index=False)
+    told = run("estimate", quiet, "--network", folder, "--out", tmp_path / "out", "--backtest", "0").out
+    assert "Nothing was booked in this history: 0 was written for every product" in told
+    reading = history.groupby(["departure", "itinerary", "fare_class"]).cumcount()
+    closed = history.assign(
+        open=reading < 1, booked=history.groupby(["departure", "itinerary", "fare_class"]).booked.transform("first")
+    )
+    bare = tmp_path / "bare.csv"
+    closed.drop(columns="open_share", errors="ignore").to_csv(bare, index=False)
+    told = run("estimate", bare, "--network", folder, "--out", tmp_path / "out", "--backtest", "0").out
+    assert "it is not known how long the class was open (no open_share)" in told
+
+
 def test_adjustments_are_told_in_every_output(table: Path, folder: Path) -> None:
     (folder / "adjustments.csv").write_text(
         "adjustment,leg,fare_class,factor,who,when,why,until\n"

@@ -217,7 +217,12 @@ def test_a_class_that_was_never_open_is_named_and_a_history_without_open_classes
     drawn = draw_history(4, n_itineraries=12, n_pairs=3, n_dates=90, seats=None)
     history = drawn.history
     rows = np.repeat(history.series_class == 0, np.diff(history.start))
-    closed = replace(history, booked=np.where(rows, 0.0, history.booked), open=history.open & ~rows)
+    closed = replace(
+        history,
+        booked=np.where(rows, 0.0, history.booked),
+        open=history.open & ~rows,
+        open_share=np.where(rows, 0.0, 1.0),
+    )
     fit = fit_demand(closed, drawn.pools, AS_OF, STILL)
     assert [note.startswith(f"Class {CLASSES[0]} was never open") for note in fit.warnings] == [True]
     rate = fit.rates.rate.reshape(drawn.rate.shape)
@@ -234,7 +239,7 @@ def test_a_class_closed_towards_departure_everywhere_is_told() -> None:
     late = np.tile(DAYS < 5, len(drawn.history.departure)) & np.repeat(drawn.history.series_class == 2, len(DAYS))
     by_five = np.repeat(drawn.history.booked.reshape(-1, len(DAYS))[:, DAYS == 5], len(DAYS), axis=1).ravel()
     booked = np.where(late, by_five, drawn.history.booked)
-    closed = replace(drawn.history, booked=booked, open=drawn.history.open & ~late)
+    closed = replace(drawn.history, booked=booked, open=drawn.history.open & ~late, open_share=np.where(late, 0.0, 1.0))
     fit = fit_demand(closed, drawn.pools, AS_OF, STILL)
     assert fit.warnings == (
         f"Hardly ever open in some interval: {CLASSES[2]}; that part of the booking curves is borrowed",

@@ -56,6 +56,28 @@ def test_more_history_weighs_more_and_none_borrows_all() -> None:
     assert found.rate.reshape(rate.shape)[1] == pytest.approx(rate[1], rel=0.1)
 
 
+def test_the_own_weight_is_how_far_the_rate_moves_with_the_own_rate() -> None:
+    _, came, pair = world(6)
+    exposure = np.full(came.shape, 30.0)
+    found = shrink_rates(came, exposure, exposure, pair, 30)
+    weight, rate = found.own_weight.reshape(came.shape), found.rate.reshape(came.shape)
+    moved = []
+    for itinerary, fare_class in ((0, 0), (3, 1), (10, 0)):
+        more = came.copy()
+        more[itinerary, fare_class] += 0.3
+        again = shrink_rates(more, exposure, exposure, pair, 30).rate.reshape(came.shape)
+        moved.append((again - rate)[itinerary, fare_class] / (0.3 / 30) - weight[itinerary, fare_class])
+    assert np.abs(moved).max() < 0.05  # how far pools vary is fitted anew as well
+
+
+def test_a_product_alone_in_its_city_pair_borrows_little() -> None:
+    came = np.random.default_rng(7).poisson(30.0 * np.random.default_rng(8).gamma(4.0, 1.0, (40, 2))).astype(float)
+    exposure = np.full(came.shape, 30.0)
+    found = shrink_rates(came, exposure, exposure, np.arange(40), 40)
+    assert np.all(found.own_weight > 0.8)
+    assert found.rate.reshape(came.shape) == pytest.approx(came / 30, rel=0.15, abs=0.25)
+
+
 def test_products_that_differ_by_chance_alone_are_taken_as_one() -> None:
     rng = np.random.default_rng(1)
     expected = np.full(500, 4.0)
