@@ -7,6 +7,7 @@ from typing import Any
 
 import click
 
+from legworth.option_types import MOST_MONEY, MOST_SEATS, Figure, instant
 from legworth.options import (
     AS_JSON,
     EXIT_CODES,
@@ -34,9 +35,14 @@ __all__ = ["change", "connection", "decide"]
 @click.option("--out", type=click.Path(path_type=Path, dir_okay=False), help="File for the answers, CSV or Parquet.")
 @click.option("--itinerary", help="Judge one request: the itinerary asked for.")
 @click.option("--fare-class", help="Its fare class.")
-@click.option("--fare", type=float, help="Its fare for one passenger, if it is not that of the class.")
-@click.option("--seats", type=int, default=1, show_default=True, help="Passengers who travel together.")
-@click.option("--moment", help="Instant of the request, ISO 8601 with offset; the snapshot if left out.")
+@click.option("--fare", type=Figure(0, MOST_MONEY), help="Its fare for one passenger, if it is not that of the class.")
+@click.option("--seats", type=click.IntRange(1, MOST_SEATS), help="Passengers who travel together.  [default: 1]")
+@click.option(
+    "--moment",
+    metavar="INSTANT",
+    callback=instant,
+    help="Instant of the request, ISO 8601 with offset, not before the snapshot; the snapshot if left out.",
+)
 @AS_JSON
 def decide(
     folder: Path, prices: Path, requests: Path | None, out: Path | None, *, as_json: bool, **request: Any
@@ -52,6 +58,9 @@ def decide(
 
     if (requests is None) == (request["itinerary"] is None):
         raise click.UsageError("give either --requests FILE or --itinerary NAME")
+    single = [f"--{name.replace('_', '-')}" for name, value in request.items() if value is not None]
+    if requests is not None and single:
+        raise click.UsageError(f"--requests says all of every request; leave {' and '.join(single)} out")
     read = read_folder(folder)
     print_warnings(read.warnings)
     network = read.network
@@ -98,7 +107,8 @@ def connection(
     from legworth.picture import draw_parties
     from network import read_folder
 
-    if (itinerary is None) == (origin is None or destination is None):
+    between = (origin is not None, destination is not None)
+    if any(between) != all(between) or (itinerary is not None) == any(between):
         raise click.UsageError("give either --itinerary NAME or both --from STATION and --to STATION")
     read = read_folder(folder)
     print_warnings(read.warnings)

@@ -13,6 +13,8 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from legworth.option_types import Figure
+
 if TYPE_CHECKING:
     from legworth.pricing import PricedNetwork, PricingOptions
     from network import Fault
@@ -46,9 +48,15 @@ def program_options(command: Callable[..., None]) -> Callable[..., None]:
         click.option(
             "--solver", type=click.Choice(["cbc", "highs"]), default="cbc", show_default=True, help="Solver to use."
         ),
-        click.option("--time-limit", type=float, help="Seconds that the solver may take for one program."),
         click.option(
-            "--samples", type=int, default=30, show_default=True, help="Outcomes of demand drawn (randomised)."
+            "--time-limit", type=Figure(0, min_open=True), help="Seconds that the solver may take for one program."
+        ),
+        click.option(
+            "--samples",
+            type=click.IntRange(2),
+            default=30,
+            show_default=True,
+            help="Outcomes of demand drawn (randomised).",
         ),
         click.option(
             "--seed", type=click.IntRange(0), default=1, show_default=True, help="Seed of the draw (randomised)."

@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from legworth.option_types import MOST_MONEY, Figure
 from legworth.options import AS_JSON, EXIT_CODES, FOLDER, print_json
 
 if TYPE_CHECKING:
@@ -53,17 +54,29 @@ __all__ = ["simulate"]
 )
 @click.option("--leg", "legs", multiple=True, metavar="LEG", help="A leg to follow over time; may be repeated.")
 @click.option(
-    "--demand-factor", type=float, default=1.0, show_default=True, help="Play with so many times the demand to come."
+    "--demand-factor",
+    type=Figure(0, 10, min_open=True),
+    default=1.0,
+    show_default=True,
+    help="Play with so many times the demand to come.",
 )
 @click.option("--fare-splits", is_flag=True, help="Bound revenue by the best fare splits too (slow).")
 @click.option("--stress", is_flag=True, help="Play the same paths with controls prepared from wrong forecasts.")
 @click.option("--cancel-rate", metavar="RATES", help="Share of bookings cancelled: 0.1, or by class A=0.02,*=0.1.")
 @click.option("--no-show-rate", metavar="RATES", help="Share of the rest who do not turn up, likewise.")
 @click.option(
-    "--authorised", type=float, default=1.0, show_default=True, help="Seats authorised for sale for one of capacity."
+    "--authorised",
+    type=Figure(1, 2),
+    default=1.0,
+    show_default=True,
+    help="Seats authorised for sale for one of capacity.",
 )
 @click.option(
-    "--denied-boarding-cost", type=float, default=0.0, show_default=True, help="Currency a passenger and leg."
+    "--denied-boarding-cost",
+    type=Figure(0, MOST_MONEY),
+    default=0.0,
+    show_default=True,
+    help="Currency a passenger and leg.",
 )
 @click.option("--jobs", type=click.IntRange(1), default=1, show_default=True, help="Processes side by side.")
 @AS_JSON

@@ -9,6 +9,7 @@ import subprocess
 import sys
 from pathlib import Path
 
+import click
 import pulp
 import pyarrow.csv
 import pytest
@@ -51,6 +52,28 @@ def test_options_out_of_their_limits_are_refused(name: str, folder: Path, tmp_pa
     assert found["ok"] is False
     assert found["error"]
     assert [path.name for path in tmp_path.iterdir()] == ["folder"]
+
+
+FIGURES = [
+    (name, option.opts[0])
+    for name, command in cli.commands.items()
+    for option in command.params
+    if isinstance(option.type, click.types.FloatParamType)
+]
+
+
+def test_commands_take_figures() -> None:
+    assert {("decide", "--fare"), ("price", "--time-limit"), ("simulate", "--demand-factor")} <= set(FIGURES)
+
+
+@pytest.mark.parametrize(("command", "option"), FIGURES)
+@pytest.mark.parametrize("value", ["nan", "inf", "-inf", "-1", "1e400", "many"])
+def test_a_figure_is_finite_and_within_limits(command: str, option: str, value: str, folder: Path) -> None:
+    """An infinity is no figure of the trade; -1 is below every limit there is."""
+    arguments = [folder] * sum(isinstance(each, click.Argument) for each in cli.commands[command].params)
+    outcome = run(command, *arguments, f"{option}={value}")
+    assert (outcome.code, outcome.out) == (2, "")
+    assert f"Invalid value for '{option}'" in outcome.err
 
 
 @pytest.mark.parametrize("where", ["legs.csv", "legs.csv/deep"])

@@ -148,6 +148,7 @@ def test_commands_print_and_draw(folder: Path, tmp_path: Path) -> None:
     assert outcome.code == 0
     assert "Optimum of the probabilistic program before" in outcome.out
     assert run("connection", folder).code == 2
+    assert run("connection", folder, "--itinerary", "NOR-SUD", "--from", "NOR").code == 2
     assert run("change", folder).code == 2
 
 

@@ -8,6 +8,8 @@ from pathlib import Path
 
 import numpy as np
 import pandas as pd
+import pyarrow as pa
+import pyarrow.parquet
 import pytest
 
 from legworth.decisions import Reason, Requests, decide
@@ -238,3 +240,67 @@ def test_a_gap_in_a_price_curve_is_a_fault(folder: Path, priced: dict[str, Path]
     outcome = run("decide", folder, "--prices", tmp_path, "--itinerary", "NOR-SUD", "--fare", "300")
     assert outcome.code == 2
     assert "price_curves.csv:3: remaining: 3 stands where the price for 2 seats left is missing" in outcome.err
+
+
+@pytest.mark.parametrize(
+    ("options", "words"),
+    [
+        (["--fare", "nan", "--fare-class", "A"], "'--fare': 'nan' is not a finite number"),
+        (["--fare", "1e300"], "'--fare': 1e+300 is not in the range"),
+        (["--seats", "0"], "'--seats': 0 is not in the range"),
+        (["--moment", "2030-02-27T12:00"], "'--moment': '2030-02-27T12:00' has no offset"),
+        (["--moment", "noon"], "'--moment': 'noon' is not a date and time"),
+        (
+            ["--moment", "2030-02-25T02:29:59+01:00"],
+            "--moment 2030-02-25T02:29:59+01:00 is before the snapshot, 2030-02-25T02:30:00+01:00",
+        ),
+    ],
+)
+def test_a_request_that_cannot_be_judged_is_refused(
+    options: list[str], words: str, folder: Path, priced: dict[str, Path]
+) -> None:
+    outcome = run("decide", folder, "--prices", priced["none"], "--itinerary", "NOR-SUD", *options)
+    assert (outcome.code, outcome.out) == (2, "")
+    assert words in outcome.err
+
+
+def test_a_request_at_the_snapshot_is_judged(folder: Path, priced: dict[str, Path]) -> None:
+    arguments = ("decide", folder, "--prices", priced["none"], "--itinerary", "NOR-SUD", "--fare-class", "A")
+    outcome = run(*arguments, "--moment", "2030-02-25T01:30Z")
+    assert outcome.code == 0
+    assert outcome.out == run(*arguments).out
+
+
+def test_moments_before_the_snapshot_are_faults_of_the_table(
+    folder: Path, priced: dict[str, Path], tmp_path: Path
+) -> None:
+    """Neither the seats nor the prices of that time are known."""
+    table = tmp_path / "early.csv"
+    moments = ("2030-02-25T02:30+01:00", "2030-02-25T02:29+01:00", "0001-01-01T00:00+14:00", "", "2030-02-25T01:29:59Z")
+    table.write_text("request,itinerary,moment\n" + "".join(f"{n},NOR-SUD,{m}\n" for n, m in enumerate(moments)))
+    outcome = run("decide", folder, "--prices", priced["none"], "--requests", table)
+    *lines, last = outcome.err.splitlines()
+    assert (outcome.code, last) == (2, "3 faults; nothing was computed or written")
+    assert [line.partition(" is before the snapshot")[0] for line in lines] == [
+        "early.csv:3: moment: 2030-02-25T02:29:00+01:00",
+        "early.csv:4: moment: 0001-01-01T00:00:00+14:00",
+        "early.csv:6: moment: 2030-02-25T01:29:59+00:00",
+    ]
+    assert all("2030-02-25T02:30:00+01:00" in line for line in lines)
+
+
+@pytest.mark.parametrize("value", ["nan", "inf", "-1"])
+def test_fares_of_a_table_are_figures(value: str, folder: Path, priced: dict[str, Path], tmp_path: Path) -> None:
+    (tmp_path / "r.csv").write_text(f"request,itinerary,fare_class,fare\n1,NOR-SUD,A,{value}\n")
+    columns = {"request": ["1"], "itinerary": ["NOR-SUD"], "fare_class": ["A"], "fare": [float(value)]}
+    pyarrow.parquet.write_table(pa.table(columns), tmp_path / "r.parquet")
+    for place in ("r.csv:2", "r.parquet:1"):
+        outcome = run("decide", folder, "--prices", priced["none"], "--requests", tmp_path / place.partition(":")[0])
+        assert (outcome.code, outcome.out) == (2, "")
+        assert f"{place}: fare: " in outcome.err
+
+
+def test_options_of_one_request_do_not_stand_beside_a_table(folder: Path, priced: dict[str, Path]) -> None:
+    outcome = run("decide", folder, "--prices", priced["none"], "--requests", "r.csv", "--fare", "5", "--seats", "2")
+    assert outcome.code == 2
+    assert "leave --fare and --seats out" in outcome.err
