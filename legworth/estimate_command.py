@@ -2,11 +2,11 @@
 
 from __future__ import annotations
 
-import math
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import click
+from click.core import ParameterSource
 
 from legworth.option_types import Figure
 from legworth.options import AS_JSON, EXIT_CODES, print_json
@@ -70,8 +70,9 @@ __all__ = ["estimate"]
     type=Figure(0, min_open=True),
     default=365.0,
     show_default=True,
-    help="Age in days at which a departure counts half; inf for no ageing.",
+    help="Age in days at which a departure counts half.",
 )
+@click.option("--no-ageing", is_flag=True, help="Let departures of any age count alike.")
 @click.option("--no-weekday", is_flag=True, help="Fit no effects of the weekday.")
 @click.option("--no-season", is_flag=True, help="Fit no effects of the time of year.")
 @click.option(
@@ -129,11 +130,14 @@ def _options(how: dict[str, Any]) -> EstimateOptions:
 
     if how["no_adjustments"] and how["adjustments"] is not None:
         raise SettingError("--adjustments and --no-adjustments contradict each other; leave one of them out")
+    given = click.get_current_context().get_parameter_source("half_life")
+    if how["no_ageing"] and given is not ParameterSource.DEFAULT:
+        raise SettingError("--half-life and --no-ageing contradict each other; leave one of them out")
     return EstimateOptions(
         demand=DemandOptions(
             closing=how["closing"],
             pickup=how["pickup"],
-            half_life=None if how["half_life"] == math.inf else how["half_life"],
+            half_life=None if how["no_ageing"] else how["half_life"],
             weekday=not how["no_weekday"],
             season=not how["no_season"],
         ),

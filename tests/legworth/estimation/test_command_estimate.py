@@ -243,7 +243,8 @@ def test_faults_of_history_and_adjustments_are_told_together_and_nothing_is_writ
         (["--adjustments", "none.csv"], "there is no such file; name a table of adjustments"),
         (["--adjustments", "none.csv", "--no-adjustments"], "contradict each other"),
         (["--half-life", "0"], "0.0 is not in the range"),
-        (["--half-life", "nan"], "half_life must be above 0 days"),
+        (["--half-life", "inf"], "'inf' is not a finite number"),
+        (["--half-life", "30", "--no-ageing"], "contradict each other"),
         (["--closing", "perhaps"], "'perhaps' is not one of"),
     ],
 )
@@ -388,7 +389,7 @@ def test_methods_have_no_figure_of_a_class_that_was_never_open(folder: Path, tmp
 
 
 def test_without_ageing_all_departures_count_alike(table: Path, folder: Path) -> None:
-    outcome = run("estimate", table, "--network", folder, "--backtest", "0", "--half-life", "inf")
+    outcome = run("estimate", table, "--network", folder, "--backtest", "0", "--no-ageing")
     assert outcome.code == 0, outcome.err
     document = json.loads((folder / "estimate.json").read_text(encoding="utf-8"))
     rows = pd.read_csv(table, parse_dates=["departure"])

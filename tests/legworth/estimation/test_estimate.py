@@ -282,7 +282,7 @@ def test_a_sample_of_a_long_history_says_the_same(monkeypatch: pytest.MonkeyPatc
 
 
 def test_options_and_days_out_of_range_are_refused() -> None:
-    for wrong in ({"closing": "guess"}, {"pickup": "guess"}, {"half_life": 0.0}, {"seed": -1}):
+    for wrong in ({"closing": "guess"}, {"pickup": "guess"}, {"half_life": 0.0}, {"half_life": np.inf}, {"seed": -1}):
         with pytest.raises(SettingError):
             DemandOptions(**wrong)  # type: ignore[arg-type]
     with pytest.raises(SettingError, match="no reading"):
