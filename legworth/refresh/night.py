@@ -126,6 +126,8 @@ def _make(work: Work, folder: Path) -> tuple[Night, Network]:
         work.journal.note(
             "last_night", f"compared with {found.name if found else 'no earlier night'}", last=found and found.name
         )
+    if last is not None:
+        _check_same_network(work.store, last.night.manifest, network)
     with work.phase("cut"):
         parts = cut_parts(network)
     with work.phase("parts"):
@@ -135,6 +137,8 @@ def _make(work: Work, folder: Path) -> tuple[Night, Network]:
     manifest = Manifest(
         night=work.aside.name,
         number=work.aside.number,
+        network=network.name,
+        currency=network.currency,
         as_of=network.as_of,
         before=None if last is None else last.night.name,
         inputs=snapshot.files,
@@ -152,6 +156,15 @@ def _make(work: Work, folder: Path) -> tuple[Night, Network]:
     night = work.aside.publish(manifest.model_copy(update={"seconds": work.seconds}))
     work.journal.note("published", seconds=work.seconds | {"publish": time.perf_counter() - begin})
     return night, network
+
+
+def _check_same_network(store: Store, last: Manifest, network: Network) -> None:
+    """Nights of a store are compared with each other, so they are of one network in one currency."""
+    if (last.network or network.name, last.currency or network.currency) != (network.name, network.currency):
+        raise SettingError(
+            f"{store.path} holds nights of {last.network!r} in {last.currency}, and this folder is {network.name!r} in "
+            f"{network.currency}; name a store of its own for it (--store)"
+        )
 
 
 def _read(work: Work, folder: Path) -> tuple[Snapshot, Network]:

@@ -97,6 +97,8 @@ class Manifest(_Declared):
     layout: Annotated[Literal[1], Field(description="Number of the layout of the store.")] = LAYOUT
     night: Annotated[str, Field(pattern=f"^{NAME.pattern}$", description="Name of the night.")]
     number: Annotated[int, Field(ge=1, description="Its number, which alone orders nights.")]
+    network: Annotated[str | None, Field(description="Name of the network.")] = None
+    currency: Annotated[str | None, Field(description="Currency of all prices.")] = None
     as_of: Annotated[AwareDatetime, Field(description="Instant of the snapshot that was priced.")]
     published: Annotated[
         AwareDatetime | None, Field(description="Instant of publication, by this machine's clock.")
