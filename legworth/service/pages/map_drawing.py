@@ -8,6 +8,7 @@ from math import cos, hypot, isfinite, radians
 
 import numpy as np
 
+from legworth.service.pages.map_labels import NARROW, WIDE, Label, place_labels
 from network.arrays import FloatArray
 
 __all__ = ["Drawing", "Place", "Ribbon", "draw_routes"]
@@ -19,12 +20,10 @@ APART = 7.0
 WIDEST = 0.22
 """Greatest distance of a curve from the straight line, as a share of its length."""
 
-LETTER, TALL = 8.6, 16.0
-
 
 @dataclass(frozen=True)
 class Place:
-    """A station on the plane: its name and label, whether the name is written beside it, and where.
+    """A station on the plane, and where its name is written.
 
     Attributes
     ----------
@@ -32,8 +31,10 @@ class Place:
         Short and long name.
     x, y
         Place.
-    text_x, text_y, anchor
-        Where its short name is written, and which end of it is held; ``anchor`` is empty where there is no room.
+    label, narrow_label
+        Its short name where the plane is wide, and on a phone, where letters take more room on it.
+    legs
+        Legs that begin or end there.
     located
         Whether it has coordinates; the others stand in a row below.
     """
@@ -42,9 +43,9 @@ class Place:
     name: str
     x: float
     y: float
-    text_x: float
-    text_y: float
-    anchor: str
+    label: Label
+    narrow_label: Label
+    legs: int
     located: bool
 
 
@@ -93,13 +94,14 @@ def draw_routes(
         for place, name in enumerate(lost):
             at[name] = [EDGE + (place + 0.5) * (WIDTH - 2 * EDGE) / len(lost), height - EDGE / 2]
     places: dict[str, Place] = {}
-    taken: list[tuple[float, float, float, float]] = [(x - 4, y - 4, x + 4, y + 4) for x, y in at.values()]
-    for name in sorted(used, key=lambda station: (-degree[station], station)):
-        x, y = at[name]
-        text_x, text_y, anchor = _label(name, x, y, height, taken)
-        label = stations.get(name, (name, None, None))[0]
-        places[name] = Place(name, label, round(x, 1), round(y, 1), text_x, text_y, anchor, name not in lost)
-    return Drawing(WIDTH, round(height, 1), places, tuple(_ribbons(at, legs)))
+    height = round(height, 1)
+    order = {name: (at[name][0], at[name][1]) for name in sorted(used, key=lambda name: (-degree[name], name))}
+    labels, narrow = (place_labels(order, WIDTH, height, lettering) for lettering in (WIDE, NARROW))
+    for name, (x, y) in order.items():
+        long = stations.get(name, (name, None, None))[0]
+        written = labels[name], narrow[name]
+        places[name] = Place(name, long, round(x, 1), round(y, 1), *written, degree[name], name not in lost)
+    return Drawing(WIDTH, height, places, tuple(_ribbons(at, legs)))
 
 
 def _project(coordinates: Sequence[tuple[float | None, float | None]]) -> tuple[FloatArray, float]:
@@ -128,30 +130,6 @@ def _uncut(longitude: FloatArray, known: np.ndarray) -> FloatArray:
     gaps = np.diff(np.append(around, around[0] + 360.0))
     start = around[(int(np.argmax(gaps)) + 1) % len(around)]
     return np.asarray(start + (longitude - start) % 360.0, dtype=np.float64)
-
-
-def _label(
-    name: str, x: float, y: float, height: float, taken: list[tuple[float, float, float, float]]
-) -> tuple[float, float, str]:
-    """Find room for a name beside its station; an empty anchor if there is none."""
-    width = LETTER * len(name)
-    for anchor, text_x, text_y in (
-        ("start", x + 8, y + 5),
-        ("end", x - 8, y + 5),
-        ("middle", x, y - 9),
-        ("middle", x, y + 20),
-    ):
-        left = text_x - {"start": 0.0, "middle": width / 2, "end": width}[anchor]
-        box = (left, text_y - TALL + 3, left + width, text_y + 3)
-        inside = box[0] >= 0 and box[2] <= WIDTH and box[1] >= 0 and box[3] <= height
-        if inside and not any(_overlap(box, other) for other in taken):
-            taken.append(box)
-            return round(text_x, 1), round(text_y, 1), anchor
-    return round(x, 1), round(y, 1), ""
-
-
-def _overlap(a: tuple[float, float, float, float], b: tuple[float, float, float, float]) -> bool:
-    return a[0] < b[2] and b[0] < a[2] and a[1] < b[3] and b[1] < a[3]
 
 
 def _ribbons(at: dict[str, list[float]], legs: Sequence[tuple[str, str]]) -> list[Ribbon]:
