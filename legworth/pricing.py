@@ -13,6 +13,7 @@ from typing import Any
 import pandas as pd
 
 from heuristics import LegControl
+from heuristics.arrivals import days_before_departure
 from legworth import __version__
 from legworth.control import ControlComparison, compare_controls
 from legworth.curves import CurveMethod, curves_table, network_curves
@@ -147,6 +148,7 @@ def _summary(
     network: Network, options: PricingOptions, solution: NetworkSolution, controls: ControlComparison
 ) -> dict[str, Any]:
     connections = controls.connections
+    departed = days_before_departure(network) <= 0
     return {
         "network": network.name,
         "currency": network.currency,
@@ -156,8 +158,9 @@ def _summary(
         "bounds": {},
         "certified": all(part.certificate.holds for _, part in solution.parts),
         "sizes": _sizes(network),
-        "legs_with_price": int((solution.bid_price > 0).sum()),
-        "legs_without_seats": int((network.remaining == 0).sum()),
+        "legs_departed": int(departed.sum()),
+        "legs_with_price": int((solution.bid_price[~departed] > 0).sum()),
+        "legs_without_seats": int((network.remaining[~departed] == 0).sum()),
         "legs_where_controls_disagree": int((~controls.agrees).sum()),
         "products_where_controls_disagree": int(connections.disagrees.sum()),
         "at_stake": float(connections.at_stake.sum()),

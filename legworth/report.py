@@ -11,6 +11,7 @@ from rich.console import Console
 from rich.table import Table
 from rich.text import Text
 
+from heuristics.arrivals import days_before_departure
 from legworth.pricing import PricedNetwork
 from network import Fault, Network
 
@@ -90,14 +91,15 @@ def print_prices(priced: PricedNetwork, out: Path, table_format: str) -> None:
     for warning in priced.warnings:
         console.print(str(warning), markup=False, highlight=False, soft_wrap=True)
     _print_heading(console, network, len(summary["components"]))
+    departed = summary["legs_departed"]
     gap = max(abs(part["certificate"]["gap"]) for part in summary["components"])
     facts = Table.grid(padding=(0, 2))
     facts.add_row(f"Optimum of the {summary['method']} program", money(summary["objective"]), f"proved to {gap:.0e}")
     facts.add_row("No control can expect more than", money(summary["bounds"]["revenue"]), "deterministic program")
     facts.add_row(
         "Legs with a price",
-        f"{summary['legs_with_price']:,} of {network.n_legs:,}",
-        f"{summary['legs_without_seats']:,} without seats",
+        f"{summary['legs_with_price']:,} of {network.n_legs - departed:,}",
+        f"{summary['legs_without_seats']:,} without seats" + (f", and {departed:,} departed" if departed else ""),
     )
     facts.add_row(
         "Disagreement with leg-level control",
@@ -105,7 +107,8 @@ def print_prices(priced: PricedNetwork, out: Path, table_format: str) -> None:
         f"{summary['products_where_controls_disagree']:,} products, {summary['legs_where_controls_disagree']:,} legs",
     )
     console.print(facts, highlight=False)
-    console.print(_dearest(priced), highlight=False)
+    if departed < network.n_legs:
+        console.print(_dearest(priced), highlight=False)
     _print_low_prices(console, priced)
     names = ", ".join([*(f"{name}.{table_format}" for name in priced.tables), "summary.json"])
     console.print(f"Written to {out}: {names}", highlight=False, markup=False, soft_wrap=True)
@@ -196,14 +199,16 @@ def route(network: Network, itinerary: int) -> str:
 
 
 def _dearest(priced: PricedNetwork) -> Table:
+    """Legs still to depart, those with the dearest last seats first."""
     network, solution = priced.network, priced.solution
+    to_depart = np.flatnonzero(days_before_departure(network) > 0)
     table = Table(title=f"The dearest last seats ({network.currency})", title_justify="left")
     table.add_column("Leg")
     table.add_column("Route")
     table.add_column("Departs")
     for heading in ("Seats left", "Bid price", "Next seat", "Leg-level value"):
         table.add_column(heading, justify="right")
-    for leg in np.argsort(-solution.bid_price, kind="stable")[:DEAREST]:
+    for leg in to_depart[np.argsort(-solution.bid_price[to_depart], kind="stable")[:DEAREST]]:
         legs = network.legs
         local = legs.departs[leg] + np.timedelta64(int(legs.departs_offset[leg]), "m")
         table.add_row(

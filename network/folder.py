@@ -16,11 +16,21 @@ from network.demand import Demand
 from network.errors import InputError
 from network.faults import Fault, Faults
 from network.model import Legs, Network, Stations
-from network.products import assemble_curves, assemble_products
+from network.oddities import (
+    Place,
+    warn_of_departed_legs,
+    warn_of_legs,
+    warn_of_same_legs,
+    warn_of_stations,
+    warn_of_unsold_itineraries,
+    warn_of_unused_legs,
+)
+from network.products import Products, assemble_curves, assemble_products
 from network.reading import TableData, read_table
 from network.routes import Paths, assemble_legs, assemble_paths, assemble_stations, assemble_through
 from network.schema import input_schemas
-from network.settings import read_settings
+from network.settings import FILE as SETTINGS
+from network.settings import line_of_setting, read_settings
 
 __all__ = ["ReadResult", "read_folder"]
 
@@ -71,26 +81,35 @@ def read_folder(folder: Path | str, *, with_demand: bool = True) -> ReadResult:
         return read_table(folder, input_schemas()[name], faults, known) if wanted else None
 
     # Large tables are read when they are needed and let go once assembled, so that they are not all held at once.
-    stations = assemble_stations(table("stations"), settings)
+    station_table = table("stations")
+    stations = assemble_stations(station_table, settings)
     leg_table = table("legs")
     legs = assemble_legs(leg_table, stations, faults)
     through = assemble_through(leg_table, legs, faults)
-    paths, history_name = _paths_and_history(table("itineraries"), legs, stations, faults, through)
+    itinerary_table = table("itineraries")
+    paths, history_name = _paths_and_history(itinerary_table, legs, stations, faults, through)
+    itinerary_place = Place.of(itinerary_table) if itinerary_table else None
+    del itinerary_table
     curves = assemble_curves(table("booking_curves"), faults)
     known = _distinct(paths.name) if paths else {}
     products = assemble_products(table("fares", known), table("demand", known), paths, curves, settings, faults)
     del known
     pa.default_memory_pool().release_unused()
     faults.raise_errors()
-    if not (settings and stations and leg_table and legs and paths and products) or curves is None:
+    if (
+        not (settings and stations and station_table and leg_table and legs)
+        or not (paths and itinerary_place and products)
+        or curves is None
+    ):
         raise AssertionError("a table is absent although no fault was noted")
+    departed = legs.departs <= _utc(settings.as_of)
     network = Network(
         name=settings.name,
         currency=settings.currency,
         as_of=settings.as_of,
         stations=stations,
         legs=legs,
-        remaining=_remaining(leg_table, legs, settings.as_of, faults),
+        remaining=np.where(departed, 0, np.maximum(legs.capacity - legs.sold, 0)),
         itinerary=paths.name,
         path_start=paths.start,
         path_leg=paths.leg,
@@ -102,7 +121,12 @@ def read_folder(folder: Path | str, *, with_demand: bool = True) -> ReadResult:
         curve=products.curve,
         curves=curves,
     )
-    _warn_unused_legs(leg_table, legs, paths, faults)
+    warn_of_stations(station_table, faults)
+    warn_of_legs(leg_table, legs, faults)
+    warn_of_departed_legs(leg_table, departed, lambda: line_of_setting(folder, "as_of"), faults)
+    warn_of_unused_legs(leg_table, legs, paths, faults)
+    warn_of_unsold_itineraries(itinerary_place, paths.name, products.itinerary, faults)
+    _warn_of_unsold_classes(folder, products, faults)
     return ReadResult(network, tuple(faults.warnings), history_name)
 
 
@@ -113,6 +137,7 @@ def _paths_and_history(
     paths = assemble_paths(table, legs, stations, faults, through)
     if table is None or paths is None:
         return None, np.zeros(0, dtype=object)
+    warn_of_same_legs(table, faults)
     given = table.frame["history_name"]
     if given.isna().all():
         return paths, paths.name
@@ -138,28 +163,20 @@ def _unopened(folder: Path) -> str:
     return ""
 
 
-def _remaining(table: TableData, legs: Legs, as_of: datetime, faults: Faults) -> IntArray:
-    """Seats still for sale: none where a leg is sold out or has departed by the snapshot."""
-    instant = np.datetime64(as_of.replace(tzinfo=None), "s") - np.timedelta64(as_of.utcoffset() or timedelta(), "s")
-    departed = legs.departs <= instant
-    faults.add_rows(
-        table.file,
-        np.flatnonzero(departed),
-        table.line_of,
-        "departs",
-        lambda row: f"{legs.name[row]} has departed by the snapshot (as_of); none of its seats is for sale",
-        warning=True,
-    )
-    return np.where(departed, 0, np.maximum(legs.capacity - legs.sold, 0))
+def _utc(instant: datetime) -> np.datetime64:
+    offset = instant.utcoffset() or timedelta()
+    return np.datetime64(instant.replace(tzinfo=None), "s") - np.timedelta64(offset, "s")
 
 
-def _warn_unused_legs(table: TableData, legs: Legs, paths: Paths, faults: Faults) -> None:
-    unused = np.flatnonzero(np.bincount(paths.leg, minlength=len(legs)) == 0)
+def _warn_of_unsold_classes(folder: Path, products: Products, faults: Faults) -> None:
+    """Warn of fare classes that network.toml names and no fare is in."""
+    count = np.bincount(products.fare_class, minlength=len(products.fare_classes))
+    unsold = [name for name, fares in zip(products.fare_classes, count.tolist(), strict=True) if not fares]
     faults.add_rows(
-        table.file,
-        unused,
-        table.line_of,
-        "leg",
-        lambda row: f"{legs.name[row]} belongs to no itinerary; nothing is sold on it and its bid price is 0",
+        SETTINGS,
+        range(len(unsold)),
+        lambda _: line_of_setting(folder, "fare_classes"),
+        "fare_classes",
+        lambda at: f"no fare is in class {unsold[at]!r}; correct its name, add its fares, or take it out of the list",
         warning=True,
     )

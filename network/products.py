@@ -11,6 +11,7 @@ import numpy.typing as npt
 from network.arrays import FloatArray, IntArray, NameArray
 from network.faults import Faults
 from network.model import BookingCurves
+from network.oddities import unlike_spellings, warn_of_demand
 from network.reading import TableData
 from network.routes import Paths, positions
 from network.settings import NetworkSettings
@@ -103,6 +104,7 @@ def assemble_products(
     means, deviations = np.zeros(0), np.zeros(0)
     if demand is not None:
         means, deviations = demand.frame["mean"].to_numpy(), demand.frame["deviation"].to_numpy()
+        warn_of_demand(demand, faults)
         row = _match_demand(fares, demand, itineraries, classes, key, order, faults)
     return Products(
         classes,
@@ -159,6 +161,18 @@ def _itineraries(paths: Paths | None, fares: TableData | None, demand: TableData
 def _fare_classes(fares: TableData, settings: NetworkSettings | None, faults: Faults) -> tuple[str, ...]:
     classes = fares.frame["fare_class"]
     named = tuple(str(name) for name in classes.dropna().unique())
+    twins = unlike_spellings(list(named))
+    faults.add_rows(
+        fares.file,
+        [int(np.argmax(classes == name)) for name in twins],
+        fares.line_of,
+        "fare_class",
+        lambda row: (
+            f"class {classes.iloc[row]!r} differs from {twins[classes.iloc[row]]!r} in capitals or blanks alone; write "
+            "one name if they are one class"
+        ),
+        warning=True,
+    )
     if settings is None or not settings.fare_classes:
         return named
     lacking = [name for name in named if name not in settings.fare_classes]

@@ -15,7 +15,7 @@ from network.faults import Faults
 from network.refresh_settings import RefreshSettings
 from network.store_settings import StoreSettings
 
-__all__ = ["Defaults", "NetworkSettings", "read_settings"]
+__all__ = ["FILE", "Defaults", "NetworkSettings", "line_of_setting", "read_settings"]
 
 FILE = "network.toml"
 INSTANT = re.compile(r"[0-9]{4}-[0-9]{2}-[0-9]{2}[T ][0-9]{2}:[0-9]{2}.*")
@@ -109,6 +109,11 @@ def read_settings(folder: Path, faults: Faults) -> NetworkSettings | None:
             keys = [part for part in problem["loc"] if isinstance(part, str)]
             faults.add(FILE, _line_of(text, keys), name, _problem(problem))
         return None
+
+
+def line_of_setting(folder: Path, name: str) -> int:
+    """Line of ``network.toml`` that sets a setting; 0 if none does."""
+    return _line_of((folder / FILE).read_text(encoding="utf-8-sig"), [name])
 
 
 def _line_of(text: str, keys: list[str]) -> int:

@@ -8,9 +8,9 @@ import numpy as np
 import pandas as pd
 
 from legworth.schedules.gtfs_tables import GtfsTable, GtfsTables
-from legworth.schedules.local_time import zone_named
 from legworth.schedules.places import Places
 from network.arrays import IntArray, NameArray
+from network.time_zones import zone_named
 
 __all__ = ["FeedStations", "feed_stations"]
 

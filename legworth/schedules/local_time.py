@@ -9,13 +9,13 @@ from __future__ import annotations
 from dataclasses import dataclass
 from datetime import UTC, datetime, timedelta
 from functools import lru_cache
-from zoneinfo import ZoneInfo, ZoneInfoNotFoundError
+from zoneinfo import ZoneInfo
 
 import numpy as np
 
 from network.arrays import BoolArray, IntArray, NameArray
 
-__all__ = ["Clock", "Instants", "clock_of", "instants_of", "offsets_at", "zone_named"]
+__all__ = ["Clock", "Instants", "clock_of", "instants_of", "offsets_at"]
 
 EPOCH = datetime(1970, 1, 1, tzinfo=UTC)
 STEP = 12 * 3600
@@ -61,14 +61,6 @@ class Clock:
         piece = np.where(fold, piece - 1, piece)
         offset = self.offset[piece]
         return Instants(local - offset, offset, local >= ends[piece], fold)
-
-
-def zone_named(name: str) -> ZoneInfo | None:
-    """Return the zone of an IANA name, or None if there is none."""
-    try:
-        return ZoneInfo(name)
-    except (ZoneInfoNotFoundError, ValueError, OSError):
-        return None
 
 
 @lru_cache(maxsize=2048)

@@ -8,11 +8,11 @@ from pathlib import Path
 import numpy as np
 import pandas as pd
 
-from legworth.schedules.local_time import zone_named
 from network import Fault, InputError, table_schema
 from network.arrays import BoolArray, FloatArray, IntArray, NameArray
 from network.faults import Faults
 from network.reading import read_file
+from network.time_zones import zone_named
 
 __all__ = ["Places", "read_places"]
 

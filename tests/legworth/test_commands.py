@@ -232,3 +232,24 @@ def test_names_are_printed_as_they_are_written(folder: Path, tmp_path: Path) -> 
     assert (outcome.code, outcome.err) == (0, "")
     assert name in outcome.out
     assert "[L5]:cat:" in outcome.out
+
+
+def test_departed_legs_are_counted_apart_and_not_among_the_dearest(folder: Path, tmp_path: Path) -> None:
+    """They have no seats for sale, so no last seat either."""
+    Folder().replace("network.toml", "2030-02-25T02:30", "2030-03-02T02:30").write(folder)
+    outcome = run("price", folder, "--out", tmp_path / "out")
+    summary = json.loads((tmp_path / "out" / "summary.json").read_text(encoding="utf-8"))
+    assert (summary["legs_departed"], summary["legs_with_price"], summary["legs_without_seats"]) == (3, 2, 0)
+    assert "2 of 2" in outcome.out
+    assert "0 without seats, and 3 departed" in outcome.out
+    rows = outcome.out.partition("The dearest last seats")[2]
+    assert [leg for leg in ("L1", "L2", "L3", "L4", "L5") if f" {leg} " in rows] == ["L4", "L5"]
+
+
+def test_a_folder_of_departed_legs_alone_is_warned_of(folder: Path, tmp_path: Path) -> None:
+    Folder().replace("network.toml", "2030-02-25T02:30", "2030-03-05T02:30").write(folder)
+    outcome = run("price", folder, "--out", tmp_path / "out")
+    assert outcome.code == 0
+    assert outcome.out.startswith("network.toml:3: as_of: warning: every leg of legs.csv (5) has departed")
+    assert "0 of 0" in outcome.out
+    assert "dearest" not in outcome.out

@@ -10,7 +10,8 @@ import pytest
 from hypothesis import example, given, settings
 from hypothesis import strategies as st
 
-from legworth.schedules.local_time import clock_of, instants_of, offsets_at, zone_named
+from legworth.schedules.local_time import clock_of, instants_of, offsets_at
+from network.time_zones import zone_named
 
 ZONES = (
     "Europe/Berlin",
