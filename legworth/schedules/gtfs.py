@@ -16,7 +16,7 @@ from legworth.schedules.gtfs_calendar import service_begins, service_days
 from legworth.schedules.gtfs_calls import TripLegs, trip_legs
 from legworth.schedules.gtfs_runs import Runs, runs_of
 from legworth.schedules.gtfs_stations import feed_stations
-from legworth.schedules.gtfs_tables import GtfsTables, read_tables
+from legworth.schedules.gtfs_tables import GtfsTable, GtfsTables, read_tables
 from legworth.schedules.gtfs_through import through_legs
 from legworth.schedules.local_time import offsets_at
 from legworth.schedules.operating_days import Window
@@ -124,6 +124,7 @@ def read_gtfs(
     tables = read_tables(path, faults)
     if tables is None:
         return None
+    _warn_of_agencies(tables["agency"], tables["routes"])
     stations = feed_stations(tables)
     trips, routes = tables["trips"], tables["routes"]
     route = trips.find("route_id", routes, "route_id")
@@ -143,6 +144,22 @@ def read_gtfs(
         return None
     timetable = _timetable(tables, known, stations.zone, legs, runs, capacity, kinds, window, left_out)
     return None if faults.errors else timetable
+
+
+def _warn_of_agencies(agency: GtfsTable, routes: GtfsTable) -> None:
+    """Warn of routes of carriers that agency.txt does not have; no time or seat depends on it."""
+    at, names = routes.codes("agency_id")
+    known = set(agency.texts("agency_id").tolist())
+    unknown = np.array([*(name not in known for name in names), False])
+    routes.note(
+        np.flatnonzero(unknown[at]),
+        "agency_id",
+        lambda row: (
+            f"{names[at[row]]!r} is not an agency_id of agency.txt; correct the name or add the agency. The route is "
+            "read all the same"
+        ),
+        warning=True,
+    )
 
 
 def _timetable(

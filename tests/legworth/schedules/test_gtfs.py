@@ -155,6 +155,20 @@ def test_calls_at_the_same_minute_are_set_a_second_apart(tmp_path: Path) -> None
     assert (timetable.through >= 0).sum() == 4
 
 
+def test_a_route_of_a_carrier_that_the_feed_does_not_have_is_warned_of(tmp_path: Path) -> None:
+    """routes.agency_id is a foreign key of agency.agency_id (GTFS Schedule Reference, routes.txt; from memory)."""
+    day = Window(date(2027, 3, 30), date(2027, 3, 30))
+    sound_rows = rows_of(sound(as_folder(FEED, tmp_path / "sound"), day))
+    timetable, faults = read(as_folder(replaced("routes", "F1,SK,", "F1,SX,"), tmp_path / "odd"), day)
+    assert timetable is not None
+    assert rows_of(timetable) == sound_rows
+    found = [(fault.file, fault.line, fault.column) for fault in faults.warnings if fault.file == "routes.txt"]
+    assert found == [("routes.txt", 3, "agency_id")]
+    blank, faults = read(as_folder(replaced("routes", "F1,SK,", "F1,,"), tmp_path / "blank"), day)
+    assert blank is not None
+    assert not [fault for fault in faults.warnings if fault.file == "routes.txt"]
+
+
 FAULTS = {
     "no agency": (feed(agency=None), "agency.txt", 0, ""),
     "no stop times": (feed(stop_times=None), "stop_times.txt", 0, ""),
