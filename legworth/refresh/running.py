@@ -151,7 +151,8 @@ def _settled(
                 raise error
             yield flight.part, future.result() if error is None else error
         for future, flight in list(flights.items()):
-            if flight.overdue(seconds, workers.waiting(future)):
+            # Ending one takes time, in which another may have come in.
+            if not future.done() and flight.overdue(seconds, workers.waiting(future)):
                 del flights[future]
                 workers.end(future)
                 yield flight.part, _Overdue(f"took more than {seconds:g} s")

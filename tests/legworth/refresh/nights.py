@@ -150,6 +150,21 @@ class Hangs:
 
 
 @dataclass(frozen=True)
+class HangsInSolver:
+    """Waits on a part, with one of the solvers, for a program that never ends, as a solver may; notes its number."""
+
+    part: str
+    solver: str
+    note: Path
+
+    def __call__(self, part: PartInput) -> PartOutput:
+        if part.name == self.part and part.lp.solver.name == self.solver:
+            with subprocess.Popen(["sleep", "3600"]) as hanging:
+                self.note.write_text(str(hanging.pid))
+        return run_part(part)
+
+
+@dataclass(frozen=True)
 class Fails:
     """Finds no optimum for a part, with one of the solvers or with any."""
 
@@ -177,13 +192,13 @@ class Spoils:
 
 @dataclass(frozen=True)
 class Slow:
-    """Takes a while for every part and leaves a mark as it begins."""
+    """Takes a while for every part and leaves a mark as it begins, with the number of whoever started its process."""
 
     seconds: float
     marks: Path
 
     def __call__(self, part: PartInput) -> PartOutput:
-        (self.marks / f"{part.name}-{os.getpid()}").touch()
+        (self.marks / f"{part.name}-{os.getppid()}").touch()
         time.sleep(self.seconds)
         return run_part(part)
 

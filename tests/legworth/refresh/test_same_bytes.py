@@ -2,27 +2,25 @@
 
 from __future__ import annotations
 
+import os
 import shutil
 import signal
-import subprocess
 import sys
 import threading
 import time
-from collections.abc import Iterator
-from contextlib import ExitStack, contextmanager
 from dataclasses import replace
 from pathlib import Path
 
 import pytest
 
-from legworth.refresh import PartInput, RefreshOptions, cut_parts, refresh, run_part
+from legworth.refresh import RefreshOptions, refresh
 from legworth.refresh.cluster import Cluster
 from legworth.refresh.processes import Processes
 from legworth.refresh.running import Workers
 from legworth.store import Night
-from network import SettingError, read_folder
+from network import SettingError
 from tests.folders import Folder
-from tests.legworth.refresh.nights import PRICING, Hangs, Slow, contents, in_force, make
+from tests.legworth.refresh.nights import PRICING, Slow, contents, in_force, make
 
 ROOT = Path(__file__).parents[3]
 DEMO = ROOT / "demo_network"
@@ -69,64 +67,27 @@ def test_any_number_of_processes_gives_the_same_bytes(
     assert contents(made_by(Processes(count), nights, tmp_path / "store")) == contents(nights[2])
 
 
-@contextmanager
-def cluster(where: Path, workers: int, nanny: bool = False) -> Iterator[tuple[str, list[subprocess.Popen[bytes]]]]:
-    """A scheduler and workers of one thread each, on loopback."""
-    file = where / "scheduler.json"
-    plain = {"cwd": ROOT, "stdout": subprocess.DEVNULL, "stderr": subprocess.DEVNULL}
-    quiet = ["--no-dashboard", "--scheduler-file", str(file)]
-    command = [sys.executable, "-m", "distributed.cli.dask_scheduler", "--host", "127.0.0.1", "--port", "0", *quiet]
-    worker = [sys.executable, "-m", "distributed.cli.dask_worker", "--host", "127.0.0.1", "--nthreads", "1", *quiet]
-    local = ["--local-directory", str(where), "--nanny" if nanny else "--no-nanny"]
-    local += ["--preload", "legworth.refresh.tasks"]
-    with ExitStack() as stack:
-        started: list[subprocess.Popen[bytes]] = []
-        for arguments in [command] + [[*worker, *local]] * workers:
-            started.append(stack.enter_context(subprocess.Popen(arguments, **plain)))  # type: ignore[call-overload]
-            stack.callback(started[-1].terminate)
-        for _ in range(600):
-            if file.exists() and file.stat().st_size:
-                break
-            time.sleep(0.05)
-        yield str(file), started[1:]
-
-
-def test_a_cluster_that_loses_a_worker_gives_the_same_bytes(nights: tuple[Path, Path, Night], tmp_path: Path) -> None:
+def test_a_cluster_that_loses_a_worker_gives_the_same_bytes(
+    nights: tuple[Path, Path, Night], two_workers: str, tmp_path: Path
+) -> None:
     marks = tmp_path / "marks"
     marks.mkdir()
-    with cluster(tmp_path, 2) as (file, workers):
-        killed = threading.Event()
+    client = Cluster(two_workers)
+    client._client.wait_for_workers(2, timeout=60)
+    first = next(iter(client._client.run(os.getpid).values()))
+    killed = threading.Event()
 
-        def kill() -> None:
-            """Kill the first worker while it works on its second part."""
-            first = str(workers[0].pid)
-            while sum(mark.name.endswith(f"-{first}") for mark in marks.iterdir()) < 2:
-                time.sleep(0.01)
-            workers[0].send_signal(signal.SIGKILL)
-            killed.set()
+    def kill() -> None:
+        """Kill the first worker while it works on its second part."""
+        while sum(mark.name.endswith(f"-{first}") for mark in marks.iterdir()) < 2:
+            time.sleep(0.01)
+        os.kill(first, signal.SIGKILL)
+        killed.set()
 
-        killer = threading.Thread(target=kill, daemon=True)
-        killer.start()
-        client = Cluster(file)
-        client._client.wait_for_workers(2, timeout=30)
-        found = made_by(client, nights, tmp_path / "store", Slow(0.2, marks))
-        assert killed.is_set()
-        assert workers[0].wait(10) == -signal.SIGKILL
+    threading.Thread(target=kill, daemon=True).start()
+    found = made_by(client, nights, tmp_path / "store", Slow(0.2, marks))
+    assert killed.is_set()
     assert contents(found) == contents(nights[2])
-
-
-def test_a_part_that_hangs_on_a_cluster_is_ended_and_its_worker_works_on(tmp_path: Path) -> None:
-    network = read_folder(Folder().write(tmp_path / "folder")).network
-    first, *_, last = (PartInput(part.name, part.network_of(network), 1, PRICING) for part in cut_parts(network))
-    with cluster(tmp_path, 1, nanny=True) as (file, _):
-        client = Cluster(file)
-        hanging = client.submit(Hangs(first.name), first)
-        while client.waiting(hanging):
-            time.sleep(0.1)
-        client.end(hanging)
-        output = client.submit(run_part, last).result(timeout=120)
-        client.close()
-    assert output.written == run_part(last).written
 
 
 def test_a_scheduler_that_does_not_answer_is_told_in_one_line(tmp_path: Path) -> None:
