@@ -121,7 +121,8 @@ def _products(changes: Changes) -> Line:
     return Line(
         "Products",
         f"{closed.products:,} closed ({closed.passengers:,.0f} passengers expected, {money(closed.fares)} {currency} "
-        f"of fares) and {opened.products:,} opened ({opened.passengers:,.0f}, {money(opened.fares)}). {stake}{moved}.",
+        f"of fares) and {opened.products:,} opened ({opened.passengers:,.0f} passengers, {money(opened.fares)} "
+        f"{currency}). {stake}{moved}.",
     )
 
 

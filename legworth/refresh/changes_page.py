@@ -76,7 +76,8 @@ def _how_told(changes: Changes) -> str:
     count = {how: sum(move.cause.how is how for move in moves) for how in How}
     parts = [f"{count[How.PART]:,} by solving the part again"]
     parts += [f"{count[How.LEG]:,} to first order on the leg alone"] * (count[How.LEG] > 0)
-    text = f"Causes were found for the largest moves only: {' and '.join(parts)}."
+    which = "the largest moves only" if total > len(moves) else "every move"
+    text = f"Causes were looked for behind {which}: {' and '.join(parts)}."
     if count[How.NOT]:
         text += f" For {count_of(count[How.NOT], 'move')} listed they could not be told apart."
     if total > len(moves):

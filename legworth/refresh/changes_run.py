@@ -44,7 +44,7 @@ class RunHealth:
     slowest
         Parts that took longest.
     rows
-        Rows by table; empty before the night is published.
+        Rows by table.
     legs, itineraries, products
         Sizes.
     """

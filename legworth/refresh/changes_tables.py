@@ -70,7 +70,7 @@ def move_table(moves: Sequence[PriceMove], currency: str) -> PageTable:
         Head(f"by seats, {currency}"),
         Head(f"by demand, {currency}"),
         Head(f"by fares, {currency}"),
-        Head(f"by the rest of the network, {currency}"),
+        Head(f"by the rest, {currency}"),
         Head("Causes found by", word=True),
     )
     rows = []

@@ -67,6 +67,7 @@ def report_changes(work: Work, manifest: Manifest, last: Night | None) -> None:
             seconds=min(EXPLAINED_SECONDS, work.settings.refresh.part_seconds),
             scratch=work.aside.folder.parent.resolve(),  # the next night clears it, if this one is killed
         )
+        manifest = manifest.model_copy(update={"rows": work.aside.rows()})
         changes = find_changes(work.aside, last, manifest, ChangesOptions(explain=explain))
         document = json.dumps(changes.as_dict(), indent=1, ensure_ascii=False, allow_nan=False, default=str)
         page = changes_page(changes)

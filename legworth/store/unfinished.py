@@ -115,6 +115,10 @@ class UnfinishedNight:
         """Put one table together from all parts or some, with a column ``part``, as `Night.table` does."""
         return read_parts(self.folder, name, columns, sound_parts(self.parts(), parts, self.name))
 
+    def rows(self) -> dict[str, int]:
+        """Rows by table, over the parts written so far."""
+        return table_notes(self.folder, self.parts()).rows
+
     def stop(self, document: Mapping[str, Any]) -> Path:
         """Write down why this night is not published: ``stopped/NAME.json``, synced.
 

@@ -137,6 +137,7 @@ def test_five_lines_come_first_those_that_need_a_person_before_the_others(mixed:
     assert "mara" in lines[0].text
     assert "a fair <b>begins</b>" in lines[0].text
     assert "1 departure is missing before time, with 20 seats sold: far2" in lines[1].text
+    assert any("1 opened (6 passengers, 491 EUR). 345 EUR at stake" in line.text for line in lines)
     assert any("13 seats sold since last night raised the price by" in line.text for line in lines)
 
 
@@ -151,11 +152,13 @@ def test_the_first_night_has_a_page_too(tmp_path: Path) -> None:
 
 def test_what_is_not_explained_is_said(mixed: Changes) -> None:
     assert mixed.prices is not None
+    assert "Causes were looked for behind every move: " in changes_page(mixed)
     moves = list(mixed.prices.moves)
     moves[0] = replace(moves[0], cause=Cause(moves[0].leg, How.NOT, why_not="its part cannot be read again"))
     page = changes_page(replace(mixed, prices=replace(mixed.prices, moves=tuple(moves), rose=900)))
     assert "could not be told apart" in page
     assert "were not looked into" in page
+    assert "behind the largest moves only: " in page
 
 
 def test_causes_in_plain_sentences() -> None:

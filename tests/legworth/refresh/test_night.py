@@ -75,6 +75,10 @@ def test_the_first_night_is_in_force_and_says_everything_about_itself(folder: Pa
     assert manifest.seconds.keys() >= {"read", "parts", "checks", "changes"}
     assert found.table("bid_prices")["leg"].to_pylist() == network.legs.name.tolist()
     assert {path.name for path in found.folder.iterdir()} >= {"changes.json", "changes.html", "manifest.json"}
+    told = json.loads((found.folder / "changes.json").read_bytes())["run"]["rows"]
+    assert told == manifest.rows
+    assert told["bid_prices"] == network.n_legs
+    assert "Rows by table" in (found.folder / "changes.html").read_text()
     assert [e["event"] for e in events(store, found.name)] == [
         *("begun", "read", "last_night", "part", "part", "part", "checks", "published"),
     ]
