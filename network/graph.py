@@ -12,7 +12,7 @@ from scipy.sparse.csgraph import connected_components
 from network.arrays import IntArray
 from network.model import Network
 
-__all__ = ["Component", "components", "route_graph"]
+__all__ = ["Component", "component_of_leg", "components", "route_graph"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -80,6 +80,24 @@ def components(network: Network) -> list[Component]:
     """
     if network.n_legs == 0:
         return []
+    count, of_leg = component_of_leg(network)
+    if count == 1:
+        sizes = network.n_legs, network.n_itineraries, network.n_products
+        return [Component(network, *(np.arange(size) for size in sizes))]
+    of_itinerary = of_leg[network.path_leg[network.path_start[:-1]]]
+    of_product = of_itinerary[network.product_itinerary]
+    legs, itineraries, products = (_grouped(of, count) for of in (of_leg, of_itinerary, of_product))
+    return [Component(network, legs[c], itineraries[c], products[c]) for c in range(count)]
+
+
+def component_of_leg(network: Network) -> tuple[int, IntArray]:
+    """Number the components in the order of their first legs.
+
+    Returns
+    -------
+    int, (L,) array
+        How many there are, and the component of every leg.
+    """
     within = np.ones(len(network.path_leg), dtype=bool)
     within[network.path_start[1:] - 1] = False
     joint = np.flatnonzero(within)
@@ -89,14 +107,7 @@ def components(network: Network) -> list[Component]:
     _, first = np.unique(label, return_index=True)
     rank = np.empty(count, dtype=np.int64)
     rank[np.argsort(first)] = np.arange(count)
-    of_leg = rank[label]
-    if count == 1:
-        sizes = network.n_legs, network.n_itineraries, network.n_products
-        return [Component(network, *(np.arange(size) for size in sizes))]
-    of_itinerary = of_leg[network.path_leg[network.path_start[:-1]]]
-    of_product = of_itinerary[network.product_itinerary]
-    legs, itineraries, products = (_grouped(of, count) for of in (of_leg, of_itinerary, of_product))
-    return [Component(network, legs[c], itineraries[c], products[c]) for c in range(count)]
+    return int(count), rank[label]
 
 
 def _grouped(label: IntArray, count: int) -> list[IntArray]:

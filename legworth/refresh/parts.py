@@ -10,10 +10,10 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from scipy.sparse.csgraph import connected_components
 
 from network import Network
 from network.arrays import IntArray, TimeArray
+from network.graph import component_of_leg
 
 __all__ = ["BUNDLE_MOST", "LARGE", "Part", "cut_parts"]
 
@@ -68,8 +68,7 @@ def cut_parts(network: Network, large: int = LARGE, bundle_most: int = BUNDLE_MO
     """
     if network.n_legs == 0:
         return []
-    tied = network.incidence @ network.incidence.T
-    count, of_leg = connected_components(tied, directed=False)
+    count, of_leg = component_of_leg(network)
     of_itinerary = of_leg[network.path_leg[network.path_start[:-1]]]
     products = np.bincount(of_itinerary, weights=np.diff(network.product_start), minlength=count).astype(np.int64)
     first = _first_legs(network, of_leg, count)
