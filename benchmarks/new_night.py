@@ -105,12 +105,13 @@ def wait_for(log: Path, event: str, count: int) -> None:
 
 @dataclass(frozen=True)
 class Watched:
-    """Answers of one service, and when it took nights over and had their pages ready."""
+    """Answers of one service, when it took nights over and had their pages ready, and its most memory, MiB."""
 
     answers: np.ndarray
     taken: list[float]
     ready: list[float]
     page: list[float]
+    peak: float
 
     def within(self, spans: list[tuple[float, float]]) -> np.ndarray:
         """Seconds of the answers that came within some spans."""
@@ -143,9 +144,11 @@ def watch(
                 time.sleep(span)
             questions.until.touch()
             answers = running.result()
+            status = Path(f"/proc/{service.pid}/status").read_text(encoding="utf-8")
+            peak = int(status.split("VmHWM:")[1].split()[0]) / 1024
     finally:
         service.stop()
-    return Watched(answers, events(log, TAKEN)[1:], events(log, READY)[1:], pages)
+    return Watched(answers, events(log, TAKEN)[1:], events(log, READY)[1:], pages, peak)
 
 
 def rows(made: Watched, bare: Watched, span: float) -> Iterator[str]:
@@ -164,6 +167,7 @@ def rows(made: Watched, bare: Watched, span: float) -> Iterator[str]:
         yield f"| {name} | {len(taken):,} | {p50:.1f} | {p99:.1f} | {taken.max() * 1e3:.0f} |"
     yield f"\nLists ready after {', '.join(f'{each:.1f}' for each in seconds)} s; "
     yield f"start page meanwhile in {', '.join(f'{1e3 * each:.0f}' for each in made.page)} ms"
+    yield f"Most memory of the service: {made.peak:,.0f} MiB, {bare.peak:,.0f} MiB without lists"
 
 
 @click.command()
