@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import Any, TypeVar
 
 from fastapi import Request
@@ -10,8 +11,9 @@ from pydantic.json_schema import models_json_schema
 from starlette.exceptions import HTTPException
 
 from legworth.service.errors import MalformedError
+from legworth.service.wording import fault_words, names_at
 
-__all__ = ["body_schemas", "described_body", "read_body"]
+__all__ = ["FAULTS_TOLD", "body_schemas", "described_body", "fault_line", "lines_told", "read_body"]
 
 JSON = "application/json"
 REFERENCE = "#/components/schemas/{model}"
@@ -38,21 +40,32 @@ async def read_body(request: Request, model: type[M]) -> M:
     try:
         return model.model_validate_json(body)
     except ValidationError as error:
-        raise MalformedError(faults_of(error)) from None
+        raise MalformedError(faults_of(error, model)) from None
 
 
-def faults_of(error: ValidationError) -> list[str]:
-    """One line a fault, the first ones if there are many."""
-    found = error.errors(include_url=False, include_context=False, include_input=False)
-    lines = [fault_line(("body", *each["loc"]), each["msg"]) for each in found[:FAULTS_TOLD]]
-    more = len(found) - len(lines)
-    return [*lines, f"and {more:,} more"] if more else lines
+def faults_of(error: ValidationError, model: type[BaseModel]) -> list[str]:
+    """One line a fault of a message, the first ones if there are many."""
+    reported = error.errors(include_url=False, include_input=False)
+    # A list whose entries are all wrong is reported as too short besides.
+    wrong = {each["loc"][:end] for each in reported for end in range(1, len(each["loc"]))}
+    found = [each for each in reported if each["type"] != "too_short" or each["loc"] not in wrong]
+    lines = [
+        fault_line(("body", *each["loc"]), fault_words(each, names_at(model, each["loc"])))
+        for each in found[:FAULTS_TOLD]
+    ]
+    return lines_told(lines, len(found))
+
+
+def lines_told(lines: Sequence[str], count: int) -> list[str]:
+    """The lines of the first faults, and how many more there are."""
+    told = list(lines[:FAULTS_TOLD])
+    return [*told, f"and {count - len(told):,} more"] if count > len(told) else told
 
 
 def fault_line(place: tuple[Any, ...], what: str) -> str:
     """One fault in a line; names that cannot be written as UTF-8 are shown with question marks."""
     where = ".".join(str(part)[:100] for part in place)
-    return f"{where}: {what[:1].lower()}{what[1:]}".encode(errors="replace").decode()
+    return f"{where}: {what}".encode(errors="replace").decode()
 
 
 def described_body(model: type[BaseModel]) -> dict[str, Any]:

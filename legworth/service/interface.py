@@ -11,6 +11,7 @@ from starlette.responses import Response
 from legworth.service.asking import ask, at_any_price, find
 from legworth.service.asking_many import answer_many
 from legworth.service.bodies import described_body, read_body
+from legworth.service.counted_legs import CountedLegs
 from legworth.service.errors import ForbiddenError, MalformedError, RefusedError, UnknownError
 from legworth.service.looking import health_of, itinerary_view, leg_view, night_view
 from legworth.service.messages import (
@@ -33,6 +34,7 @@ from legworth.service.orders import Cancellation, Overwriting, Sale, SeatCount
 from legworth.service.problems import described_problems
 from legworth.service.served_part import Question, ServedPart
 from legworth.service.state import ServiceState
+from legworth.service.wording import KEY
 from network.errors import LegworthError
 
 __all__ = ["BODIES", "OPEN", "Permit", "interface", "permit", "state_of"]
@@ -43,7 +45,6 @@ BEARER = "bearer"
 OPEN: dict[str, Any] = {"security": [{}, {BEARER: []}]}
 CLOSED: dict[str, Any] = {"security": [{BEARER: []}]}
 
-KEY = r"^[\x21-\x7e]+$"
 Key = Annotated[
     str,
     Header(
@@ -221,8 +222,13 @@ async def overwrite(request: Request, who: Annotated[str, counts], state: State)
     """Overwrite counts by those of the carrier's own inventory; every leg that moves gets an audit row."""
     asked = await read_body(request, Snapshot)
     taken = tuple(SeatCount(count.leg, count.capacity, count.sold) for count in asked.counts)
+    found = CountedLegs.of(taken, state.night() if asked.known_legs_only else state.served)
+    if asked.known_legs_only and found.unknown:
+        raise MalformedError(found.faults())
     moved = await state.overwrite(Overwriting(taken, who, asked.why))
-    return Counted(moved=len(moved))
+    state.latest_counts = found
+    request.app.state.metrics.note_counts(found)
+    return found.answer(len(moved))
 
 
 look: dict[str, Any] = {"tags": ["look"], "dependencies": [asks], "openapi_extra": OPEN}

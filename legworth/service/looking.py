@@ -10,7 +10,7 @@ import numpy as np
 from heuristics.arrivals import DAY
 from legworth.service.messages import Health, ItineraryView, LegView, NightView, ProductView
 from legworth.service.served_part import Question, ServedPart
-from legworth.service.state import TROUBLES, ServiceState
+from legworth.service.state import STORE, TROUBLES, ServiceState
 from legworth.store import Night
 
 __all__ = ["health_of", "itinerary_view", "leg_view", "local_instant", "night_view"]
@@ -95,7 +95,7 @@ def health_of(state: ServiceState) -> Health:
     as_of = None if served is None else served.night.manifest.as_of
     status: Any = "ok"
     if as_of is None:
-        status = "no night"
+        status = "no sound night" if STORE in state.troubles else "no night"
     elif state.troubles:
         status = "in trouble"
     elif state.now() - as_of.timestamp() > OLD:
@@ -104,7 +104,9 @@ def health_of(state: ServiceState) -> Health:
         status=status,
         night=None if served is None else served.name,
         as_of=as_of,
-        legs=len(state.seats.counts),
+        legs=0 if served is None else len(served.legs),
+        ledger_legs=len(state.seats.counts),
+        latest_counts=None if state.latest_counts is None else state.latest_counts.summary(),
         waiting=state.writer.waiting,
-        troubles=[TROUBLES[what] for what in TROUBLES if what in state.troubles],
+        troubles=[state.trouble(what) for what in TROUBLES if what in state.troubles],
     )

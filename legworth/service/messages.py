@@ -7,7 +7,10 @@ from typing import Annotated, Any, Literal, Self
 
 from pydantic import BaseModel, ConfigDict, Field, model_validator
 
+from legworth.service.wording import NAME, TEXT
+
 __all__ = [
+    "NAMED",
     "Answer",
     "Answers",
     "Ask",
@@ -16,6 +19,7 @@ __all__ = [
     "Counted",
     "Health",
     "ItineraryView",
+    "LatestCounts",
     "LegCount",
     "LegView",
     "NightView",
@@ -25,11 +29,15 @@ __all__ = [
     "Snapshot",
 ]
 
-Name = Annotated[str, Field(min_length=1, max_length=200, pattern=r"^[^\s\x00-\x1f\x7f]+$")]
+Name = Annotated[str, Field(min_length=1, max_length=200, pattern=NAME)]
 ClassName = Annotated[str, Field(min_length=1, max_length=200)]
-Words = Annotated[str, Field(min_length=1, max_length=1_000, pattern=r"^[^\x00-\x1f\x7f]+$")]
+Words = Annotated[str, Field(min_length=1, max_length=1_000, pattern=TEXT)]
 Fare = Annotated[float, Field(ge=0, le=1e9, allow_inf_nan=False)]
 Seats = Annotated[int, Field(ge=1, le=10_000)]
+
+
+NAMED = 50
+"""Legs that an answer names of a kind; it tells how many there are."""
 
 
 class _Message(BaseModel):
@@ -123,6 +131,9 @@ class Snapshot(_Message):
 
     why: Annotated[Words, Field(description="Where the counts come from, for the audit.")]
     counts: Annotated[tuple[LegCount, ...], Field(min_length=1, max_length=100_000)]
+    known_legs_only: Annotated[
+        bool, Field(description="Refuse the whole snapshot if the night in force does not sell one of its legs.")
+    ] = False
 
     @model_validator(mode="after")
     def _once(self) -> Self:
@@ -185,6 +196,20 @@ class Counted(BaseModel):
     """What a snapshot changed."""
 
     moved: Annotated[int, Field(description="Legs whose count moved; each has an audit row.")]
+    unknown_legs: Annotated[
+        int,
+        Field(
+            description="Legs of the snapshot that the night in force does not sell: flown, not on sale yet, or "
+            "misspelt. Their counts are kept for a night that sells them."
+        ),
+    ]
+    unknown: Annotated[list[str], Field(description=f"The first {NAMED} of them, in the order of the snapshot.")]
+    oversold_legs: Annotated[
+        int,
+        Field(description="Legs of the snapshot with more seats sold than authorised; none of theirs is sold here."),
+    ]
+    oversold: Annotated[list[str], Field(description=f"The first {NAMED} of them, in the order of the snapshot.")]
+    night: Annotated[str | None, Field(description="The night in force; none if there is none, and all are unknown.")]
 
 
 class LegView(BaseModel):
@@ -236,15 +261,35 @@ class NightView(BaseModel):
     products: int
 
 
+class LatestCounts(BaseModel):
+    """The latest snapshot of counts that this service took."""
+
+    at: Annotated[datetime, Field(description="When, by the machine's clock.")]
+    legs: Annotated[int, Field(description="Legs that it counted.")]
+    unknown_legs: Annotated[int, Field(description="Of these, legs that the night in force did not sell.")]
+    oversold_legs: Annotated[int, Field(description="Of these, legs with more seats sold than authorised.")]
+
+
 class Health(BaseModel):
     """Whether the service can answer, and by which night."""
 
     status: Annotated[
-        Literal["ok", "old night", "in trouble", "no night"],
-        Field(description="With no night questions are answered with 503; with an old one a refresh was missed."),
+        Literal["ok", "old night", "in trouble", "no sound night", "no night"],
+        Field(
+            description="With no night, or no sound one, questions are answered with 503; with an old one a refresh "
+            "was missed."
+        ),
     ]
     night: str | None
     as_of: datetime | None
-    legs: Annotated[int, Field(description="Legs in the ledger.")]
+    legs: Annotated[int, Field(description="Legs that the night sells; 0 without one.")]
+    ledger_legs: Annotated[
+        int,
+        Field(description="Legs in the ledger: those of the night, of earlier ones, and others that were counted."),
+    ]
+    latest_counts: Annotated[
+        LatestCounts | None,
+        Field(description="The latest snapshot of counts that this service took; none since it started."),
+    ]
     waiting: Annotated[int, Field(description="Orders that wait for the ledger.")]
     troubles: Annotated[list[str], Field(description="What is wrong, one line each; the log says why.")]

@@ -11,12 +11,14 @@ from prometheus_client.exposition import CONTENT_TYPE_LATEST, generate_latest
 from starlette.responses import Response
 from starlette.types import ASGIApp, Message, Receive, Scope, Send
 
+from legworth.service.counted_legs import CountedLegs
 from legworth.service.interface import OPEN, Permit, state_of
 from legworth.service.problems import described_problems
 from legworth.service.state import TROUBLES
 
 __all__ = ["Metrics", "metrics_router"]
 
+COUNTED = ("all", "unknown", "oversold")
 BUCKETS = (0.0005, 0.001, 0.002, 0.005, 0.01, 0.02, 0.05, 0.1, 0.25, 1.0, 5.0)
 
 
@@ -34,9 +36,27 @@ class Metrics:
         self.age = Gauge("legworth_snapshot_age_seconds", "Age of its snapshot.", registry=self.registry)
         self.waiting = Gauge("legworth_orders_waiting", "Orders that wait for the ledger.", registry=self.registry)
         self.sold = Gauge("legworth_seats_sold", "Seats sold on all legs.", registry=self.registry)
-        self.trouble = Gauge(
-            "legworth_trouble", "1 if store or ledger cannot be read.", ("what",), registry=self.registry
+        self.legs = Gauge("legworth_night_legs", "Legs that the night sells.", registry=self.registry)
+        self.ledger_legs = Gauge("legworth_ledger_legs", "Legs in the ledger.", registry=self.registry)
+        self.counted = Counter(
+            "legworth_counted_legs",
+            "Legs in snapshots of counts: all, those that the night did not sell, and those oversold.",
+            ("which",),
+            registry=self.registry,
         )
+        for which in COUNTED:
+            self.counted.labels(which)
+        self.trouble = Gauge(
+            "legworth_trouble",
+            "1 if the night in force cannot be taken over, or the ledger cannot be read.",
+            ("what",),
+            registry=self.registry,
+        )
+
+    def note_counts(self, found: CountedLegs) -> None:
+        """Count the legs of a snapshot that was taken."""
+        for which, names in zip(COUNTED, (found.names, found.unknown, found.oversold), strict=True):
+            self.counted.labels(which).inc(len(names))
 
     @property
     def middleware(self) -> Callable[[ASGIApp], ASGIApp]:
@@ -88,6 +108,8 @@ async def metrics(request: Request) -> Response:
         manifest = state.served.night.manifest
         found.night.set(manifest.number)
         found.age.set(max(0.0, state.now() - manifest.as_of.timestamp()))
+        found.legs.set(len(state.served.legs))
+    found.ledger_legs.set(len(state.seats.counts))
     found.waiting.set(state.writer.waiting)
     found.sold.set(sum(count.sold for count in list(state.seats.counts.values())))
     for what in TROUBLES:

@@ -42,6 +42,11 @@ class SeatCount:
         """Seats left, never negative."""
         return max(self.capacity - self.sold, 0)
 
+    @property
+    def oversold(self) -> bool:
+        """Whether more seats are sold than authorised, as after a change of vehicle."""
+        return self.sold > self.capacity
+
 
 @dataclass(frozen=True)
 class Sale:

@@ -17,6 +17,7 @@ from starlette.types import ASGIApp, Message, Receive, Scope, Send
 
 from legworth.service.bodies import FAULTS_TOLD, fault_line
 from legworth.service.errors import MalformedError
+from legworth.service.wording import fault_words
 from network.errors import InputError, LegworthError
 
 __all__ = ["PROBLEM_TYPE", "LastResort", "Problem", "described_problems", "install_problems", "problem"]
@@ -92,7 +93,7 @@ def install_problems(app: FastAPI) -> None:
 
     @app.exception_handler(RequestValidationError)
     async def malformed(_request: Request, error: RequestValidationError) -> Response:
-        faults = [fault_line(each["loc"], each["msg"]) for each in error.errors()[:FAULTS_TOLD]]
+        faults = [fault_line(each["loc"], fault_words(each)) for each in error.errors()[:FAULTS_TOLD]]
         return problem(422, str(MalformedError([])), faults)
 
     @app.exception_handler(HTTPException)

@@ -8,6 +8,7 @@ from typing import Annotated
 
 from pydantic import BaseModel, ConfigDict, Field, ValidationError
 
+from legworth.service.wording import fault_words
 from network import SettingError
 
 __all__ = ["ServiceSettings", "read_service_settings"]
@@ -83,5 +84,9 @@ def read_service_settings(path: Path | None) -> ServiceSettings:
     except (UnicodeDecodeError, tomllib.TOMLDecodeError) as error:
         raise SettingError(f"{path}: cannot be read as TOML ({error}); correct it") from error
     except ValidationError as problems:
-        lines = [f"{path}: {'.'.join(map(str, each['loc']))}: {each['msg']}" for each in problems.errors()]
+        names = list(ServiceSettings.model_fields)
+        lines = [
+            f"{path}: {'.'.join(map(str, each['loc']))}: {fault_words(each, names, 'setting')}"
+            for each in problems.errors()
+        ]
         raise SettingError("\n".join(lines)) from problems

@@ -14,6 +14,7 @@ from typing import TypeVar
 import structlog
 
 from legworth.service.asking_many import Turns
+from legworth.service.counted_legs import CountedLegs
 from legworth.service.errors import NoNightError
 from legworth.service.ledger import Ledger
 from legworth.service.orders import Order, Outcome, Overwriting, SeatCount
@@ -23,15 +24,14 @@ from legworth.service.settings import ServiceSettings
 from legworth.service.tokens import TokenFile
 from legworth.service.writer import LedgerWriter
 from legworth.store import NightDamagedError, Store
+from network.counted import counted
 
-__all__ = ["TROUBLES", "ServiceState"]
+__all__ = ["STORE", "TROUBLES", "ServiceState"]
 
 STORE, LEDGER = "store", "ledger"
-TROUBLES = {
-    STORE: "the night in force cannot be taken over; the one before is served",
-    LEDGER: "the ledger cannot be read; seats left may be old, and orders are turned away",
-}
-"""What can be wrong with a running service, as its health says it; the log says why."""
+TROUBLES = (STORE, LEDGER)
+"""What can be wrong with a running service."""
+MEND = "`legworth nights verify` says what is wrong, and `legworth nights restore` puts a sound one in force"
 
 
 T = TypeVar("T")
@@ -51,6 +51,12 @@ class ServiceState:
         Seconds by which the service's clock is ahead of the machine's, for drills; 0 otherwise.
     troubles
         What is wrong at present: for ``STORE`` and ``LEDGER`` the reason.
+    damaged
+        Whether the trouble with the store is a damaged night.
+    unused
+        How many nights the store holds while none is in force.
+    latest_counts
+        What the latest snapshot of counts held, None if none has come.
     turns
         Whose turn it is among the batches that are judged.
     when_taken_over
@@ -66,6 +72,9 @@ class ServiceState:
     served: ServedNight | None = None
     ahead: float = 0.0
     troubles: dict[str, str] = field(default_factory=dict)
+    damaged: bool = False
+    unused: int = 0
+    latest_counts: CountedLegs | None = None
     turns: Turns = field(default_factory=Turns)
     when_taken_over: list[Callable[[ServedNight], None]] = field(default_factory=list)
 
@@ -104,10 +113,31 @@ class ServiceState:
         self.ledger.close()
 
     def night(self) -> ServedNight:
-        """Return the night in force; `NoNightError` if there is none."""
+        """Return the night in force; `NoNightError` if there is none that can be served."""
         if self.served is None:
-            raise NoNightError("no night is in force yet; publish one with legworth refresh")
+            raise NoNightError(self._why_none())
         return self.served
+
+    def _why_none(self) -> str:
+        """Why no night is served."""
+        if STORE in self.troubles:
+            return self.trouble(STORE)
+        if self.unused:
+            return (
+                f"no night is in force, though the store holds {counted(self.unused, 'night')}; publish one with "
+                "`legworth refresh`, or put one of them in force with `legworth nights restore`"
+            )
+        return "the store has no night yet; publish one with `legworth refresh`"
+
+    def trouble(self, what: str) -> str:
+        """Say what is wrong with the store or the ledger, and what is done meanwhile; the log says why."""
+        if what == LEDGER:
+            return "the ledger cannot be read; seats left may be old, and orders are turned away"
+        fault, more = ("cannot be taken over", "the log says why")
+        if self.damaged:
+            fault, more = ("is damaged, or what names it is", MEND)
+        served = "no other one is served" if self.served is None else f"{self.served.name} is served as before"
+        return f"the night in force {fault}; {served}; {more}"
 
     def look(self) -> bool:
         """Take over the night in force if it is another one, after reading every file of it; True if it is.
@@ -126,7 +156,10 @@ class ServiceState:
     def next_night(self) -> ServedNight | None:
         """Read the night in force if it is another one than is served; raises as `look` does."""
         night = self.store.in_force()
-        if night is None or (self.served is not None and night.name == self.served.name):
+        if night is None:
+            self._see_why_none()
+            return None
+        if self.served is not None and night.name == self.served.name:
             return None
         faults = night.verify()
         if faults:
@@ -134,6 +167,12 @@ class ServiceState:
         served = ServedNight(night, self.settings.parts_in_memory)
         self.seats.add(served.counts())
         return served
+
+    def _see_why_none(self) -> None:
+        """Count the nights of a store without one in force, which is a fault if one was in force before."""
+        self.unused = len(self.store.nights())
+        if self.served is not None:
+            raise NightDamagedError(f"{self.store.path} no longer says which night is in force")
 
     def serve(self, night: ServedNight) -> None:
         """Answer by a night from now on."""
@@ -166,8 +205,10 @@ class ServiceState:
             found = work()
         except Exception as error:
             reason = str(error)[:1_000] or type(error).__name__
+            if what == STORE:
+                self.damaged = isinstance(error, NightDamagedError)
             if self.troubles.get(what) != reason:
-                structlog.get_logger().error(TROUBLES[what], error=reason)
+                structlog.get_logger().error(self.trouble(what), error=reason)
             self.troubles[what] = reason
             return None
         if self.troubles.pop(what, None) is not None:

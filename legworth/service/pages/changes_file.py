@@ -12,6 +12,7 @@ from typing import Annotated, Any, Literal
 
 from pydantic import BaseModel, ConfigDict, Field, TypeAdapter, ValidationError
 
+from legworth.service.wording import fault_words
 from legworth.store import Night
 
 __all__ = ["ReportedChanges", "read_changes"]
@@ -188,6 +189,11 @@ def read_changes(night: Night) -> ReportedChanges:
     return ReportedChanges(**read, unread=frozenset(SECTIONS) - set(read), faults=tuple(faults))
 
 
+def _what(error: Any) -> str:
+    """What is wrong with a value; nobody mends it by hand."""
+    return fault_words(error).partition("; ")[0]
+
+
 def _unreadable(why: str) -> ReportedChanges:
     return ReportedChanges(unread=frozenset(SECTIONS), faults=(f"{FILE} {why}",))
 
@@ -199,7 +205,7 @@ def _lines(name: str, error: ValidationError) -> list[str]:
     for each in found[:MOST_FAULTS]:
         where = ".".join(map(str, (name, *each["loc"])))
         missing = each["type"] == "missing"
-        lines.append(f"{FILE} has no {where}" if missing else f"{where} of {FILE} is wrong: {each['msg']}")
+        lines.append(f"{FILE} has no {where}" if missing else f"{where} of {FILE} is wrong: it {_what(each)}")
     if len(found) > MOST_FAULTS:
         lines.append(f"{FILE} has {len(found) - MOST_FAULTS:,} more faults in {name}")
     return lines

@@ -15,6 +15,7 @@ from starlette.responses import Response, StreamingResponse
 from legworth.report import ALONE
 from legworth.service.pages.night_index import NightIndex
 from legworth.service.pages.routes import page_router, planner_of
+from legworth.service.wording import AMOUNT
 
 __all__ = ["Filter", "pages", "safe_cell"]
 
@@ -104,7 +105,7 @@ async def chosen(
     station: Annotated[str, Query(max_length=200)] = "",
     fare_class: Annotated[str, Query(max_length=200)] = "",
     sold_by: Annotated[str, Query(max_length=20)] = "",
-    least: Annotated[str, Query(max_length=20, pattern=r"^\s*(\d{1,12}(\.\d{0,6})?)?\s*$")] = "",
+    least: Annotated[str, Query(max_length=20, pattern=AMOUNT)] = "",
     sort: Annotated[str, Query(max_length=20)] = "at_stake",
     down: bool = True,
 ) -> Filter:

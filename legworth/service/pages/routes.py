@@ -25,6 +25,7 @@ from legworth.service.pages.rendering import html
 from legworth.service.pages.solving import Solver
 from legworth.service.served_night import ServedNight
 from legworth.service.served_part import ServedPart
+from legworth.service.wording import fault_words
 from network.errors import LegworthError
 
 __all__ = ["COOKIE", "HEADERS", "NoSuchPage", "PageRoute", "Planner", "PlannerState", "page_router", "planner_of"]
@@ -132,7 +133,7 @@ class PageRoute(APIRoute):
                 else:
                     response = _to_sign_in(request)
             except RequestValidationError as error:
-                faults = [f"{each['loc'][-1]}: {each['msg']}" for each in error.errors()]
+                faults = [f"{each['loc'][-1]}: {fault_words(each)}" for each in error.errors()]
                 response = _fault(request, HTTPStatus.BAD_REQUEST, "\n".join(faults))
             except HTTPException as error:
                 response = _fault(request, error.status_code, str(error.detail))

@@ -8,14 +8,18 @@ from datetime import timedelta
 from pathlib import Path
 from typing import Any
 
+import pytest
 import structlog
 
+from legworth.service.errors import LedgerError
 from legworth.service.orders import SeatCount
+from legworth.service.seats import SeatsLeft
 from legworth.store import Store
 from tests.legworth.service.in_process import Running, running
 from tests.legworth.service.stores import AS_OF, HUB, publish
 from tests.legworth.service.test_interface import problem, sold
 
+MEND = "`legworth nights verify` says what is wrong, and `legworth nights restore` puts a sound one in force"
 FIRST, SECOND, THIRD = (f"0000{number}-2027-03-01" for number in (1, 2, 3))
 
 
@@ -52,7 +56,9 @@ def test_a_new_night_answers_without_restart_and_a_damaged_one_never(store: Path
                 assert (await service.ask(itinerary="IN0", fare_class="Q")).json() == after
                 said = await health(service)
                 assert (said["status"], said["night"]) == ("in trouble", SECOND)
-                assert said["troubles"] == ["the night in force cannot be taken over; the one before is served"]
+                assert said["troubles"] == [
+                    f"the night in force is damaged, or what names it is; {SECOND} is served as before; {MEND}"
+                ]
                 await asyncio.sleep(0.3)
                 nights.restore(SECOND, "tester", "the third is damaged")
                 await until(lambda: not service.state.troubles)
@@ -63,20 +69,83 @@ def test_a_new_night_answers_without_restart_and_a_damaged_one_never(store: Path
     asyncio.run(check())
 
 
+def test_a_night_damaged_before_the_start_is_not_called_missing(store: Path) -> None:
+    prices = store / "nights" / f"night={FIRST}" / "part=2027-03-11" / "bid_prices.parquet"
+    sound = prices.read_bytes()
+    prices.unlink()
+    prices.write_bytes(sound[:50])
+
+    async def check() -> None:
+        async with running(store) as service:
+            said = await health(service)
+            assert (said["status"], said["night"], said["legs"]) == ("no sound night", None, 0)
+            why = f"the night in force is damaged, or what names it is; no other one is served; {MEND}"
+            assert said["troubles"] == [why]
+            assert problem(await service.ask(itinerary="IN0", fare=900.0), 503)["detail"] == why
+            assert "The service is in trouble: the night in force is damaged" in (await service.get("/")).text
+            prices.write_bytes(sound)
+            await until(lambda: service.state.served is not None)
+            assert (await health(service))["status"] == "ok"
+
+    asyncio.run(check())
+
+
+def test_a_store_that_names_no_night_any_more_is_said_to(store: Path) -> None:
+    named = (store / "in_force").read_bytes()
+
+    async def check() -> None:
+        (store / "in_force").unlink()
+        async with running(store) as service:
+            assert (await health(service))["status"] == "no night"
+            said = problem(await service.ask(itinerary="IN0", fare=900.0), 503)["detail"]
+            assert said.startswith("no night is in force, though the store holds 1 night; ")
+            mark(store, named)
+            await until(lambda: service.state.served is not None)
+            (store / "in_force").unlink()
+            await until(lambda: service.state.troubles)
+            assert (await health(service))["status"] == "in trouble"
+            assert (await service.ask(itinerary="IN0", fare=900.0)).status_code == 200
+
+    asyncio.run(check())
+
+
+def test_a_night_that_the_ledger_cannot_take_is_not_called_damaged(
+    store: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def broken(*_: Any) -> Any:
+        raise LedgerError("the ledger could not write")
+
+    monkeypatch.setattr(SeatsLeft, "add", broken)
+
+    async def check() -> None:
+        async with running(store) as service:
+            assert (await health(service))["troubles"] == [
+                "the night in force cannot be taken over; no other one is served; the log says why"
+            ]
+
+    asyncio.run(check())
+
+
+def mark(store: Path, named: bytes) -> None:
+    """Name the night in force, by one rename as the store does."""
+    (store / "named").write_bytes(named)
+    (store / "named").replace(store / "in_force")
+
+
 def _publish_and_damage(network: Path, store: Path) -> None:
     """Publish a night whose prices are changed before any service can look at it."""
     nights = Store.open(store)
     sound = (store / "in_force").read_bytes()
     publish(network, store, **{**HUB, "mean": 12.0})
     damaged = (store / "in_force").read_bytes()
-    (store / "in_force").write_bytes(sound)
+    mark(store, sound)
     night = nights.night(THIRD)
     path = night.folder / "part=2027-03-11" / "bid_prices.parquet"
     data = bytearray(path.read_bytes())
     data[len(data) // 2] ^= 1
     path.unlink()
     path.write_bytes(bytes(data))
-    (store / "in_force").write_bytes(damaged)
+    mark(store, damaged)
 
 
 def test_the_first_night_is_taken_over_when_it_comes(tmp_path: Path) -> None:
@@ -85,7 +154,8 @@ def test_the_first_night_is_taken_over_when_it_comes(tmp_path: Path) -> None:
     async def check() -> None:
         async with running(tmp_path / "store") as service:
             assert (await health(service))["status"] == "no night"
-            problem(await service.ask(itinerary="IN0", fare=900.0), 503)
+            said = problem(await service.ask(itinerary="IN0", fare=900.0), 503)
+            assert said["detail"] == "the store has no night yet; publish one with `legworth refresh`"
             problem(await service.get("/v1/legs/IN0"), 503)
             problem(await service.sell(itinerary="IN0", fare=900.0), 503)
             assert (await service.get("/v1/nights")).json() == []

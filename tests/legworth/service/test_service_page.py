@@ -7,7 +7,10 @@ import json
 import re
 import shlex
 from pathlib import Path
+from typing import get_args, get_type_hints
 
+from legworth.decisions import Reason
+from legworth.service.messages import Health
 from legworth.service.settings import ServiceSettings
 from tests.legworth.service.in_process import running
 
@@ -69,3 +72,11 @@ def test_the_examples_work(store: Path) -> None:
             assert shown == set(description) - {"/v1/nights/{night}"}
 
     asyncio.run(check())
+
+
+def test_every_reason_and_every_status_is_explained() -> None:
+    first = re.findall(r"^\| `([a-z_ ]+)` \|", PAGE, re.MULTILINE)
+    reasons = [reason.name.lower() for reason in Reason if reason is not Reason.NO_PASSENGERS]  # seats are 1 or more
+    assert [name for name in first if name in reasons] == reasons
+    statuses = get_args(get_type_hints(Health)["status"])
+    assert {name for name in first if " " in name or name == "ok"} == set(statuses)
