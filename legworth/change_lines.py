@@ -43,8 +43,7 @@ def change_lines(account: ChangeAccount, currency: str) -> list[str]:
 
 
 def _sold(sold: int) -> str:
-    verb = "is" if sold == 1 else "are"
-    return f"{counted(sold, 'seat') if sold else 'no seat'} {verb if sold else 'is'} sold on it"
+    return f"{counted(sold, 'seat is', 'seats are') if sold else 'no seat is'} sold on it"
 
 
 def _first(lines: Sequence[str], noun: str, several: str) -> list[str]:

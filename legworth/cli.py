@@ -57,6 +57,7 @@ for command in (
 
 
 def _fail(error: LegworthError, *, as_json: bool) -> NoReturn:
+    from network.counted import counted
     from network.errors import InputError
 
     faults = error.faults if isinstance(error, InputError) else ()
@@ -68,7 +69,7 @@ def _fail(error: LegworthError, *, as_json: bool) -> NoReturn:
         click.echo(str(error), err=True)
         if faults:
             count = sum(fault.count for fault in faults)
-            click.echo(f"{count:,} fault{'s' if count > 1 else ''}; nothing was computed or written", err=True)
+            click.echo(f"{counted(count, 'fault')}; nothing was computed or written", err=True)
     sys.exit(error.exit_code)
 
 

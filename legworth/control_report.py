@@ -12,7 +12,7 @@ from legworth.change import ChangeStudy
 from legworth.change_lines import change_lines
 from legworth.connection import ConnectionStudy
 from legworth.report import CAUTION, console_for_output, money, price_text
-from network import Network
+from network import Network, counted
 
 __all__ = [
     "change_as_json",
@@ -54,7 +54,7 @@ def print_connections(network: Network, studies: list[ConnectionStudy], method: 
     console = console_for_output()
     for study in studies:
         legs = " + ".join(
-            f"{leg} {price_text(price)} ({seats} seats left)"
+            f"{leg} {price_text(price)} ({counted(seats, 'seat')} left)"
             for leg, price, seats in zip(study.legs, study.bid_prices, study.remaining, strict=True)
         )
         console.print(f"{study.itinerary}: {legs}, in {network.currency}", style="bold", highlight=False)
@@ -132,7 +132,7 @@ def print_change(network: Network, study: ChangeStudy, method: str) -> None:
     if study.account.fares and not study.account.products_with_other_demand:
         console.print("Demand is taken to stay the same at the new fares.", highlight=False)
     if study.lost_itineraries:
-        lost = "1 itinerary is" if study.lost_itineraries == 1 else f"{study.lost_itineraries:,} itineraries are"
+        lost = counted(study.lost_itineraries, "itinerary is", "itineraries are")
         console.print(
             f"{lost} no longer sold; carrying their passengers another way is not looked at",
             highlight=False,

@@ -16,7 +16,7 @@ from matplotlib.ticker import MaxNLocator
 from legworth.connection import ConnectionStudy
 from legworth.pricing import PricedNetwork
 from legworth.report import largest_disagreements
-from network import Network, SettingError
+from network import Network, SettingError, counted
 
 if TYPE_CHECKING:
     from matplotlib.typing import RcKeyType
@@ -112,7 +112,7 @@ def _draw_legs(axes: Axes, priced: PricedNetwork) -> None:
             color=colour,
             alpha=0.55,
             linewidths=0,
-            label=f"{label} ({int(chosen.sum()):,} legs)",
+            label=f"{label} ({counted(chosen.sum(), 'leg')})",
         )
     end = float(max(bid_price.max(initial=0), leg_value.max(initial=0), 1)) * 1.05
     axes.plot([0, end], [0, end], color=QUIET, linewidth=1, linestyle="--")

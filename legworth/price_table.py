@@ -10,7 +10,7 @@ from pathlib import Path
 
 import numpy as np
 
-from network import InputError, Network, SettingError
+from network import InputError, Network, SettingError, counted
 from network.arrays import FloatArray, IntArray
 from network.faults import Faults
 from network.reading import TableData, read_table
@@ -200,7 +200,8 @@ def _with_curves(bid_price: FloatArray, curves: TableData, leg: IntArray, n_legs
         lambda row: curves.line_of(int(order[row])),
         "remaining",
         lambda row: (
-            f"{remaining[order[row]]} stands where the price for {place[row]} seats left is missing; price again"
+            f"{remaining[order[row]]} stands where the price for {counted(place[row], 'seat')} left is missing; price "
+            "again"
         ),
     )
     faults.raise_errors()

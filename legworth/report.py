@@ -13,7 +13,7 @@ from rich.text import Text
 
 from heuristics.arrivals import days_before_departure
 from legworth.pricing import PricedNetwork
-from network import Fault, Network
+from network import Fault, Network, counted
 
 __all__ = [
     "CAUTION",
@@ -80,8 +80,8 @@ def print_check(network: Network, warnings: Iterable[Fault], n_components: int) 
         count += warning.count
         console.print(str(warning), highlight=False, soft_wrap=True)
     _print_heading(console, network, n_components)
-    demand, warned = float(network.demand.expected.sum()), f"{count:,} warning{'s' if count != 1 else ''}"
-    console.print(f"{demand:,.0f} passengers expected to ask; {warned}, no faults", highlight=False)
+    demand, warned = float(network.demand.expected.sum()), counted(count, "warning")
+    console.print(f"{counted(demand, 'passenger')} expected to ask; {warned}, no faults", highlight=False)
 
 
 def print_prices(priced: PricedNetwork, out: Path, table_format: str) -> None:
@@ -104,7 +104,8 @@ def print_prices(priced: PricedNetwork, out: Path, table_format: str) -> None:
     facts.add_row(
         "Disagreement with leg-level control",
         money(summary["at_stake"]),
-        f"{summary['products_where_controls_disagree']:,} products, {summary['legs_where_controls_disagree']:,} legs",
+        f"{counted(summary['products_where_controls_disagree'], 'product')}, "
+        f"{counted(summary['legs_where_controls_disagree'], 'leg')}",
     )
     console.print(facts, highlight=False)
     if departed < network.n_legs:
@@ -137,7 +138,7 @@ def print_comparison(priced: PricedNetwork, top: int, picture: Path) -> None:
     rows = largest_disagreements(priced, top)
     console.print(
         f"Both controls agree on {network.n_products - summary['products_where_controls_disagree']:,} of "
-        f"{network.n_products:,} products; at stake on the others, to first order and "
+        f"{counted(network.n_products, 'product')}; at stake on the others, to first order and "
         f"with seats counted more than once, {money(summary['at_stake'])} {network.currency}:",
         highlight=False,
     )
@@ -145,7 +146,8 @@ def print_comparison(priced: PricedNetwork, top: int, picture: Path) -> None:
         chosen = connections["disagreement"] == word
         stake = float(connections["at_stake"][chosen].sum())
         console.print(f"  {int(chosen.sum()):,} that {label} alone would sell, {money(stake)}", highlight=False)
-    table = Table(title=f"The {len(rows)} disagreements with most at stake ({network.currency})", title_justify="left")
+    most = f"The {counted(len(rows), 'disagreement')} with most at stake" if len(rows) > 1 else "The disagreement"
+    table = Table(title=f"{most} ({network.currency})", title_justify="left")
     table.add_column("Itinerary")
     table.add_column("Class")
     table.add_column("Route")
@@ -161,7 +163,8 @@ def print_comparison(priced: PricedNetwork, top: int, picture: Path) -> None:
             price_text(row["at_stake"]),
             WORDS[row["disagreement"]],
         )
-    console.print(table, highlight=False)
+    if rows:
+        console.print(table, highlight=False)
     _print_low_prices(console, priced)
     console.print(f"Picture: {picture}", highlight=False, markup=False, soft_wrap=True)
     console.print(CAUTION, style="dim", highlight=False, soft_wrap=True)
@@ -227,8 +230,9 @@ def _print_heading(console: Console, network: Network, n_components: int) -> Non
     instant = network.as_of.strftime("%Y-%m-%d %H:%M %z")
     console.print(Text.assemble((network.name, "bold"), f", as of {instant}, in {network.currency}"))
     console.print(
-        f"{network.n_legs:,} legs in {n_components:,} components, {network.n_itineraries:,} itineraries, "
-        f"{network.n_products:,} products; {int(network.remaining.sum()):,} seats to sell",
+        f"{counted(network.n_legs, 'leg')} in {counted(n_components, 'component')}, "
+        f"{counted(network.n_itineraries, 'itinerary')}, {counted(network.n_products, 'product')}; "
+        f"{counted(network.remaining.sum(), 'seat')} to sell",
         highlight=False,
     )
 

@@ -13,6 +13,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
+from network.counted import counted
 from network.faults import Faults
 from network.schema import TableSchema
 
@@ -93,7 +94,7 @@ class CsvText:
             records.line.__getitem__,
             "",
             lambda row: (
-                f"holds {found[row]} values where the header names {wanted} columns; "
+                f"holds {counted(found[row], 'value')} where the header names {counted(wanted, 'column')}; "
                 "add or remove values, and put a value that holds a comma in double quotes"
             ),
         )

@@ -10,6 +10,7 @@ import pyarrow as pa
 import pyarrow.compute
 
 from network.arrays import IntArray, NameArray
+from network.counted import counted
 from network.faults import Faults
 from network.model import Legs, Stations, ranges
 from network.reading import TableData
@@ -106,7 +107,7 @@ def assemble_legs(table: TableData | None, stations: Stations | None, faults: Fa
         np.flatnonzero((sold > capacity) & frame["capacity"].notna().to_numpy()),
         table.line_of,
         "sold",
-        lambda row: f"{sold[row]} seats are sold of {capacity[row]}; no seats remain",
+        lambda row: f"{counted(sold[row], 'seat is', 'seats are')} sold of {capacity[row]:,}; no seats remain",
         warning=True,
     )
     return Legs(

@@ -9,6 +9,7 @@ import numpy as np
 from legworth.schedules.gtfs_calendar import NO_TIME, seconds_of
 from legworth.schedules.gtfs_stations import FeedStations
 from legworth.schedules.gtfs_tables import GtfsTable, GtfsTables
+from network import counted
 from network.arrays import BoolArray, IntArray
 
 __all__ = ["TripLegs", "trip_legs"]
@@ -182,8 +183,8 @@ def _rising(calls: Calls, table: GtfsTable) -> Calls:
             table.data.file,
             lines[0],
             "arrival_time",
-            f"{len(still):,} calls from here on arrive at the time at which the trip left the call before; they were "
-            "set a second apart",
+            f"{counted(len(still), 'call from here on arrives', 'calls from here on arrive')} at the time at which the "
+            "trip left the call before; a second was put between",
             warning=True,
             count=len(still),
         )

@@ -11,7 +11,7 @@ from legworth.schedules.gtfs_calendar import NO_TIME, seconds_of
 from legworth.schedules.gtfs_calls import TripLegs
 from legworth.schedules.gtfs_tables import GtfsTables
 from legworth.schedules.operating_days import MOST_LEGS, Window
-from network import SettingError
+from network import SettingError, counted
 from network.arrays import BoolArray, IntArray, NameArray
 from network.model import ranges
 
@@ -103,8 +103,8 @@ def _departures(tables: GtfsTables, legs: TripLegs) -> tuple[IntArray, IntArray]
             table.data.file,
             table.data.line_of(int(about[0])),
             "exact_times",
-            f"{len(about):,} rows from here on give only the time between departures; departures were taken at the "
-            "start time and every headway after it",
+            f"{counted(len(about), 'row from here on gives', 'rows from here on give')} only the time between "
+            "departures; departures were taken at the start time and every headway after it",
             warning=True,
             count=len(about),
         )

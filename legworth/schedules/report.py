@@ -11,6 +11,7 @@ from rich.table import Table
 from legworth.report import CAUTION, console_for_output, faults_as_json
 from legworth.schedules.folder import MadeFolder
 from legworth.schedules.timetable import Timetable
+from network import counted
 
 __all__ = ["print_schedule", "schedule_as_json"]
 
@@ -48,7 +49,9 @@ def print_schedule(out: Path, timetable: Timetable, made: MadeFolder) -> None:
         console.print(str(warning), highlight=False, soft_wrap=True)
     first, last = _dates(timetable)
     facts = Table.grid(padding=(0, 2))
-    facts.add_row("Legs", f"{len(timetable):,}", f"{timetable.capacity.sum():,} seats, departing {first} to {last}")
+    facts.add_row(
+        "Legs", f"{len(timetable):,}", f"{counted(timetable.capacity.sum(), 'seat')}, departing {first} to {last}"
+    )
     facts.add_row("Stations", f"{len(timetable.places):,}", _without(timetable))
     for reason, count in timetable.left_out.items():
         if not count:
@@ -63,19 +66,21 @@ def print_schedule(out: Path, timetable: Timetable, made: MadeFolder) -> None:
             if dropped.count:
                 facts.add_row("Dropped", f"{dropped.count:,}", f"{dropped.what}: {dropped.why}")
     if made.kept_sold:
-        facts.add_row("Seats sold", f"{made.kept_sold:,}", "legs keep the seats sold that the folder had")
+        keeps = "leg keeps" if made.kept_sold == 1 else "legs keep"
+        facts.add_row("Seats sold", f"{made.kept_sold:,}", f"{keeps} the seats sold that the folder had")
     console.print(facts, highlight=False)
     if len(made.lost_sold):
         names = ", ".join(map(str, made.lost_sold[:NAMED])) + (", ..." if len(made.lost_sold) > NAMED else "")
         console.print(
-            f"Caution: {len(made.lost_sold):,} legs with seats sold are not in this schedule ({names}). Their "
-            "passengers need another way.",
+            f"Caution: {counted(len(made.lost_sold), 'leg with seats sold is', 'legs with seats sold are')} not in "
+            f"this schedule ({names}). Their passengers need another way.",
             highlight=False,
             soft_wrap=True,
         )
     for file, count in made.without_itinerary.items():
         console.print(
-            f"{count:,} rows of {file} name itineraries that are not there; legworth check lists them",
+            counted(count, f"row of {file} names an itinerary", f"rows of {file} name itineraries")
+            + " that the new schedule does not have; legworth check lists them",
             highlight=False,
             soft_wrap=True,
         )

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import re
 from pathlib import Path
 
 import matplotlib.image
@@ -253,3 +254,30 @@ def test_a_folder_of_departed_legs_alone_is_warned_of(folder: Path, tmp_path: Pa
     assert outcome.out.startswith("network.toml:3: as_of: warning: every leg of legs.csv (5) has departed")
     assert "0 of 0" in outcome.out
     assert "dearest" not in outcome.out
+
+
+def test_one_of_everything_is_said_in_the_singular(folder: Path, tmp_path: Path) -> None:
+    """One leg, one itinerary, one product and one seat."""
+    only = Folder().line("legs.csv", 2, "L1,NOR,HUB,2030-03-01T06:00+01:00,2030-03-01T07:30+01:00,24,23")
+    for file, rows in (("legs.csv", 2), ("itineraries.csv", 2), ("fares.csv", 2), ("demand.csv", 2)):
+        only.mutate(file, lambda text, rows=rows: "".join(text.splitlines(keepends=True)[:rows]))
+    only.cell("demand.csv", 2, "mean", "1").cell("demand.csv", 2, "deviation", "1").write(folder)
+    out = tmp_path / "out"
+    runs = [
+        ("check", folder),
+        ("price", folder, "--out", out, "--curves", "decomposition"),
+        ("compare", folder, "--picture", tmp_path / "x.png"),
+        ("decide", folder, "--prices", out, "--itinerary", "NOR-HUB", "--fare-class", "A"),
+        ("connection", folder, "--itinerary", "NOR-HUB", "--party", "1"),
+        ("change", folder, "--seats", "L1=-1"),
+        ("change", folder, "--cancel", "L1"),
+        ("change", folder, "--seats", "L1=-2"),
+        ("check", tmp_path),
+    ]
+    nouns = "legs|components|itineraries|products|seats|passengers|faults|warnings|disagreements|parties|curves"
+    for arguments in runs:
+        outcome = run(*arguments)
+        assert outcome.out + outcome.err
+        assert not re.findall(rf"(?<![\w.,:-])1 (?:{nouns})\b", outcome.out + outcome.err), arguments
+    assert "1 leg in 1 component, 1 itinerary, 1 product; 1 seat to sell" in run("check", folder).out
+    assert "1 passenger expected to ask; 2 warnings" in run("check", folder).out
