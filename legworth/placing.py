@@ -4,10 +4,47 @@ from __future__ import annotations
 
 import os
 import shutil
-from collections.abc import Sequence
+import tempfile
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
 from pathlib import Path
 
-__all__ = ["place_together"]
+from network import SettingError
+
+__all__ = ["folder_aside", "place_together"]
+
+
+@contextmanager
+def folder_aside(out: Path, names: Sequence[str]) -> Iterator[Path]:
+    """Give a hidden folder inside a folder to write files into before they are placed, and remove it.
+
+    Parameters
+    ----------
+    out
+        Where the files are to go; made if it is not there, and removed again if nothing came of it.
+    names
+        The files.
+
+    Raises
+    ------
+    SettingError
+        If a folder stands where a file is to go, or something inside raises OSError.
+    """
+    for name in names:
+        if (out / name).is_dir():
+            raise SettingError(f"{out / name} is a folder, where a result is to go; move it away")
+    made = not out.exists()
+    try:
+        out.mkdir(parents=True, exist_ok=True)
+        aside = Path(tempfile.mkdtemp(prefix=".unfinished-", dir=out))
+        try:
+            yield aside
+        finally:
+            shutil.rmtree(aside, ignore_errors=True)
+            if made and not any(out.iterdir()):
+                out.rmdir()
+    except OSError as error:
+        raise SettingError(f"cannot write to {out} ({error.strerror}); free space or name another folder") from error
 
 
 def place_together(aside: Path, out: Path, names: Sequence[str], gone: Sequence[str] = ()) -> None:

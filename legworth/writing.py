@@ -3,8 +3,6 @@
 from __future__ import annotations
 
 import json
-import shutil
-import tempfile
 from pathlib import Path
 from typing import Any, Literal
 
@@ -13,6 +11,7 @@ import pyarrow as pa
 import pyarrow.csv
 import pyarrow.parquet
 
+from legworth.placing import folder_aside, place_together
 from legworth.results import RESULT_TABLES
 from network import SettingError
 
@@ -37,28 +36,12 @@ def write_results(
     """
     names = [*(f"{name}.{table_format}" for name in tables), "summary.json"]
     stale = {f"{name}.{ending}" for name in RESULT_TABLES for ending in ("csv", "parquet")} - set(names)
-    for name in names:
-        if (out / name).is_dir():
-            raise SettingError(f"{out / name} is a folder, where a result is to go; move it away")
-    made = not out.exists()
-    try:
-        out.mkdir(parents=True, exist_ok=True)
-        aside = Path(tempfile.mkdtemp(prefix=".unfinished-", dir=out))
-        try:
-            for name, frame in tables.items():
-                _write(aside / f"{name}.{table_format}", frame)
-            text = json.dumps(summary, indent=2, ensure_ascii=False, allow_nan=False)
-            (aside / "summary.json").write_text(text + "\n", encoding="utf-8")
-            for name in names:
-                (aside / name).replace(out / name)
-            for name in stale:
-                (out / name).unlink(missing_ok=True)
-        finally:
-            shutil.rmtree(aside, ignore_errors=True)
-            if made and not any(out.iterdir()):
-                out.rmdir()
-    except OSError as error:
-        raise SettingError(f"cannot write to {out} ({error.strerror}); free space or name another folder") from error
+    with folder_aside(out, names) as aside:
+        for name, frame in tables.items():
+            _write(aside / f"{name}.{table_format}", frame)
+        text = json.dumps(summary, indent=2, ensure_ascii=False, allow_nan=False)
+        (aside / "summary.json").write_text(text + "\n", encoding="utf-8")
+        place_together(aside, out, names, sorted(stale))
 
 
 def write_table(path: Path, frame: pd.DataFrame) -> None:

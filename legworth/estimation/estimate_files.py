@@ -5,15 +5,13 @@ from __future__ import annotations
 import hashlib
 import json
 import shutil
-import tempfile
 from pathlib import Path
 from typing import Any
 
 import pandas as pd
 
-from legworth.placing import place_together
+from legworth.placing import folder_aside, place_together
 from legworth.writing import TableFormat, write_table
-from network import SettingError
 
 __all__ = ["DOCUMENT", "PAGE", "write_estimate"]
 
@@ -56,31 +54,18 @@ def write_estimate(
         If the folder cannot be written.
     """
     names = [f"{name}.{table_format}" for name in ("booking_curves", "demand", "estimates")]
-    for name in (*names, DOCUMENT, PAGE):
-        if (out / name).is_dir():
-            raise SettingError(f"{out / name} is a folder, where a result is to go; move it away")
-    made = not out.exists()
-    try:
-        out.mkdir(parents=True, exist_ok=True)
-        aside = Path(tempfile.mkdtemp(prefix=".unfinished-", dir=out))
-        try:
-            for name in names:
-                write_table(aside / name, tables[name.partition(".")[0]])
-            document = {**document, "files": {name: _digest(aside / name) for name in names}}
-            text = json.dumps(document, indent=2, ensure_ascii=False, allow_nan=False)
-            (aside / DOCUMENT).write_text(text + "\n", encoding="utf-8")
-            (aside / PAGE).write_text(page, encoding="utf-8")
-            kept = _keep(out)
-            # A folder may hold a table in one format only.
-            other = "parquet" if table_format == "csv" else "csv"
-            gone = [Path(name).with_suffix(f".{other}").name for name in names]
-            place_together(aside, out, (*names, DOCUMENT, PAGE), gone)
-        finally:
-            shutil.rmtree(aside, ignore_errors=True)
-            if made and not any(out.iterdir()):
-                out.rmdir()
-    except OSError as error:
-        raise SettingError(f"cannot write to {out} ({error.strerror}); free space or name another folder") from error
+    with folder_aside(out, (*names, DOCUMENT, PAGE)) as aside:
+        for name in names:
+            write_table(aside / name, tables[name.partition(".")[0]])
+        document = {**document, "files": {name: _digest(aside / name) for name in names}}
+        text = json.dumps(document, indent=2, ensure_ascii=False, allow_nan=False)
+        (aside / DOCUMENT).write_text(text + "\n", encoding="utf-8")
+        (aside / PAGE).write_text(page, encoding="utf-8")
+        kept = _keep(out)
+        # A folder may hold a table in one format only.
+        other = "parquet" if table_format == "csv" else "csv"
+        gone = [Path(name).with_suffix(f".{other}").name for name in names]
+        place_together(aside, out, (*names, DOCUMENT, PAGE), gone)
     return [out / name for name in (*names, DOCUMENT, PAGE)], kept
 
 

@@ -3,8 +3,6 @@
 from __future__ import annotations
 
 import json
-import shutil
-import tempfile
 from collections.abc import Callable
 from dataclasses import dataclass
 from datetime import datetime
@@ -14,7 +12,7 @@ from pathlib import Path
 import numpy as np
 import pandas as pd
 
-from legworth.placing import place_together
+from legworth.placing import folder_aside, place_together
 from legworth.schedules.connection_tables import itinerary_table, wanted_pairs
 from legworth.schedules.connections import Connections, build_connections
 from legworth.schedules.timetable import Timetable
@@ -212,24 +210,10 @@ def _without_itinerary(out: Path, itineraries: NameArray) -> dict[str, int]:
 
 def _write(out: Path, tables: dict[str, pd.DataFrame], settings: str | None) -> None:
     """Write all files aside, then move them into place together; tables of the same names in Parquet go."""
-    made = not out.exists()
-    try:
-        out.mkdir(parents=True, exist_ok=True)
-        aside = Path(tempfile.mkdtemp(prefix=".unfinished-", dir=out))
-        try:
-            names = [f"{name}.csv" for name in tables]
-            for name, frame in tables.items():
-                write_table(aside / f"{name}.csv", frame)
-            if settings is not None:
-                (aside / "network.toml").write_text(settings, encoding="utf-8")
-                names.append("network.toml")
-            for name in names:
-                if (out / name).is_dir():
-                    raise SettingError(f"{out / name} is a folder, where a table is to go; move it away")
-            place_together(aside, out, names, [f"{name}.parquet" for name in tables])
-        finally:
-            shutil.rmtree(aside, ignore_errors=True)
-            if made and not any(out.iterdir()):
-                out.rmdir()
-    except OSError as error:
-        raise SettingError(f"cannot write to {out} ({error.strerror}); free space or name another folder") from error
+    names = [*(f"{name}.csv" for name in tables), *(["network.toml"] if settings is not None else [])]
+    with folder_aside(out, names) as aside:
+        for name, frame in tables.items():
+            write_table(aside / f"{name}.csv", frame)
+        if settings is not None:
+            (aside / "network.toml").write_text(settings, encoding="utf-8")
+        place_together(aside, out, names, [f"{name}.parquet" for name in tables])

@@ -4,9 +4,12 @@ from __future__ import annotations
 
 from pathlib import Path
 
+import pandas as pd
 import pytest
 
-from legworth.placing import place_together
+from legworth.placing import folder_aside, place_together
+from legworth.writing import write_results
+from network import SettingError
 
 
 def content(folder: Path) -> dict[str, str]:
@@ -73,3 +76,50 @@ def test_a_removal_that_fails_puts_all_back(out: Path, monkeypatch: pytest.Monke
     with pytest.raises(OSError, match="Permission"):
         place_together(out / ".aside", out, ["legs.csv", "new.csv"], ["legs.parquet"])
     assert content(out) == before
+
+
+def test_a_folder_that_nothing_came_of_goes_again(tmp_path: Path) -> None:
+    place = tmp_path / "deep" / "out"
+    with (
+        pytest.raises(SettingError, match=r"cannot write to .*out \(No space left on device\)"),
+        folder_aside(place, []),
+    ):
+        raise OSError(28, "No space left on device")
+    assert not place.exists()
+    with folder_aside(place, ["a.csv"]) as aside:
+        (aside / "a.csv").write_text("a")
+        place_together(aside, place, ["a.csv"])
+    assert [path.name for path in place.iterdir()] == ["a.csv"]
+
+
+def test_a_folder_in_the_place_of_a_file_is_told_before_anything_is_done(out: Path) -> None:
+    (out / "demand.csv").mkdir()
+    with (
+        pytest.raises(SettingError, match=r"demand\.csv is a folder, where a result is to go"),
+        folder_aside(out, ["legs.csv", "demand.csv"]),
+    ):
+        raise AssertionError("nothing is to be done")
+
+
+@pytest.mark.parametrize("fails", ["bid_prices.csv", "summary.json", "comparison.csv"])
+def test_results_that_cannot_all_be_placed_leave_those_of_the_earlier_run(
+    fails: str, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    old, new = pd.DataFrame({"leg": ["L1"]}), pd.DataFrame({"leg": ["L2"]})
+    write_results(tmp_path, {"bid_prices": old, "comparison": old}, {"run": 1})
+    before = content(tmp_path)
+    replace, unlink = Path.replace, Path.unlink
+
+    def failing(path: Path, *more: object, **how: object) -> object:
+        if path.name == fails and path.parent.name != ".before":
+            raise OSError(5, "Input/output error")
+        return replace(path, *more) if more else unlink(path, **how)  # type: ignore[arg-type]
+
+    with monkeypatch.context() as patched:
+        patched.setattr(Path, "replace", failing)
+        patched.setattr(Path, "unlink", failing)
+        with pytest.raises(SettingError, match="Input/output error"):
+            write_results(tmp_path, {"bid_prices": new}, {"run": 2})
+    assert content(tmp_path) == before
+    write_results(tmp_path, {"bid_prices": new}, {"run": 2})
+    assert sorted(path.name for path in tmp_path.iterdir()) == ["bid_prices.csv", "summary.json"]
