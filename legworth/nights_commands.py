@@ -50,13 +50,13 @@ def _in_force(store: Store) -> str | None:
 
 def _chosen(store: Store, name: str | None) -> Night:
     """Return the night named, or the one in force."""
-    from legworth.store import StoreError
+    from legworth.store.advice import no_night_in_force
 
     if name is not None:
         return store.night(name)
     night = store.in_force()
     if night is None:
-        raise StoreError(f"no night is in force in {store.path}; run `legworth refresh`")
+        raise no_night_in_force(store)
     return night
 
 
@@ -64,14 +64,15 @@ def _chosen(store: Store, name: str | None) -> Night:
 @AS_JSON
 @click.pass_context
 def list_nights(context: click.Context, *, as_json: bool) -> None:
-    """List the nights of the store, oldest first."""
-    from legworth.store.report import nights_as_json, print_nights
+    """List the nights of the store, oldest first, and what was forced or stopped."""
+    from legworth.store.listing import nights_as_json, print_nights
+    from legworth.store.stopped import stopped_nights
 
     store = _store(context)
-    found, in_force, stopped = store.nights(), _in_force(store), store.stopped()
+    found, in_force, stopped = store.nights(), _in_force(store), stopped_nights(store)
     if as_json:
         document = {"store": str(store.path), "in_force": in_force, "nights": nights_as_json(found, in_force)}
-        print_json(document | {"stopped": [str(path) for path in stopped]})
+        print_json(document | {"stopped": [night.as_dict() for night in stopped]})
         return
     print_nights(found, in_force, stopped)
 
@@ -200,9 +201,13 @@ def _rule(folder: Path | None, newest: int | None, weeks: int | None, months: in
 def query(context: click.Context, sql: str, form: str, rows: int, *, as_json: bool) -> None:
     """Answer one SELECT over all nights: a view per table, tonight_TABLE, nights and parts."""
     from legworth.store.report import print_rows, rows_as_json
+    from legworth.store.sql import damage_met
     from legworth.store.sql import query as answered
 
-    answer = answered(_store(context), sql)
+    store = _store(context)
+    answer = answered(store, sql)
+    for line in damage_met(store, sql):
+        click.echo(f"{line}; look with `legworth nights verify`", err=True)
     if as_json or form == "json":
         print_json(rows_as_json(answer))
     elif form == "csv":
@@ -216,7 +221,10 @@ def query(context: click.Context, sql: str, form: str, rows: int, *, as_json: bo
 @AS_JSON
 @click.pass_context
 def verify(context: click.Context, name: str | None, *, as_json: bool) -> None:
-    """Read every file of all nights, or of NAME, and say what is missing, added or changed."""
+    """Read every file of all nights, or of NAME, and say what is missing, added or changed.
+
+    Without NAME it also says what is wrong with the night in force, or with the file that says which it is.
+    """
     from legworth.progress import progress_bar
     from legworth.store.report import print_faults
 
@@ -227,15 +235,29 @@ def verify(context: click.Context, name: str | None, *, as_json: bool) -> None:
         for done, night in enumerate(chosen, start=1):
             faults[night.name] = night.verify()
             progress(done, len(chosen))
-    if name is None:
-        store.in_force()
-    sound = not any(faults.values())
+    in_force = _in_force_fault(store) if name is None else None
+    sound = in_force is None and not any(faults.values())
     if as_json:
-        print_json({"ok": sound, "nights": {key: list(lines) for key, lines in faults.items()}})
+        lines = {key: list(lines) for key, lines in faults.items()}
+        print_json({"ok": sound, "nights": lines, "in_force_fault": in_force})
     else:
         print_faults(faults)
+        if in_force is not None:
+            click.echo(in_force, err=True)
     if not sound:
         sys.exit(2)
+
+
+def _in_force_fault(store: Store) -> str | None:
+    """What is wrong with the night in force, or that none is though the store has some; None if all is well."""
+    from legworth.store import NightDamagedError
+    from legworth.store.advice import no_night_in_force
+
+    try:
+        missing = store.in_force() is None and bool(store.nights())
+    except NightDamagedError as error:
+        return str(error)
+    return str(no_night_in_force(store)) if missing else None
 
 
 @nights.command("hand-over", epilog=EXIT_CODES)
@@ -275,6 +297,7 @@ def hand_over(
     from legworth.progress import progress_bar
     from legworth.store.hand_over import FORMATS, HandOverOptions
     from legworth.store.hand_over import hand_over as handed_over
+    from network.counted import counted
 
     store = _store(context)
     night = _chosen(store, name)
@@ -285,7 +308,9 @@ def hand_over(
     if as_json:
         print_json({"night": night.name, "valid_from": instant.isoformat(), "folder": str(folder), "rows": rows})
         return
-    counts = " and ".join(f"{count:,} {table.replace('_', ' ')}" for table, count in rows.items())
+    counts = f"bid prices of {counted(rows['bid_prices'], 'leg')}"
+    if "price_curves" in rows:
+        counts += f" and {counted(rows['price_curves'], 'row of price curves', 'rows of price curves')}"
     click.echo(f"Night {night.name}: {counts} written to {folder}, valid from {instant.isoformat(timespec='seconds')}")
 
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from legworth.store.manifest import Check
 
-__all__ = ["CERTIFICATES", "TITLES", "check_line", "check_title", "figure_text", "outcome_word"]
+__all__ = ["CERTIFICATES", "TITLES", "check_line", "check_title", "figure_text", "finding", "outcome_word"]
 
 CERTIFICATES = "certificates"
 TITLES = {
@@ -45,9 +45,14 @@ def outcome_word(check: Check) -> str:
 
 def check_line(check: Check) -> str:
     """One line for people: what was found, the limit, and what to look at first."""
+    look = f"; look first at {'; '.join(check.look_at)}" if check.look_at and not check.passed else ""
+    return f"{finding(check)}{look}"
+
+
+def finding(check: Check) -> str:
+    """What was found, and the limit."""
     title = check_title(check)
     if check.found is None:
         return f"{title}: not compared, there is no last night"
     found, limit = (figure_text(check, figure) for figure in (check.found, check.limit or 0.0))
-    look = f"; look first at {'; '.join(check.look_at)}" if check.look_at and not check.passed else ""
-    return f"{title}: {found}, at most {limit} allowed{look}"
+    return f"{title}: {found}, at most {limit} allowed"

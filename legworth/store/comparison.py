@@ -25,15 +25,18 @@ class NightComparison:
     ----------
     before, after
         Names of the nights.
+    currency
+        Currency of both; None where neither says.
     legs
-        Legs that both have.
+        Legs that both have and that had not departed by the later snapshot.
     moved
-        Bid prices that moved: ``leg``, ``part``, ``before``, ``after``, ``difference`` (currency a seat),
+        Bid prices of these legs that moved: ``leg``, ``part``, ``before``, ``after``, ``difference`` (currency a seat),
         ``remaining_before``, ``remaining_after`` (seats); greatest move first.
     added
         Legs of the later night alone, sorted.
     departed, gone
-        Legs of the earlier night alone, sorted: those that left before the later snapshot, and the others.
+        Sorted: legs of the earlier night that departed by the later snapshot, whether the later night still has them
+        or not; and the other legs of the earlier night alone.
     parts
         Parts whose expected revenue both nights know.
     revenue_before, revenue_after
@@ -42,6 +45,7 @@ class NightComparison:
 
     before: str
     after: str
+    currency: str | None
     legs: int
     moved: pd.DataFrame
     added: tuple[str, ...]
@@ -56,6 +60,7 @@ class NightComparison:
         return {
             "before": self.before,
             "after": self.after,
+            "currency": self.currency,
             "legs_in_both": self.legs,
             "legs_moved": len(self.moved),
             "moved": self.moved.head(top).to_dict(orient="records"),
@@ -74,24 +79,32 @@ def compare_nights(before: Night, after: Night) -> NightComparison:
     Raises
     ------
     StoreError
-        If they are the same night, or one has no bid prices.
+        If they are the same night, of two currencies, or one has no bid prices.
     NightDamagedError
         If one cannot be read.
     """
     if before.name == after.name:
         raise StoreError(f"{before.name} is given twice; name two nights")
+    if before.currency and after.currency and before.currency != after.currency:
+        raise StoreError(
+            f"{before.name} is priced in {before.currency} and {after.name} in {after.currency}; "
+            "name two nights of one currency"
+        )
     old, new = _prices(before), _prices(after)
+    left = _left(before, after)
     both = old.merge(new, on="leg", suffixes=("_before", "_after"))
+    both = both[~both["leg"].isin(left)]
     price_before, price_after = both["bid_price_before"].to_numpy(), both["bid_price_after"].to_numpy()
     moves = price_after - price_before
     moved = np.abs(moves) > LIFTED * np.maximum(np.abs(price_before), np.abs(price_after))
     order = np.flatnonzero(moved)[np.argsort(-np.abs(moves[moved]), kind="stable")]
-    lost = old.loc[~old["leg"].isin(new["leg"]), "leg"]
-    departed = set(lost) & _left_by(before, after)
+    lost = set(old["leg"]) - set(new["leg"])
+    departed = set(old["leg"]) & left
     known = [part for part in sorted(set(before.parts()) & set(after.parts())) if _objectives(before, after, part)]
     return NightComparison(
         before=before.name,
         after=after.name,
+        currency=after.currency or before.currency,
         legs=len(both),
         moved=pd.DataFrame(
             {
@@ -108,7 +121,7 @@ def compare_nights(before: Night, after: Night) -> NightComparison:
         .reset_index(drop=True),
         added=tuple(sorted(new.loc[~new["leg"].isin(old["leg"]), "leg"])),
         departed=tuple(sorted(departed)),
-        gone=tuple(sorted(set(lost) - departed)),
+        gone=tuple(sorted(lost - departed)),
         parts=len(known),
         revenue_before=sum(_objective(before, part) for part in known) if known else None,
         revenue_after=sum(_objective(after, part) for part in known) if known else None,
@@ -120,13 +133,16 @@ def _prices(night: Night) -> pd.DataFrame:
     return frame.assign(leg=frame["leg"].astype("str"), part=frame["part"].astype("str"))
 
 
-def _left_by(night: Night, later: Night) -> set[str]:
-    """Legs of a night that had left at the snapshot of a later one; none where the night holds no legs."""
-    if "legs" not in night.manifest.rows:
-        return set()
-    legs = night.table("legs", ["leg", "departs"]).to_pandas()
-    departs = pd.to_datetime(legs["departs"], utc=True, format="ISO8601")
-    return set(legs.loc[departs <= later.manifest.as_of, "leg"].astype("str"))
+def _left(before: Night, after: Night) -> set[str]:
+    """Legs that had departed by the later of two snapshots, by the times of the second night, else of the first."""
+    departs: dict[str, pd.Timestamp] = {}
+    for night in (before, after):
+        if "legs" in night.manifest.rows:
+            legs = night.table("legs", ["leg", "departs"]).to_pandas()
+            instants = pd.to_datetime(legs["departs"], utc=True, format="ISO8601")
+            departs |= dict(zip(legs["leg"].astype("str"), instants, strict=True))
+    moment = max(before.manifest.as_of, after.manifest.as_of)
+    return {leg for leg, instant in departs.items() if instant <= moment}
 
 
 def _objective(night: Night, part: str) -> float:

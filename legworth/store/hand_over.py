@@ -13,7 +13,7 @@ import os
 import re
 import shutil
 from collections.abc import Callable, Iterable, Iterator, Sequence
-from contextlib import ExitStack
+from contextlib import ExitStack, contextmanager
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
@@ -93,7 +93,7 @@ class _HashedFile:
 
 def hand_over(
     night: Night,
-    folder: Path,
+    folder: Path | str,
     valid_from: datetime,
     options: HandOverOptions | None = None,
     progress: Callable[[int, int], None] | None = None,
@@ -123,9 +123,9 @@ def hand_over(
     StoreError
         If the night has no bid prices, the folder holds anything else, or the disk is full.
     NightDamagedError
-        If a table of the night cannot be read or is not as its schema declares it.
+        If a file of the night is not as it was published, or a table not as its schema declares it.
     """
-    options = options or HandOverOptions()
+    folder, options = Path(folder), options or HandOverOptions()
     tables = [table for table in TABLES if table in night.manifest.rows]
     if TABLES[0] not in tables:
         raise StoreError(f"night {night.name} has no bid prices to hand over")
@@ -200,19 +200,40 @@ def _layout(table: str) -> pa.Schema:
 
 def _chunks(night: Night, table: str, part: str) -> Iterator[pa.Table]:
     """Rows of one part, some at a time, with the columns declared; nothing where the part has no such table."""
-    path = f"{part_folder(part)}/{table}.parquet"
-    if path not in night.manifest.files:
-        return
     layout = _layout(table)
-    try:
-        # Parquet files carry no checksums of their own: one wrong bit would be handed over as a wrong price.
-        if file_digest(night.folder / path) != night.manifest.files[path].sha256:
-            raise NightDamagedError(f"{path} of night {night.name} has been changed since it was published")
-        with pq.ParquetFile(night.folder / path) as file:
+    with _sound_file(night, table, part) as file:
+        if file is not None:
             for batch in file.iter_batches(ROWS, columns=layout.names):
                 yield pa.Table.from_batches([batch]).select(layout.names).cast(layout)
+
+
+@contextmanager
+def _sound_file(night: Night, table: str, part: str) -> Iterator[pq.ParquetFile | None]:
+    """Open the file of a table once it is known to be the one that was published; None if the part has none.
+
+    Parquet files carry no checksums of their own: one wrong bit would be handed over as a wrong price.
+    """
+    path = f"{part_folder(part)}/{table}.parquet"
+    entry = night.manifest.files.get(path)
+    if entry is None:
+        yield None
+        return
+    try:
+        if file_digest(night.folder / path) != entry.sha256:
+            raise _damaged(night, f"{path} has been changed since it was published")
+        with pq.ParquetFile(night.folder / path) as file:
+            yield file
+    except FileNotFoundError:
+        raise _damaged(night, f"{path} is missing") from None
     except (OSError, KeyError, pa.ArrowInvalid) as error:
-        raise NightDamagedError(f"{path} of night {night.name} cannot be read ({error})") from error
+        raise _damaged(night, f"{path} cannot be read ({str(error).splitlines()[0]})") from error
+
+
+def _damaged(night: Night, what: str) -> NightDamagedError:
+    return NightDamagedError(
+        f"night {night.name} is damaged and not handed over: {what}; see what is sound with `legworth nights verify`, "
+        "and hand over a sound night with --night, or once `legworth nights restore` has put it in force"
+    )
 
 
 def _gathered(chunks: Iterable[pa.Table]) -> Iterator[pa.Table]:
@@ -273,7 +294,14 @@ def _writer(form: HandOverFormat, sink: _HashedFile, schema: pa.Schema, quoted: 
 
 def _needs_quotes(night: Night) -> bool:
     """Whether any leg has a name that CSV must put in quotes."""
-    names = night.table("bid_prices", ["leg"])["leg"].cast(pa.string())
+    return any(_has_odd_names(night, part) for part in night.parts())
+
+
+def _has_odd_names(night: Night, part: str) -> bool:
+    with _sound_file(night, TABLES[0], part) as file:
+        if file is None:
+            return False
+        names = file.read(columns=["leg"])["leg"].cast(pa.string())
     return bool(pyarrow.compute.any(pyarrow.compute.match_substring_regex(names, r'[",\r\n]')).as_py())
 
 

@@ -70,7 +70,7 @@ class HandOver:
                     yield from reader
 
 
-def read_hand_over(folder: Path) -> HandOver:
+def read_hand_over(folder: Path | str) -> HandOver:
     """Verify a hand-over and say what it holds.
 
     Every file must be there with its checksum, the list of checksums must be whole, and it must name the files that
@@ -81,6 +81,7 @@ def read_hand_over(folder: Path) -> HandOver:
     NightDamagedError
         If it is not whole.
     """
+    folder = Path(folder)
 
     def broken(why: str) -> NightDamagedError:
         return NightDamagedError(f"the hand-over in {folder} is not whole: {why}; copy it again")
@@ -101,11 +102,16 @@ def read_hand_over(folder: Path) -> HandOver:
                 found = file_digest(folder / path)
             except (FileNotFoundError, NotADirectoryError):
                 raise broken(f"{path} is missing") from None
+            except (ValueError, IsADirectoryError):
+                raise broken(f"{SUMS} names {path!r}, which is no file") from None
             if found != expected:
                 raise broken(f"{path} is cut short or changed")
-    note = json.loads((folder / NOTE).read_bytes())
-    if sorted(note["files"]) != sorted(set(sums) - {NOTE}):
+    try:
+        note = json.loads((folder / NOTE).read_bytes())
+        files = tuple(sorted(note["files"]))
+        found_here = HandOver(folder, note["night"], datetime.fromisoformat(note["valid_from"]), note["rows"], files)
+    except (ValueError, KeyError, TypeError, RecursionError):
+        raise broken(f"{NOTE} is not that of a hand-over") from None
+    if files != tuple(sorted(set(sums) - {NOTE})):
         raise broken(f"{SUMS} does not name the files that {NOTE} names")
-    return HandOver(
-        folder, note["night"], datetime.fromisoformat(note["valid_from"]), note["rows"], tuple(note["files"])
-    )
+    return found_here

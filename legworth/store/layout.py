@@ -31,22 +31,29 @@ def open_folder(path: Path, *, create: bool) -> None:
     except NotADirectoryError:
         raise StoreError(f"{path} is a file, not a store of nights; name another folder") from None
     except (ValueError, RecursionError):
-        raise StoreError(f"{path / MARKER} is damaged; put {_marker().decode().strip()} into it") from None
-    if not isinstance(found, dict) or found.get("layout") != LAYOUT:
-        raise StoreError(f"{path} is no store of layout {LAYOUT}; use the program that made it")
+        found = None
+    layout = found.get("layout") if isinstance(found, dict) else None
+    if not isinstance(layout, int) or isinstance(layout, bool):
+        raise StoreError(f"{path / MARKER} is damaged; put {_text()} into it")
+    if layout != LAYOUT:
+        raise StoreError(f"{path} has layout {layout}, and this program reads layout {LAYOUT}; use one that made it")
 
 
-def _marker() -> bytes:
-    return (json.dumps({"layout": LAYOUT}) + "\n").encode()
+def _text() -> str:
+    return json.dumps({"layout": LAYOUT})
 
 
 def _make(path: Path, *, create: bool) -> None:
+    there = {found.name for found in path.iterdir() if not found.name.endswith(".new")} if path.exists() else set()
+    strangers = sorted(there - set(ROOMS), key=lambda name: (name.startswith("."), name))
+    if strangers and ROOMS[0] in there:
+        mend = f"if it was one, put {_text()} into {path / MARKER}; else name another folder"
+        raise StoreError(f"{path} is no store of nights and holds {strangers[0]}; {mend}")
     if not create:
         raise StoreError(f"{path} is no store of nights; name one, or fill one with `legworth refresh`")
-    path.mkdir(parents=True, exist_ok=True)
-    strangers = sorted({found.name for found in path.iterdir() if not found.name.endswith(".new")} - set(ROOMS))
     if strangers:
         raise StoreError(f"{path} is no store of nights and holds {strangers[0]}; name an empty folder")
+    path.mkdir(parents=True, exist_ok=True)
     for room in ROOMS:
         (path / room).mkdir(exist_ok=True)
-    replace_file(path / MARKER, _marker())
+    replace_file(path / MARKER, f"{_text()}\n".encode())

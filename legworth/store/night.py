@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
+import json
+from collections.abc import Collection, Iterable, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from functools import cached_property
@@ -12,7 +13,7 @@ import pyarrow as pa
 
 from legworth.store.disk import digest, file_digest
 from legworth.store.manifest import Manifest, night_number
-from legworth.store.tables import part_names, read_parts
+from legworth.store.tables import part_folder, part_names, read_parts
 from network.errors import NightDamagedError, StoreError
 
 __all__ = ["MANIFEST", "Night", "sound_parts"]
@@ -56,13 +57,24 @@ class Night:
         try:
             data = (self.folder / MANIFEST).read_bytes()
         except OSError as error:
-            raise NightDamagedError(
-                f"night {self.name} has no readable manifest.json ({error.strerror}); "
-                "put another night in force with `legworth nights restore`"
-            ) from None
+            raise NightDamagedError(f"night {self.name} has no readable manifest.json ({error.strerror})") from None
         if self.expected is not None and digest(data) != self.expected:
             raise NightDamagedError(f"manifest.json of night {self.name} is not the one that was published")
         return Manifest.from_bytes(data, self.name)
+
+    @cached_property
+    def currency(self) -> str | None:
+        """Currency of its prices: by its manifest, by its summaries where an older manifest has none, else None."""
+        if self.manifest.currency is not None:
+            return self.manifest.currency
+        for part in self.parts():
+            try:
+                said = json.loads((self.folder / part_folder(part) / "summary.json").read_bytes()).get("currency")
+            except (OSError, ValueError, AttributeError, RecursionError):
+                continue
+            if isinstance(said, str):
+                return said
+        return None
 
     def parts(self) -> tuple[str, ...]:
         """Names of its parts, sorted."""
@@ -89,16 +101,27 @@ class Night:
         try:
             return read_parts(self.folder, name, columns, chosen)
         except (OSError, pa.ArrowInvalid) as error:
-            raise NightDamagedError(f"table {name} of night {self.name} cannot be read ({error})") from error
+            why = str(error).splitlines()[0]
+            raise NightDamagedError(
+                f"table {name} of night {self.name} cannot be read ({why}); look with `legworth nights verify`"
+            ) from error
 
-    def quick_faults(self) -> tuple[str, ...]:
-        """Say what a look at the manifest and at names and lengths of all files shows to be wrong."""
+    def quick_faults(self, tables: Collection[str] | None = None) -> tuple[str, ...]:
+        """Say what a look at the manifest and at names and lengths of files shows to be wrong.
+
+        Parameters
+        ----------
+        tables
+            Names of the tables to look at; all files if None.
+        """
         try:
             files = self.manifest.files
         except NightDamagedError as error:
             return (str(error),)
         faults = []
         for path, entry in files.items():
+            if tables is not None and path.rpartition("/")[2].rpartition(".")[0] not in tables:
+                continue
             try:
                 length = (self.folder / path).stat().st_size
             except OSError as error:

@@ -15,13 +15,14 @@ from typing import TYPE_CHECKING, Any
 import duckdb
 import pyarrow as pa
 
+from legworth.store.advice import no_night_in_force
 from legworth.store.night import Night
 from network.errors import NightDamagedError, StoreError
 
 if TYPE_CHECKING:
     from legworth.store.store import Store
 
-__all__ = ["connect", "query"]
+__all__ = ["connect", "damage_met", "query"]
 
 TONIGHT = "tonight_"
 NIGHTS = pa.schema(
@@ -111,6 +112,8 @@ def query(store: Store, statement: str) -> pa.Table:
     ------
     StoreError
         If the statement is no single SELECT, or DuckDB cannot answer it.
+    NightDamagedError
+        If that is because a night that it asks about is damaged.
     """
     with connect(store, re.findall(r"\w+", statement)) as connection:
         try:
@@ -119,7 +122,50 @@ def query(store: Store, statement: str) -> pa.Table:
                 raise StoreError("the store answers one SELECT statement at a time and is never changed by one")
             return connection.execute(statements[0]).to_arrow_table()
         except duckdb.Error as error:
-            raise StoreError(f"the query cannot be answered: {_line(error)}") from None
+            raise _no_answer(store, statement, error) from None
+
+
+def damage_met(store: Store, statement: str) -> tuple[str, ...]:
+    """Say which nights a statement leaves out, and which tables that it names have lost files or part of them.
+
+    One line a fault. What changed without changing its length is only found by reading it: see `Night.verify`.
+    """
+    tables = {word.removeprefix(TONIGHT) for word in re.findall(r"\w+", statement)}
+    lines = []
+    for night in store.nights():
+        faults = night.quick_faults(tables)
+        more = f" and {len(faults) - 1:,} more" if len(faults) > 1 else ""
+        if not _readable(night):
+            lines.append(f"night {night.name} is damaged and left out: {faults[0]}")
+        elif faults:
+            lines.append(f"night {night.name} is damaged: {faults[0]}{more}")
+    return tuple(lines)
+
+
+def _no_answer(store: Store, statement: str, error: duckdb.Error) -> StoreError:
+    """Say why a statement has no answer; damage comes before whatever else DuckDB says."""
+    if any(word.startswith(TONIGHT) for word in re.findall(r"\w+", statement)):
+        try:
+            if store.in_force() is None:
+                return no_night_in_force(store)
+        except NightDamagedError as damaged:
+            return damaged
+    if not isinstance(error, duckdb.ParserException | duckdb.BinderException | duckdb.CatalogException):
+        damage = damage_met(store, statement)
+        if damage:
+            mend = (
+                "see what is sound with `legworth nights verify`, and ask about sound nights alone (WHERE night = ...)"
+            )
+            return NightDamagedError(f"the query cannot be answered: {damage[0]}; {mend}")
+    return StoreError(f"the query cannot be answered: {_line(error)}{_perhaps_damaged(error)}")
+
+
+def _perhaps_damaged(error: duckdb.Error) -> str:
+    """Where to look when the fault may be that of a file."""
+    kinds = (duckdb.IOException, duckdb.InvalidInputException, duckdb.SerializationException, duckdb.InternalException)
+    if type(error) is not duckdb.Error and not isinstance(error, kinds):
+        return ""
+    return "; if the statement is right, a file may be damaged: look with `legworth nights verify`"
 
 
 def _make_view(connection: duckdb.DuckDBPyConnection, view: str, select: str) -> None:
@@ -130,7 +176,7 @@ def _make_view(connection: duckdb.DuckDBPyConnection, view: str, select: str) ->
 
 
 def _line(error: duckdb.Error) -> str:
-    return str(error).strip().splitlines()[0]
+    return str(error).strip().splitlines()[0].rstrip(": ")
 
 
 def _readable(night: Night) -> bool:
@@ -143,7 +189,8 @@ def _readable(night: Night) -> bool:
 def _select(table: str, nights: Iterable[Night]) -> str:
     """SELECT of a table over nights, one branch for nights whose columns are the same.
 
-    DuckDB looks at the first file for its types: that of the latest night, which is the least likely to be gone.
+    DuckDB looks at the first file for its types, whatever nights are asked about: that of the latest night that has
+    lost nothing of the table, which is the least likely to be gone.
     """
     columns: dict[str, None] = {}
     groups: dict[tuple[bool, tuple[tuple[str, str], ...]], list[Night]] = {}
@@ -156,7 +203,8 @@ def _select(table: str, nights: Iterable[Night]) -> str:
         known = dict(declared_pairs)
         chosen = [_name(column) if column in known else f"NULL AS {_name(column)}" for column in columns]
         files = ", ".join(
-            _text(f"{_plain(night.folder.resolve())}/part=*/{table}.parquet") for night in reversed(members)
+            _text(f"{_plain(night.folder.resolve())}/part=*/{table}.parquet")
+            for night in sorted(members, key=lambda night: (bool(night.quick_faults({table})), -night.number))
         )
         branches.append(
             f"SELECT {', '.join(['night', 'part', *chosen])} FROM read_parquet([{files}], "

@@ -14,6 +14,7 @@ from typing import TYPE_CHECKING
 
 import filelock
 
+from legworth.store.advice import absent_night
 from legworth.store.disk import digest, one_line_errors, replace_file, sync
 from legworth.store.history import IN_FORCE, HistoryEntry, append_entry, read_history
 from legworth.store.layout import ROOMS, open_folder
@@ -45,9 +46,9 @@ class Store:
         The folder.
     """
 
-    def __init__(self, path: Path) -> None:
-        self.path = path
-        self._lock = filelock.FileLock(path / "lock", timeout=0)
+    def __init__(self, path: Path | str) -> None:
+        self.path = Path(path)
+        self._lock = filelock.FileLock(self.path / "lock", timeout=0)
         self._open: Path | None = None
 
     @classmethod
@@ -172,12 +173,11 @@ class Store:
         Raises
         ------
         StoreError
-            If there is none; names those there are.
+            If there is none; says what became of it, or names those there are.
         """
         nights = {night.name: night for night in self.nights()}
         if name not in nights:
-            known = ", ".join(list(nights)[-10:]) or "none yet"
-            raise StoreError(f"{self.path} has no night {name!r}; its latest are: {known}")
+            raise absent_night(self, name)
         return nights[name]
 
     def restore(self, name: str, who: str, reason: str) -> Night:
@@ -299,7 +299,8 @@ class Store:
             return str(said["night"]), str(said["manifest"])
         except (ValueError, KeyError, TypeError, RecursionError):
             raise NightDamagedError(
-                f"{self.path / MARK} is damaged; say which night is in force with `legworth nights restore`"
+                f"{self.path / MARK} is damaged; see what is sound with `legworth nights verify`, "
+                "and say which night is in force with `legworth nights restore`"
             ) from None
 
     def _marked_name(self) -> str | None:
@@ -316,7 +317,10 @@ class Store:
         faults = night.quick_faults() if night_number(name) is not None else ("it has no such name",)
         if faults:
             more = f" and {len(faults) - 1:,} more" if len(faults) > 1 else ""
-            raise NightDamagedError(f"night {name}, which is in force, is damaged: {faults[0]}{more}")
+            raise NightDamagedError(
+                f"night {name}, which is in force, is damaged: {faults[0]}{more}; see what is sound with "
+                "`legworth nights verify`, and put a sound night in force with `legworth nights restore`"
+            )
         return night
 
     def _names(self, room: str) -> list[str]:

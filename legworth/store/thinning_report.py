@@ -8,6 +8,7 @@ from rich.table import Table
 
 from legworth.report import console_for_output
 from legworth.store.thinning import Thinning
+from network.counted import counted
 from network.store_settings import StoreSettings
 
 __all__ = ["print_thinning", "rule_words", "thinning_as_json"]
@@ -43,7 +44,7 @@ def print_thinning(plan: Thinning, rule: StoreSettings, freed: int, done: bool) 
         stays = name in plan.kept
         table.add_row(name, "yes" if stays else "no", plan.kept.get(name, ""))
     console.print(table, highlight=False)
-    count = f"{len(plan.gone):,} {'night' if len(plan.gone) == 1 else 'nights'}"
+    count = counted(len(plan.gone), "night")
     verdict = f"{count} removed, {freed / 1e6:,.1f} MB freed." if done else f"{count} would go, {freed / 1e6:,.1f} MB."
     console.print(f"Kept by the rule: {rule_words(rule)}.", highlight=False, soft_wrap=True)
     if plan.gone and not done:

@@ -5,10 +5,11 @@ Outside checks: ``sha256sum`` of GNU coreutils reads the list of checksums, pand
 
 from __future__ import annotations
 
+import hashlib
 import json
 import shutil
 import subprocess
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from datetime import UTC, datetime, timedelta, timezone
 from pathlib import Path
 
@@ -206,7 +207,7 @@ def test_a_damaged_night_is_not_handed_over(tmp_path: Path) -> None:
     other = parquet(pa.table({"leg": ["x"]}))
     changed = "has been changed since it was published"
     for data, why in (
-        (prices(PARTS[1], 1.0)[:-9], "cannot be read"),
+        (prices(PARTS[1], 1.0)[:-9], changed),
         (prices(PARTS[1], 1.01), changed),
         (other, changed),
     ):
@@ -214,9 +215,66 @@ def test_a_damaged_night_is_not_handed_over(tmp_path: Path) -> None:
         with pytest.raises(NightDamagedError, match=why):
             hand_over(night, tmp_path / "prices", INSTANT)
     path.unlink()
-    with pytest.raises(NightDamagedError, match="has lost"):
+    with pytest.raises(NightDamagedError, match=r"2030-03-02/bid_prices\.parquet is missing; see what is sound"):
         hand_over(night, tmp_path / "prices", INSTANT)
     assert read_hand_over(tmp_path / "prices").rows == {"bid_prices": 6}, "the earlier hand-over is still there"
+
+
+@examples(60)
+@given(data=st.data())
+def test_a_bit_that_flipped_in_any_file_of_prices_is_named_with_the_file(
+    night: Night, data: st.DataObject, tmp_path_factory: pytest.TempPathFactory
+) -> None:
+    name = data.draw(st.sampled_from(sorted(path for path in night.manifest.files if path.endswith(CARRIED))))
+    content = (night.folder / name).read_bytes()
+    place = data.draw(st.integers(0, len(content) - 1))
+    flipped = content[place] ^ (1 << data.draw(st.integers(0, 7)))
+    (night.folder / name).write_bytes(content[:place] + bytes([flipped]) + content[place + 1 :])
+    try:
+        with pytest.raises(NightDamagedError, match=f"{name} has been changed .*nights verify.*--night") as refused:
+            hand_over(night, tmp_path_factory.mktemp("flipped") / "prices", INSTANT, HandOverOptions(("csv",)))
+    finally:
+        (night.folder / name).write_bytes(content)
+    assert "\n" not in str(refused.value)
+
+
+CARRIED = ("/bid_prices.parquet", "/price_curves.parquet")
+
+
+def test_folders_are_named_by_text_or_path(night: Night, tmp_path: Path) -> None:
+    rows = hand_over(night, str(tmp_path / "prices"), INSTANT)
+    found = read_hand_over(str(tmp_path / "prices"))
+    assert found == read_hand_over(tmp_path / "prices")
+    assert found.rows == rows
+    assert sum(batch.num_rows for batch in found.batches("bid_prices")) == rows["bid_prices"]
+
+
+@pytest.mark.parametrize(
+    "spoil",
+    [
+        lambda path: path.unlink(),
+        lambda path: path.write_bytes(b""),
+        lambda path: path.write_bytes(b"\xff\xfe"),
+        lambda path: path.write_bytes(path.read_bytes().replace(b"bid_prices.csv", b"bid_prices\0csv")),
+        lambda path: path.write_bytes(path.read_bytes().replace(b"bid_prices.csv", b".")),
+    ],
+    ids=["missing", "empty", "no text", "a zero in a name", "a folder"],
+)
+def test_a_damaged_list_of_checksums_is_damage(night: Night, tmp_path: Path, spoil: Callable[[Path], object]) -> None:
+    hand_over(night, tmp_path / "prices", INSTANT)
+    spoil(tmp_path / "prices" / "SHA256SUMS")
+    with pytest.raises(NightDamagedError, match=r"is not whole: SHA256SUMS.*copy it again"):
+        read_hand_over(tmp_path / "prices")
+    with pytest.raises(NightDamagedError, match=r"is not whole: SHA256SUMS.* is missing"):
+        read_hand_over(tmp_path / "nowhere")
+
+
+@pytest.mark.parametrize("note", [b"{}", b"[]", b"?", b'{"night": "x", "valid_from": "soon", "rows": {}, "files": []}'])
+def test_a_note_that_is_none_is_damage(tmp_path: Path, note: bytes) -> None:
+    (tmp_path / "hand_over.json").write_bytes(note)
+    (tmp_path / "SHA256SUMS").write_text(f"{hashlib.sha256(note).hexdigest()}  hand_over.json\n")
+    with pytest.raises(NightDamagedError, match=r"hand_over\.json is not that of a hand-over"):
+        read_hand_over(tmp_path)
 
 
 def test_a_night_without_prices_is_not_handed_over(tmp_path: Path) -> None:

@@ -13,7 +13,7 @@ import pytest
 from legworth.store import Check, Forced, Store
 from tests.commands import Outcome, run
 from tests.folders import Folder
-from tests.legworth.store.small_nights import PARTS, publish, publish_priced
+from tests.legworth.store.small_nights import FIRST, PARTS, fill, manifest_of, publish, publish_priced
 
 
 @pytest.fixture
@@ -44,18 +44,23 @@ def test_list_shows_every_night_and_which_is_in_force(store: Store) -> None:
     damaged = nights(store, "list")
     assert damaged.code == 0
     assert "is damaged" in damaged.err
-    assert "damaged: " in damaged.out
+    assert "00002-2030-03-01 is damaged: " in damaged.out
     assert json.loads(nights(store, "list", "--json").out)["in_force"] is None
 
 
 def test_list_says_which_nights_a_check_stopped_and_where_to_look(store: Store) -> None:
-    assert "Stopped" not in nights(store, "list").out
+    assert "stopped" not in nights(store, "list").out
     for day in (5, 6):
         with store.begin(datetime(2030, 3, day, tzinfo=UTC)) as aside:
             path = aside.stop({"reasons": ["odd prices"]})
-    assert f"00004-2030-03-06 and 1 before it; what to look at first: {path}" in nights(store, "list").out
+    out = nights(store, "list").out
+    assert f"00004-2030-03-06 was stopped by a check and not published: odd prices; read {path}\n" in out
     document = json.loads(nights(store, "list", "--json").out)
-    assert document["stopped"] == [str(path.with_name("00003-2030-03-05.json")), str(path)]
+    assert [night["file"] for night in document["stopped"]] == [str(path.with_name("00003-2030-03-05.json")), str(path)]
+    assert document["stopped"][0]["reasons"] == ["odd prices"]
+    shown = nights(store, "show", "00003-2030-03-05")
+    assert shown.code == 2
+    assert f"was stopped by a check and not published (odd prices); read {path.parent}" in shown.err
 
 
 def test_show_has_checks_in_words_and_says_which_were_not_made(store: Store) -> None:
@@ -104,6 +109,7 @@ def test_compare_shows_moves_legs_and_revenue_like_for_like(store: Store) -> Non
     assert document["legs_in_both"] == document["legs_moved"] == 1
     assert document["moved"][0]["leg"] == "L4"
     assert document["moved"][0]["after"] == pytest.approx(1.5 * document["moved"][0]["before"])
+    assert document["currency"] is None, "these nights do not say"
     assert document["departed"] == [], "no leg leaves before the snapshot of 2030-03-01T02:30Z"
     assert document["gone"] == ["L1", "L2", "L3", "L5"]
     assert (document["revenue_before"], document["revenue_after"]) == (1000.0, 1500.0)
@@ -112,9 +118,53 @@ def test_compare_shows_moves_legs_and_revenue_like_for_like(store: Store) -> Non
     publish_priced(store, day=5, leave_out=("2030-03-01",))
     found = nights(store, "compare", "00001-2030-02-28", "--top", "1")
     assert found.code == 0
-    assert "3 legs departed: L1, L2, L3" in found.out
-    assert "0 of 2 legs that both have changed their bid price" in found.out
+    assert "3 legs departed by the later snapshot: L1, L2, L3" in found.out
+    assert "0 of 2 legs that both have and that were still to depart changed their bid price" in found.out
     assert "Revenue to come on the 2 parts that both have: 2,000 then, 2,000 now, +0" in found.out
+
+
+def test_a_leg_that_departed_meanwhile_is_no_move(store: Store) -> None:
+    publish_priced(store, day=5, factor=3.0)
+    document = json.loads(nights(store, "compare", "00001-2030-02-28", "--json").out)
+    assert document["departed"] == ["L1", "L2", "L3"], "the snapshot is of 2030-03-02T02:30Z, and both nights have them"
+    assert [move["leg"] for move in document["moved"]] in (["L4", "L5"], ["L5", "L4"])
+    assert document["legs_in_both"] == 2
+    assert document["gone"] == document["added"] == []
+    back = json.loads(nights(store, "compare", "00003-2030-03-02", "00001-2030-02-28", "--json").out)
+    assert (back["departed"], back["legs_moved"]) == (document["departed"], 2)
+    shown = nights(store, "compare", "00001-2030-02-28").out
+    assert "3 legs departed by the later snapshot: L1, L2, L3" in shown
+    assert "The 2 greatest moves" in shown
+
+
+def test_money_is_in_the_currency_of_the_night(tmp_path: Path) -> None:
+    store = Store.open(tmp_path / "store", create=True)
+    older = publish(store, 1.0)
+    assert older.currency is None
+    new, later = (publish(store, price, currency="SEK", network="Coaches") for price in (2.0, 3.0))
+    other = publish(store, 2.0, currency="NOK")
+    assert "Revenue to come  200 SEK, by" in nights(store, "show", new.name).out
+    compared = nights(store, "compare", new.name, later.name).out
+    assert "200 SEK then, 200 SEK now, +0" in compared
+    assert "moves (SEK a seat)" in compared
+    assert json.loads(nights(store, "compare", older.name, later.name, "--json").out)["currency"] == "SEK"
+    refused = nights(store, "compare", new.name, other.name)
+    assert refused.code == 2
+    assert f"{new.name} is priced in SEK and {other.name} in NOK; name two nights of one currency" in refused.err
+    document = json.loads(nights(store, "list", "--json").out)
+    assert [night["currency"] for night in document["nights"]] == [None, "SEK", "SEK", "NOK"]
+    assert "Nights (revenue in NOK, SEK)" in nights(store, "list").out
+
+
+def test_the_currency_of_an_older_night_is_that_of_its_summaries(tmp_path: Path) -> None:
+    store = Store.open(tmp_path / "store", create=True)
+    with store.begin(FIRST) as aside:
+        fill(aside, 1.0)
+        aside.write(f"part={PARTS[0]}/summary.json", b"[]")
+        aside.write(f"part={PARTS[1]}/summary.json", b'{"currency": "GBP"}')
+        night = aside.publish(manifest_of(aside, FIRST))
+    assert night.manifest.currency is None
+    assert night.currency == "GBP"
 
 
 def test_restore_needs_a_reason_and_says_who(store: Store) -> None:
@@ -156,15 +206,41 @@ def test_verify_ends_with_2_where_anything_is_damaged(store: Store) -> None:
     assert document["ok"] is False
     assert len(document["nights"]["00001-2030-02-28"]) == 1
     assert nights(store, "verify", "00002-2030-03-01").code == 0
-    (store.path / "in_force").write_text("?")
-    assert nights(store, "verify").code == 2
+    only = nights(store, "verify", "00001-2030-02-28")
+    assert only.out.endswith("1 night verified, 1 damaged\n")
+
+
+@pytest.mark.parametrize("mark", ["?", None])
+def test_verify_gives_the_verdict_of_all_nights_before_the_fault_of_in_force(store: Store, mark: str | None) -> None:
+    path = store.nights()[0].folder / "part=2030-03-01" / "legs.parquet"
+    path.write_bytes(path.read_bytes()[:-1] + b"?")
+    (store.path / "in_force").unlink()
+    why = "no night is in force in"
+    if mark is not None:
+        (store.path / "in_force").write_text(mark)
+        why = "in_force is damaged; see what is sound with"
+    found = nights(store, "verify")
+    assert found.code == 2
+    assert "00001-2030-02-28: part=2030-03-01/legs.parquet has been changed" in found.out
+    assert found.out.endswith("2 nights verified, 1 damaged\n")
+    assert why in found.err
+    assert "legworth nights" in found.err
+    document = json.loads(nights(store, "verify", "--json").out)
+    assert document["ok"] is False
+    assert document["nights"]["00002-2030-03-01"] == []
+    assert why in document["in_force_fault"]
+    path.write_bytes(path.read_bytes())
+    sound = store.nights()[1]
+    assert nights(store, "restore", sound.name, "--reason", "in_force was lost").code == 0
+    assert json.loads(nights(store, "verify", "--json").out)["in_force_fault"] is None
 
 
 def test_hand_over_is_valid_from_the_instant_of_publication_or_restoring(store: Store, tmp_path: Path) -> None:
     folder = tmp_path / "prices"
     done = nights(store, "hand-over", "--to", str(folder))
     assert done.code == 0
-    assert "1 bid prices and " in done.out
+    curves = store.nights()[1].manifest.rows["price_curves"]
+    assert f": bid prices of 1 leg and {curves:,} rows of price curves written to {folder}, valid from " in done.out
     note = json.loads((folder / "hand_over.json").read_text())
     assert note["night"] == "00002-2030-03-01"
     assert note["valid_from"][:16] == store.history()[-1].at.isoformat()[:16]
@@ -216,6 +292,32 @@ def test_an_empty_store_has_no_night_in_force(tmp_path: Path) -> None:
     assert refused.code == 2
     assert "is given twice" in refused.err
     assert set(store.nights()[0].parts()) == set(PARTS)
+
+
+@pytest.mark.parametrize("command", [("show",), ("hand-over", "--to", "prices"), ("compare", "00001-2030-02-28")])
+def test_where_in_force_is_missing_the_way_back_is_told(
+    store: Store, command: tuple[str, ...], tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.chdir(tmp_path)
+    store.restore("00001-2030-02-28", "desk", "last in force")
+    (store.path / "in_force").unlink()
+    told = f"legworth nights --store {store.path} restore"
+    assert f"put the one last in force back with `{told} 00001-2030-02-28 --reason WHY`" in nights(store, *command).err
+    (store.nights()[0].folder / "changes.html").write_text("")
+    (store.nights()[0].folder / "part=2030-03-01" / "legs.parquet").unlink()
+    refused = nights(store, *command)
+    assert refused.code == 2
+    assert f"put the newest sound one back with `{told} 00002-2030-03-01 --reason WHY`" in refused.err
+    (store.nights()[1].folder / "manifest.json").unlink()
+    assert "none of them is sound; restore one from a backup" in nights(store, *command).err
+    assert not (tmp_path / "prices").exists()
+
+
+def test_a_query_says_which_damaged_nights_it_leaves_out(store: Store) -> None:
+    (store.nights()[0].folder / "manifest.json").write_text("{")
+    found = nights(store, "query", "SELECT count(*) AS n FROM bid_prices", "--json")
+    assert json.loads(found.out)["rows"] == [{"n": 1}]
+    assert "night 00001-2030-02-28 is damaged and left out: " in found.err
 
 
 def test_thin_only_looks_until_it_is_told_to_remove(tmp_path: Path) -> None:

@@ -9,8 +9,8 @@ from pathlib import Path
 import pyarrow as pa
 import pytest
 
-from legworth.store import Store, StoreError
-from legworth.store.sql import query
+from legworth.store import NightDamagedError, Store, StoreError
+from legworth.store.sql import damage_met, query
 from tests.legworth.store.small_nights import FIRST, PARTS, fill, manifest_of, parquet, publish, publish_priced
 
 DOCUMENT = (Path(__file__).parents[3] / "docs" / "store.md").read_text(encoding="utf-8")
@@ -159,8 +159,58 @@ def test_damaged_nights_are_passed_over(store: Store) -> None:
         "night": [first.name],
         "in_force": [False],
     }
-    with pytest.raises(StoreError, match="tonight_bid_prices does not exist"):
+    (line,) = damage_met(store, "SELECT 1")
+    assert line.startswith(f"night {second.name} is damaged and left out: manifest.json ")
+    with pytest.raises(NightDamagedError, match=f"{second.name}, which is in force, is damaged: .*nights verify"):
         query(store, "SELECT * FROM tonight_bid_prices")
+
+
+def test_damage_in_the_way_of_an_answer_is_named_before_what_duckdb_says(store: Store) -> None:
+    first, second = publish(store, 1.0), publish(store, 2.0, day=1)
+    path = f"part={PARTS[0]}/bid_prices.parquet"
+    content = (second.folder / path).read_bytes()
+    (second.folder / path).write_bytes(content[:50])
+    cut = rf"{path} has 50 bytes, not {len(content):,}"
+    with pytest.raises(
+        NightDamagedError, match=f"{second.name}, which is in force, is damaged: {cut}; .*nights verify"
+    ):
+        query(store, "SELECT bid_price FROM tonight_bid_prices")
+    with pytest.raises(NightDamagedError, match=f"answered: night {second.name} is damaged: {cut}; .*nights verify"):
+        query(store, "SELECT sum(bid_price) FROM bid_prices")
+    sound = f"SELECT sum(bid_price) AS total FROM bid_prices WHERE night = '{first.name}'"
+    assert query(store, sound).to_pydict() == {"total": [6.0]}
+    assert damage_met(store, sound) == (f"night {second.name} is damaged: {path} has 50 bytes, not {len(content):,}",)
+    assert damage_met(store, "SELECT * FROM nights") == (), "only tables that the statement names"
+    with pytest.raises(StoreError, match=r"answered: .*nothing") as wrong:
+        query(store, "SELECT nothing FROM bid_prices")
+    assert "verify" not in str(wrong.value), "a fault of the statement is not laid on the files"
+
+
+def test_a_lost_file_is_remarked_on_where_its_rows_are_lacking(store: Store) -> None:
+    first, _ = publish(store, 1.0), publish(store, 2.0, day=1)
+    (first.folder / f"part={PARTS[0]}" / "bid_prices.parquet").unlink()
+    ask = "SELECT count(*) AS rows FROM bid_prices"
+    assert query(store, ask).to_pydict() == {"rows": [9]}
+    (line,) = damage_met(store, ask)
+    assert f"night {first.name} is damaged: part={PARTS[0]}/bid_prices.parquet is missing" in line
+
+
+def test_a_file_that_changed_without_its_length_is_looked_for_with_verify(store: Store) -> None:
+    night = publish(store, 1.0)
+    path = night.folder / f"part={PARTS[0]}" / "bid_prices.parquet"
+    path.write_bytes(b"PAR1" + b"\xff" * (path.stat().st_size - 8) + b"PAR1")
+    with pytest.raises(StoreError, match="look with `legworth nights verify`"):
+        query(store, "SELECT sum(bid_price) FROM bid_prices")
+
+
+def test_tonight_is_missed_where_no_night_is_in_force(store: Store) -> None:
+    ask = "SELECT * FROM tonight_bid_prices"
+    with pytest.raises(StoreError, match=r"no night is in force in .*; run `legworth refresh`"):
+        query(store, ask)
+    night = publish(store, 1.0)
+    (store.path / "in_force").unlink()
+    with pytest.raises(NightDamagedError, match=f"no night is in force .* restore {night.name} --reason WHY"):
+        query(store, ask)
 
 
 def test_an_empty_store_answers(store: Store) -> None:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import re
 from datetime import datetime, timedelta
 from pathlib import Path
 from typing import Any
@@ -279,9 +280,11 @@ def test_what_is_no_store_is_said_to_be_none(tmp_path: Path) -> None:
     (tmp_path / "full" / "letters").write_text("")
     (tmp_path / "newer").mkdir()
     (tmp_path / "newer" / "store.json").write_text('{"layout": 99}')
-    (tmp_path / "damaged").mkdir()
-    (tmp_path / "damaged" / "store.json").write_text("[[")
-    for name, why in (("file", "is a file"), ("full", "holds letters"), ("newer", "layout"), ("damaged", "is damaged")):
+    for name, why in (
+        ("file", "is a file"),
+        ("full", "holds letters; name an empty folder"),
+        ("newer", "newer has layout 99, and this program reads layout 1; use one that made it"),
+    ):
         with pytest.raises(SettingError, match=why):
             Store.open(tmp_path / name, create=True)
     (tmp_path / "interrupted").mkdir()
@@ -289,6 +292,24 @@ def test_what_is_no_store_is_said_to_be_none(tmp_path: Path) -> None:
     (tmp_path / "interrupted" / "store.json.12.new").write_text("")
     publish(Store.open(tmp_path / "interrupted", create=True))
     assert not list((tmp_path / "interrupted").glob("*.new"))
+
+
+@pytest.mark.parametrize("create", [True, False])
+@pytest.mark.parametrize("marker", ["", "[[", "{}", "[]", "1", "null", '{"layout": null}', '{"layout": true}', None])
+def test_a_damaged_marker_is_mended_as_the_message_says(store: Store, marker: str | None, create: bool) -> None:
+    night = publish(store)
+    path = store.path / "store.json"
+    path.unlink()
+    why = rf"no store of nights and holds history\.jsonl; if it was one, put ({{.*}}) into {re.escape(str(path))};"
+    if marker is not None:
+        path.write_text(marker)
+        why = r"store\.json is damaged; put (\{.*\}) into it"
+    with pytest.raises(StoreError, match=why) as refused:
+        Store.open(store.path, create=create)
+    mend = re.search(why, str(refused.value))
+    assert mend is not None
+    path.write_text(mend[1])
+    assert Store.open(str(store.path)).in_force() == night
 
 
 def test_a_torn_line_of_the_history_spoils_no_other(store: Store) -> None:
