@@ -19,7 +19,16 @@ if TYPE_CHECKING:
     from legworth.pricing import PricedNetwork, PricingOptions
     from network import Fault
 
-__all__ = ["AS_JSON", "EXIT_CODES", "FOLDER", "priced_folder", "pricing_from", "pricing_options", "print_json"]
+__all__ = [
+    "AS_JSON",
+    "EXIT_CODES",
+    "FOLDER",
+    "priced_folder",
+    "pricing_from",
+    "pricing_options",
+    "print_json",
+    "print_warnings",
+]
 
 EXIT_CODES = """\b
 Exit codes:

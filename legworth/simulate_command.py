@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from legworth.option_types import MOST_MONEY, Figure
-from legworth.options import AS_JSON, EXIT_CODES, FOLDER, print_json
+from legworth.options import AS_JSON, EXIT_CODES, FOLDER, print_json, print_warnings
 
 if TYPE_CHECKING:
     from legworth.simulation import Simulation, SimulationOptions
@@ -91,7 +91,9 @@ def simulate(folder: Path, out: Path, *, stress: bool, as_json: bool, **how: Any
     from network import read_folder
 
     options = _options(how)
-    network = read_folder(folder).network
+    read = read_folder(folder)
+    print_warnings(read.warnings)
+    network = read.network
     with progress_bar("Playing paths") as progress:
         found = simulated(
             network, options, progress=lambda done, total: progress(round(1000 * done), round(1000 * total))
