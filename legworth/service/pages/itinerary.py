@@ -194,5 +194,13 @@ async def pair(
         left = min(planner.left[str(network.legs.name[leg])] for leg in part.path(at))
         lines.append((row, price, sold, left))
     return await planner.page(
-        "pair.html", origin=from_, destination=to, dates=dates, date=chosen, n=n, lines=lines, most=MOST_OF_PAIR
+        "pair.html",
+        origin=from_,
+        destination=to,
+        dates=dates,
+        date=chosen,
+        asked=date,
+        n=n,
+        lines=lines,
+        most=MOST_OF_PAIR,
     )

@@ -18,7 +18,7 @@ from legworth.service.looking import health_of
 from legworth.service.pages.files import file_address
 from legworth.service.pages.leg_figures import days_text
 
-__all__ = ["address", "age", "html", "instant_text"]
+__all__ = ["address", "age", "html", "instant_text", "sentence"]
 
 
 def address(path: str, **query: Any) -> str:
@@ -39,6 +39,17 @@ def age(seconds: float) -> str:
 def instant_text(text: str) -> str:
     """An ISO 8601 instant for people: local date, time and offset."""
     return f"{text[:10]} {text[11:16]}"
+
+
+def sentence(text: str) -> str:
+    """Words as a sentence, with a capital at its beginning and a full stop at its end.
+
+    Examples
+    --------
+    >>> sentence("later nights"), sentence("Why not?")
+    ('Later nights.', 'Why not?')
+    """
+    return f"{text[:1].upper()}{text[1:]}{'' if text.endswith(('.', '!', '?')) else '.'}"
 
 
 def html(request: Request, template: str, *, status: int = 200, **model: Any) -> Response:
@@ -75,6 +86,6 @@ def html(request: Request, template: str, *, status: int = 200, **model: Any) ->
 @cache
 def _templates() -> Environment:
     environment = page_templates("legworth.service.pages")
-    environment.filters.update(money=money, price=price_text, instant=instant_text, days=days_text)
+    environment.filters.update(money=money, price=price_text, instant=instant_text, days=days_text, sentence=sentence)
     environment.globals.update(to=address, file=file_address)
     return environment

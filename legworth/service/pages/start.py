@@ -3,23 +3,20 @@
 from __future__ import annotations
 
 import asyncio
-import json
-from collections.abc import Sequence
 from typing import Annotated, Any
 
 from fastapi import Query, Request
 from starlette.responses import JSONResponse, RedirectResponse, Response
 
-from legworth.refresh.checks import check_line
 from legworth.service.interface import state_of
 from legworth.service.pages.changes_file import read_changes
 from legworth.service.pages.night_index import NightIndex, Row
 from legworth.service.pages.rendering import address
 from legworth.service.pages.routes import page_router, planner_of
+from legworth.service.pages.standing import alerts_of
 from legworth.store import Store
-from legworth.store.manifest import Check, night_number
 
-__all__ = ["check_lines", "pages"]
+__all__ = ["pages"]
 
 FIRST = 6
 MOST_FOUND = 60
@@ -27,11 +24,6 @@ MOST_SUGGESTED = 12
 
 pages = page_router()
 Words = Annotated[str, Query(max_length=200)]
-
-
-def check_lines(checks: Sequence[Check]) -> list[tuple[bool, str]]:
-    """Every check in one line, failed ones first, and whether it passed."""
-    return sorted(((check.passed, check_line(check)) for check in checks), key=lambda line: line[0])
 
 
 @pages.get("/")
@@ -45,13 +37,11 @@ async def start(request: Request) -> Response:
 def _first(index: NightIndex, store: Store) -> dict[str, Any]:
     manifest = index.night.manifest
     changes = read_changes(index.night)
-    checks = check_lines(manifest.checks)
     total = index.one("SELECT count(*) AS products, coalesce(sum(at_stake), 0) AS money FROM disagreements")
     return {
         "manifest": manifest,
-        "failed": [line for passed, line in checks if not passed],
-        "checks": len(checks),
-        "stopped": _stopped(store, index.night.number),
+        "failed": sum(not check.passed for check in manifest.checks),
+        "alerts": alerts_of(store, index.night),
         "moves": changes.prices.moves[:FIRST] if changes.prices is not None else [],
         "moves_unread": "prices" in changes.unread,
         "total": total,
@@ -64,21 +54,6 @@ def _first(index: NightIndex, store: Store) -> dict[str, Any]:
             "SELECT count(*) AS legs, count(DISTINCT date) AS dates, min(date) AS first, max(date) AS last FROM legs"
         ),
     }
-
-
-def _stopped(store: Store, number: int) -> list[tuple[str, list[str]]]:
-    """Nights after the one in force that a check stopped, and why."""
-    found = []
-    for path in sorted((store.path / "stopped").glob("*.json")):
-        if (night_number(path.stem) or 0) <= number:
-            continue
-        try:
-            said = json.loads(path.read_bytes())
-            reasons = [str(reason) for reason in said.get("reasons", [])]
-        except (OSError, ValueError, AttributeError):
-            reasons = ["its record cannot be read"]
-        found.append((path.stem, reasons))
-    return found
 
 
 @pages.get("/search")
