@@ -8,6 +8,7 @@ import io
 import re
 from dataclasses import dataclass, field
 from functools import cached_property
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -17,7 +18,7 @@ from network.counted import counted
 from network.faults import Faults
 from network.schema import TableSchema
 
-__all__ = ["LONGEST_LINE", "CsvText", "Records", "check_columns", "open_csv"]
+__all__ = ["LONGEST_LINE", "CsvText", "Records", "check_columns", "open_csv", "read_csv_text"]
 
 LONGEST_LINE = 100_000
 """Bytes that one line may hold; anything longer is taken for a file that is not a table."""
@@ -104,6 +105,16 @@ class CsvText:
 def csv_reader(data: bytes) -> Any:
     """Reader of CSV text in UTF-8 that refuses quotes which do not close."""
     return csv.reader(io.TextIOWrapper(io.BytesIO(data), encoding="utf-8", newline=""), strict=True)
+
+
+def read_csv_text(path: Path, schema: TableSchema, faults: Faults) -> CsvText | None:
+    """Read a CSV file and check its text and header; note the faults and return None if it cannot be read or used."""
+    try:
+        data = path.read_bytes()
+    except OSError as error:
+        faults.add(path.name, 0, "", f"cannot be read ({error.strerror}); correct its permissions or give it anew")
+        return None
+    return open_csv(path.name, data, schema, faults)
 
 
 def open_csv(file: str, data: bytes, schema: TableSchema, faults: Faults) -> CsvText | None:

@@ -17,7 +17,7 @@ import pyarrow.csv
 import pyarrow.parquet
 
 from network.cells import RawTable, TableData, typed_table
-from network.csv_text import CsvText, check_columns, open_csv
+from network.csv_text import CsvText, check_columns, read_csv_text
 from network.faults import Faults
 from network.schema import Column, TableSchema
 
@@ -84,12 +84,7 @@ def _locate(folder: Path, schema: TableSchema, faults: Faults) -> Path | None:
 
 
 def _read_csv(path: Path, schema: TableSchema, faults: Faults) -> RawTable | None:
-    try:
-        data = path.read_bytes()
-    except OSError as error:
-        faults.add(path.name, 0, "", f"cannot be read ({error.strerror}); correct its permissions or give it anew")
-        return None
-    text = open_csv(path.name, data, schema, faults)
+    text = read_csv_text(path, schema, faults)
     if text is None:
         return None
     table = None if text.doubtful(schema) else _parse_typed(text, schema)

@@ -24,7 +24,7 @@ from legworth.estimation.history_checks import check_sequences, snapshot_day
 from legworth.estimation.readings import Readings
 from network import Fault, InputError
 from network.arrays import BoolArray, NameArray
-from network.csv_text import CsvText, check_columns, open_csv
+from network.csv_text import CsvText, check_columns, read_csv_text
 from network.faults import Faults
 from network.schema import TableSchema, table_schema
 
@@ -109,17 +109,12 @@ def read_history(
 
 
 def _read_csv(path: Path, schema: TableSchema, faults: Faults) -> RawColumns | None:
-    try:
-        data = path.read_bytes()
-    except OSError as error:
-        faults.add(path.name, 0, "", f"cannot be read ({error.strerror}); correct its permissions or give it anew")
-        return None
-    text = open_csv(path.name, data, schema, faults)
+    text = read_csv_text(path, schema, faults)
     if text is None:
         return None
     doubtful = text.doubtful(schema)
     table = None if doubtful else _parse(text, schema, typed=True)
-    if doubtful and b'"' in data:
+    if doubtful and b'"' in text.data:
         return _read_records(text, faults)
     skipped: list[int] = []
     if table is None:
