@@ -12,6 +12,9 @@ from legworth.store.check_words import check_line
 
 __all__ = ["Line", "first_lines"]
 
+REPORT = "changes"
+"""Phase of the run that writes this report."""
+
 
 @dataclass(frozen=True)
 class Line:
@@ -44,7 +47,8 @@ def _run(changes: Changes) -> Line:
         return Line("Run", f"{count_of(len(run.failed), 'check')} failed. {failed}.", alert=True)
     checks = f"{count_of(len(run.checks), 'check')} held" if run.checks else "no checks were made"
     note = f" {changes.note}" if changes.note else ""
-    time = f", in {duration(sum(run.seconds.values()))}" if run.seconds else ""
+    before = [spent for phase, spent in run.seconds.items() if phase != REPORT]
+    time = f", in {duration(sum(before))} before this report was begun" if before else ""
     return Line(
         "Run",
         f"All {count_of(run.parts, 'part')} are certified and {checks}; {run.solved:,} solved, "

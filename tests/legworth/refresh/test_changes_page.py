@@ -200,3 +200,11 @@ def test_durations(seconds: float, text: str) -> None:
 @pytest.mark.parametrize(("value", "text"), [(1234.567, "+1,234.57"), (-0.004, "0.00"), (-2.5, "-2.50")])
 def test_signs(value: float, text: str) -> None:
     assert signed(value) == text
+
+
+def test_seconds_of_the_run_are_those_before_the_report(mixed: Changes) -> None:
+    assert mixed.run is not None
+    for seconds in ({"read": 0.5, "parts": 2.0}, {"read": 0.5, "parts": 2.0, "changes": 40.0}):
+        run = replace(mixed.run, seconds=seconds, checks=(), forced=None)
+        (line,) = [line for line in first_lines(replace(mixed, run=run)) if line.topic == "Run"]
+        assert ", in 2.5 s before this report was begun." in line.text
