@@ -205,8 +205,9 @@ def query(context: click.Context, sql: str, form: str, rows: int, *, as_json: bo
     from legworth.store.sql import query as answered
 
     store = _store(context)
-    answer = answered(store, sql)
-    for line in damage_met(store, sql):
+    known = store.nights()
+    answer = answered(store, sql, known)
+    for line in damage_met(known, sql):
         click.echo(f"{line}; look with `legworth nights verify`", err=True)
     if as_json or form == "json":
         print_json(rows_as_json(answer))

@@ -7,7 +7,7 @@ others. The connection reads the files of nights and nothing else, and writes no
 from __future__ import annotations
 
 import re
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from datetime import UTC
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -60,7 +60,9 @@ PARTS = pa.schema(
 )
 
 
-def connect(store: Store, tables: Iterable[str] | None = None) -> duckdb.DuckDBPyConnection:
+def connect(
+    store: Store, tables: Iterable[str] | None = None, nights: Sequence[Night] | None = None
+) -> duckdb.DuckDBPyConnection:
     """Open a connection with these views.
 
     - one per table, over all nights that have a readable manifest: ``night``, ``part``, then the table's columns;
@@ -73,13 +75,15 @@ def connect(store: Store, tables: Iterable[str] | None = None) -> duckdb.DuckDBP
         The store; the connection knows the nights that it holds now.
     tables
         Names of the views to make, all if None; names unknown are passed over. Each takes a moment in a large store.
+    nights
+        Its nights, where the caller holds them already.
 
     Raises
     ------
     StoreError
         If the store cannot be read.
     """
-    nights = [night for night in store.nights() if _readable(night)]
+    nights = [night for night in (store.nights() if nights is None else nights) if _readable(night)]
     try:
         mark = store.in_force()
     except NightDamagedError:
@@ -105,8 +109,8 @@ def connect(store: Store, tables: Iterable[str] | None = None) -> duckdb.DuckDBP
     return connection
 
 
-def query(store: Store, statement: str) -> pa.Table:
-    """Answer one SELECT on the views of `connect`.
+def query(store: Store, statement: str, nights: Sequence[Night] | None = None) -> pa.Table:
+    """Answer one SELECT on the views of `connect`, which takes the nights likewise.
 
     Raises
     ------
@@ -115,24 +119,25 @@ def query(store: Store, statement: str) -> pa.Table:
     NightDamagedError
         If that is because a night that it asks about is damaged.
     """
-    with connect(store, re.findall(r"\w+", statement)) as connection:
+    nights = store.nights() if nights is None else nights
+    with connect(store, re.findall(r"\w+", statement), nights) as connection:
         try:
             statements = connection.extract_statements(statement)
             if len(statements) != 1 or statements[0].type != duckdb.StatementType.SELECT:
                 raise StoreError("the store answers one SELECT statement at a time and is never changed by one")
             return connection.execute(statements[0]).to_arrow_table()
         except duckdb.Error as error:
-            raise _no_answer(store, statement, error) from None
+            raise _no_answer(store, statement, nights, error) from None
 
 
-def damage_met(store: Store, statement: str) -> tuple[str, ...]:
+def damage_met(nights: Iterable[Night], statement: str) -> tuple[str, ...]:
     """Say which nights a statement leaves out, and which tables that it names have lost files or part of them.
 
     One line a fault. What changed without changing its length is only found by reading it: see `Night.verify`.
     """
     tables = {word.removeprefix(TONIGHT) for word in re.findall(r"\w+", statement)}
     lines = []
-    for night in store.nights():
+    for night in nights:
         faults = night.quick_faults(tables)
         more = f" and {len(faults) - 1:,} more" if len(faults) > 1 else ""
         if not _readable(night):
@@ -142,7 +147,7 @@ def damage_met(store: Store, statement: str) -> tuple[str, ...]:
     return tuple(lines)
 
 
-def _no_answer(store: Store, statement: str, error: duckdb.Error) -> StoreError:
+def _no_answer(store: Store, statement: str, nights: Iterable[Night], error: duckdb.Error) -> StoreError:
     """Say why a statement has no answer; damage comes before whatever else DuckDB says."""
     if any(word.startswith(TONIGHT) for word in re.findall(r"\w+", statement)):
         try:
@@ -151,7 +156,7 @@ def _no_answer(store: Store, statement: str, error: duckdb.Error) -> StoreError:
         except NightDamagedError as damaged:
             return damaged
     if not isinstance(error, duckdb.ParserException | duckdb.BinderException | duckdb.CatalogException):
-        damage = damage_met(store, statement)
+        damage = damage_met(nights, statement)
         if damage:
             mend = (
                 "see what is sound with `legworth nights verify`, and ask about sound nights alone (WHERE night = ...)"

@@ -12,7 +12,7 @@ from pathlib import Path
 
 import pytest
 
-from legworth.store import Store
+from legworth.store import Store, StoreError
 from tests.commands import run
 from tests.folders import Folder
 from tests.legworth.store.small_nights import FIRST, publish_priced
@@ -77,6 +77,32 @@ def test_the_document_has_examples_of_both_kinds() -> None:
         "restore",
         "hand-over",
     }
+
+
+def test_messages_about_the_marker_are_those_that_the_night_desk_looks_up(tmp_path: Path) -> None:
+    table = (Path(__file__).parents[3] / "docs" / "reliability.md").read_text(encoding="utf-8")
+    rows = [line.split(" | ") for line in table.splitlines() if line.startswith("| 2 | ")]
+    patterns = {
+        re.escape(text).replace(r"\.\.\.", ".*").replace("STORE", ".*").replace(r"\ N,", r"\ \d+,"): row[3]
+        for row in rows
+        for text in re.findall("`([^`]+)`", row[1])
+    }
+    lost = Store.open(tmp_path / "lost", create=True).path
+    (lost / "store.json").unlink()
+    (lost / "in_force").touch()
+    for name, marker in (("damaged", "{}"), ("other", '{"layout": 2}')):
+        (Store.open(tmp_path / name, create=True).path / "store.json").write_text(marker)
+    (tmp_path / "letters").mkdir()
+    (tmp_path / "letters" / "to_aunt").touch()
+    mends = {}
+    for name in ("lost", "damaged", "other", "letters"):
+        with pytest.raises(StoreError) as refused:
+            Store.open(tmp_path / name, create=True)
+        (mends[name],) = {mend for pattern, mend in patterns.items() if re.search(pattern, str(refused.value))}
+    assert mends["lost"] == mends["damaged"]
+    assert "`STORE/store.json`" in mends["lost"]
+    assert mends["other"].startswith("use that version")
+    assert mends["letters"].startswith("name the store")
 
 
 def test_the_marker_shown_is_that_of_a_store(folder: Path) -> None:

@@ -229,7 +229,6 @@ def test_verify_gives_the_verdict_of_all_nights_before_the_fault_of_in_force(sto
     assert document["ok"] is False
     assert document["nights"]["00002-2030-03-01"] == []
     assert why in document["in_force_fault"]
-    path.write_bytes(path.read_bytes())
     sound = store.nights()[1]
     assert nights(store, "restore", sound.name, "--reason", "in_force was lost").code == 0
     assert json.loads(nights(store, "verify", "--json").out)["in_force_fault"] is None
@@ -303,7 +302,6 @@ def test_where_in_force_is_missing_the_way_back_is_told(
     (store.path / "in_force").unlink()
     told = f"legworth nights --store {store.path} restore"
     assert f"put the one last in force back with `{told} 00001-2030-02-28 --reason WHY`" in nights(store, *command).err
-    (store.nights()[0].folder / "changes.html").write_text("")
     (store.nights()[0].folder / "part=2030-03-01" / "legs.parquet").unlink()
     refused = nights(store, *command)
     assert refused.code == 2

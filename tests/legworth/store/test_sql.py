@@ -159,7 +159,7 @@ def test_damaged_nights_are_passed_over(store: Store) -> None:
         "night": [first.name],
         "in_force": [False],
     }
-    (line,) = damage_met(store, "SELECT 1")
+    (line,) = damage_met(store.nights(), "SELECT 1")
     assert line.startswith(f"night {second.name} is damaged and left out: manifest.json ")
     with pytest.raises(NightDamagedError, match=f"{second.name}, which is in force, is damaged: .*nights verify"):
         query(store, "SELECT * FROM tonight_bid_prices")
@@ -179,8 +179,10 @@ def test_damage_in_the_way_of_an_answer_is_named_before_what_duckdb_says(store: 
         query(store, "SELECT sum(bid_price) FROM bid_prices")
     sound = f"SELECT sum(bid_price) AS total FROM bid_prices WHERE night = '{first.name}'"
     assert query(store, sound).to_pydict() == {"total": [6.0]}
-    assert damage_met(store, sound) == (f"night {second.name} is damaged: {path} has 50 bytes, not {len(content):,}",)
-    assert damage_met(store, "SELECT * FROM nights") == (), "only tables that the statement names"
+    assert damage_met(store.nights(), sound) == (
+        f"night {second.name} is damaged: {path} has 50 bytes, not {len(content):,}",
+    )
+    assert damage_met(store.nights(), "SELECT * FROM nights") == (), "only tables that the statement names"
     with pytest.raises(StoreError, match=r"answered: .*nothing") as wrong:
         query(store, "SELECT nothing FROM bid_prices")
     assert "verify" not in str(wrong.value), "a fault of the statement is not laid on the files"
@@ -191,7 +193,7 @@ def test_a_lost_file_is_remarked_on_where_its_rows_are_lacking(store: Store) -> 
     (first.folder / f"part={PARTS[0]}" / "bid_prices.parquet").unlink()
     ask = "SELECT count(*) AS rows FROM bid_prices"
     assert query(store, ask).to_pydict() == {"rows": [9]}
-    (line,) = damage_met(store, ask)
+    (line,) = damage_met(store.nights(), ask)
     assert f"night {first.name} is damaged: part={PARTS[0]}/bid_prices.parquet is missing" in line
 
 
