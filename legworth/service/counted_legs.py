@@ -12,6 +12,7 @@ from legworth.service.bodies import FAULTS_TOLD, fault_line, lines_told
 from legworth.service.messages import NAMED, Counted, LatestCounts
 from legworth.service.orders import SeatCount
 from legworth.service.served_night import ServedNight
+from network.counted import counted
 
 __all__ = ["CountedLegs"]
 
@@ -57,6 +58,11 @@ class CountedLegs:
             for place in self.unknown[:FAULTS_TOLD]
         ]
         return lines_told(lines, len(self.unknown))
+
+    def refusal(self) -> str:
+        """Why the snapshot is refused as a whole."""
+        many = len(self.unknown)
+        return f"{counted(many, 'leg')} of the snapshot {'is' if many == 1 else 'are'} unknown, so that none is counted"
 
     def answer(self, moved: int) -> Counted:
         """Answer to whoever sent the snapshot."""

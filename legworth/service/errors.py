@@ -27,13 +27,15 @@ class MalformedError(LegworthError):
     ----------
     faults
         One line each.
+    what
+        What is wrong on the whole.
     """
 
     http_status = 422
 
-    def __init__(self, faults: Sequence[str]) -> None:
+    def __init__(self, faults: Sequence[str], what: str = "the request does not fit its description") -> None:
         self.faults = list(faults)
-        super().__init__("the request does not fit its description; correct the faults listed")
+        super().__init__(f"{what}; correct the faults listed")
 
 
 class KeyReusedError(LegworthError):

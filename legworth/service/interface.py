@@ -224,7 +224,7 @@ async def overwrite(request: Request, who: Annotated[str, counts], state: State)
     taken = tuple(SeatCount(count.leg, count.capacity, count.sold) for count in asked.counts)
     found = CountedLegs.of(taken, state.night() if asked.known_legs_only else state.served)
     if asked.known_legs_only and found.unknown:
-        raise MalformedError(found.faults())
+        raise MalformedError(found.faults(), found.refusal())
     moved = await state.overwrite(Overwriting(taken, who, asked.why))
     state.latest_counts = found
     request.app.state.metrics.note_counts(found)

@@ -146,7 +146,9 @@ class Answer(BaseModel):
     """Accepted or refused, and why."""
 
     accepted: bool
-    reason: Annotated[str, Field(description="Why, in one word.")]
+    reason: Annotated[
+        str, Field(description="Why, in one word; unknown_product if the itinerary is not sold in the fare class.")
+    ]
     itinerary: str | None
     legs: list[str]
     fare_class: str | None

@@ -57,6 +57,9 @@ def test_a_snapshot_of_known_legs_only_is_taken_whole_or_not_at_all(store: Path)
     async def check() -> None:
         async with running(store) as service:
             found = problem(await put(service, [("IN0", 20, 4), ("FX", 20, 3)], known_legs_only=True), 422)
+            assert found["detail"] == (
+                "1 leg of the snapshot is unknown, so that none is counted; correct the faults listed"
+            )
             assert found["faults"] == [
                 f"body.counts.1.leg: 'FX' is no leg of night {NIGHT}; correct its name, leave it out, or leave out "
                 "known_legs_only"

@@ -100,6 +100,24 @@ def test_many_are_answered_as_one_is(store: Path) -> None:
     asyncio.run(check())
 
 
+def test_a_class_not_sold_is_an_answer_and_an_itinerary_not_sold_is_an_error(store: Path) -> None:
+    async def check() -> None:
+        async with running(store) as service:
+            answer = await service.ask(itinerary="IN0", fare_class="Z", fare=9_000.0)
+            assert answer.status_code == 200
+            assert (answer.json()["accepted"], answer.json()["reason"]) == (False, "unknown_product")
+            sale = (await service.sell("k", itinerary="IN0", fare_class="Z", at_any_price=True)).json()
+            assert (sale["accepted"], sale["reason"]) == (False, "unknown_product")
+            assert (await service.sell("k", itinerary="IN0", fare_class="Z", at_any_price=True)).json()["repeated"]
+            for question in ({"itinerary": "none"}, {"legs": ["IN0", "none"]}):
+                problem(await service.ask(**question, fare=9_000.0), 404)
+            many = {"itinerary": ["none", "IN0", "IN0"], "fare_class": ["Y", "Z", "Y"], "fare": [None, None, 9_000.0]}
+            answers = (await service.client.post("/v1/decisions/batch", json=many)).json()
+            assert answers["reason"] == ["unknown_itinerary", "unknown_product", "fare_reaches_price"]
+
+    asyncio.run(check())
+
+
 def test_a_batch_above_its_limit_is_refused(store: Path) -> None:
     async def check() -> None:
         async with running(store, batch_limit=3) as service:
