@@ -225,7 +225,7 @@ def test_a_cluster_that_goes_away_ends_the_night_soon_and_says_so(gone: str, fol
             refresh(folder, store, RefreshOptions(PRICING), workers=client, task=Slow(600.0, marks))
         doing.join(1)
         assert not doing.is_alive(), "the night ended before the cluster went away"
-        assert time.monotonic() - begin < 60
+        assert time.monotonic() - begin < 180, "parts may take an hour, and the night waited for them"
         process.kill()
     assert "\n" not in str(error.value)
     assert error.value.exit_code == 2
