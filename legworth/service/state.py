@@ -133,11 +133,11 @@ class ServiceState:
         """Say what is wrong with the store or the ledger, and what is done meanwhile; the log says why."""
         if what == LEDGER:
             return "the ledger cannot be read; seats left may be old, and orders are turned away"
-        fault, more = ("cannot be taken over", "the log says why")
+        fault, more = "cannot be taken over", "the log says why"
         if self.damaged:
-            fault, more = ("is damaged, or what names it is", MEND)
+            fault, more = "or the file that names it, is damaged", MEND
         served = "no other one is served" if self.served is None else f"{self.served.name} is served as before"
-        return f"the night in force {fault}; {served}; {more}"
+        return f"the night in force{',' if self.damaged else ''} {fault}; {served}; {more}"
 
     def look(self) -> bool:
         """Take over the night in force if it is another one, after reading every file of it; True if it is.

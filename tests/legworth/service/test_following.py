@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import asyncio
+import shutil
 from collections.abc import Callable
 from datetime import timedelta
 from pathlib import Path
@@ -57,7 +58,7 @@ def test_a_new_night_answers_without_restart_and_a_damaged_one_never(store: Path
                 said = await health(service)
                 assert (said["status"], said["night"]) == ("in trouble", SECOND)
                 assert said["troubles"] == [
-                    f"the night in force is damaged, or what names it is; {SECOND} is served as before; {MEND}"
+                    f"the night in force, or the file that names it, is damaged; {SECOND} is served as before; {MEND}"
                 ]
                 await asyncio.sleep(0.3)
                 nights.restore(SECOND, "tester", "the third is damaged")
@@ -79,10 +80,13 @@ def test_a_night_damaged_before_the_start_is_not_called_missing(store: Path) -> 
         async with running(store) as service:
             said = await health(service)
             assert (said["status"], said["night"], said["legs"]) == ("no sound night", None, 0)
-            why = f"the night in force is damaged, or what names it is; no other one is served; {MEND}"
+            why = f"the night in force, or the file that names it, is damaged; no other one is served; {MEND}"
             assert said["troubles"] == [why]
             assert problem(await service.ask(itinerary="IN0", fare=900.0), 503)["detail"] == why
-            assert "The service is in trouble: the night in force is damaged" in (await service.get("/")).text
+            assert (
+                "The service is in trouble: the night in force, or the file that names it, is damaged"
+                in (await service.get("/")).text
+            )
             prices.write_bytes(sound)
             await until(lambda: service.state.served is not None)
             assert (await health(service))["status"] == "ok"
@@ -133,19 +137,19 @@ def mark(store: Path, named: bytes) -> None:
 
 
 def _publish_and_damage(network: Path, store: Path) -> None:
-    """Publish a night whose prices are changed before any service can look at it."""
-    nights = Store.open(store)
-    sound = (store / "in_force").read_bytes()
-    publish(network, store, **{**HUB, "mean": 12.0})
-    damaged = (store / "in_force").read_bytes()
-    mark(store, sound)
-    night = nights.night(THIRD)
+    """Publish a night whose prices have been changed before any service can look at it."""
+    twin = network.parent / "twin"
+    shutil.copytree(store, twin, ignore=shutil.ignore_patterns("seats.sqlite*"))
+    publish(network, twin, **{**HUB, "mean": 12.0})
+    night = Store.open(twin).night(THIRD)
     path = night.folder / "part=2027-03-11" / "bid_prices.parquet"
     data = bytearray(path.read_bytes())
     data[len(data) // 2] ^= 1
     path.unlink()
     path.write_bytes(bytes(data))
-    mark(store, damaged)
+    shutil.copytree(night.folder, store / "nights" / night.folder.name)
+    shutil.copy(twin / "history.jsonl", store)
+    mark(store, (twin / "in_force").read_bytes())
 
 
 def test_the_first_night_is_taken_over_when_it_comes(tmp_path: Path) -> None:
