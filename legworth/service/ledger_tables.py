@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import sqlite3
+import time
 from typing import Any
 
 from sqlalchemy import (
@@ -104,9 +106,23 @@ def durable_engine(url: str) -> Engine:
 
 def _prepare_sqlite(connection: Any, _record: Any) -> None:
     connection.isolation_level = None
-    wait = f"busy_timeout={PATIENCE * 1000:.0f}"
-    for pragma in (wait, "journal_mode=WAL", "synchronous=FULL", "foreign_keys=ON"):
+    connection.execute(f"PRAGMA busy_timeout={PATIENCE * 1000:.0f}")
+    _write_ahead(connection)
+    for pragma in ("synchronous=FULL", "foreign_keys=ON"):
         connection.execute(f"PRAGMA {pragma}")
+
+
+def _write_ahead(connection: Any) -> None:
+    """Keep a write-ahead log; SQLite does not wait by itself where several services begin one at the same time."""
+    most = time.monotonic() + PATIENCE
+    while True:
+        try:
+            connection.execute("PRAGMA journal_mode=WAL")
+            return
+        except sqlite3.OperationalError as error:
+            if error.sqlite_errorcode & 0xFF != sqlite3.SQLITE_BUSY or time.monotonic() > most:
+                raise
+            time.sleep(0.01)
 
 
 def _begin_sqlite(connection: Connection) -> None:
