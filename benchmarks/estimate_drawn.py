@@ -13,7 +13,7 @@ import time
 import click
 import numpy as np
 
-from legworth.estimation.closing import CLOSINGS
+from legworth.estimation.closing import CLOSINGS, Closing
 from legworth.estimation.dispersion import coverage
 from legworth.estimation.estimate import DemandFit, DemandOptions, Pools, fit_demand, forecast
 from legworth.estimation.history import BookingHistory
@@ -23,8 +23,8 @@ from tests.legworth.estimation.drawn import DAYS, SHARES, Drawn, draw_history
 AFTER = np.datetime64("2030-01-01")
 
 
-def still(closing: str = "shared") -> DemandOptions:
-    return DemandOptions(closing=closing, half_life=None, weekday=False, season=False)  # type: ignore[arg-type]
+def still(closing: Closing = "shared") -> DemandOptions:
+    return DemandOptions(closing=closing, half_life=None, weekday=False, season=False)
 
 
 def own_limits(seed: int, mean: float, a: float) -> tuple[BookingHistory, Pools, float]:

@@ -12,6 +12,7 @@ import resource
 import time
 from collections.abc import Callable
 from datetime import UTC, datetime, timedelta
+from functools import partial
 from pathlib import Path
 
 import numpy as np
@@ -20,7 +21,7 @@ import pyarrow.parquet as pq
 
 from legworth.store import Manifest, Night, PartEntry, Store
 from legworth.store.comparison import compare_nights
-from legworth.store.hand_over import HandOverOptions, hand_over
+from legworth.store.hand_over import FORMATS, HandOverFormat, HandOverOptions, hand_over
 from legworth.store.hand_over_reading import read_hand_over
 from legworth.store.sql import query
 from network.store_settings import StoreSettings
@@ -115,6 +116,10 @@ def publish(store: Store, number: int, last: Night | None, arguments: argparse.N
         return night
 
 
+def told_hand_over(night: Night, to: Path, form: HandOverFormat) -> None:
+    print(hand_over(night, to, FIRST, HandOverOptions((form,))))
+
+
 def timed(label: str, work: Callable[[], object]) -> None:
     before, spent = time.perf_counter(), time.process_time()
     work()
@@ -139,7 +144,7 @@ def main() -> None:
     store = Store.open(arguments.store, create=True)
     last: Night | None = None
     for number in range(arguments.nights):
-        timed(f"night {number + 1}, with its making", lambda: publish(store, number, last, arguments))  # noqa: B023
+        timed(f"night {number + 1}, with its making", partial(publish, store, number, last, arguments))
         last = store.in_force()
     assert last is not None
     timed("in_force", store.in_force)
@@ -150,13 +155,12 @@ def main() -> None:
     day = last.parts()[arguments.parts // 2]
     names = {"leg": f"LEG7-{day}", "part": day, "night": last.name}
     for label, statement in QUERIES.items():
-        timed(f"query: {label}", lambda: query(store, statement.format(**names)))  # noqa: B023
+        timed(f"query: {label}", partial(query, store, statement.format(**names)))
     if arguments.nights > 1:
         timed("compare", lambda: compare_nights(store.nights()[0], last))
     if arguments.hand_over is not None:
-        for form in ("parquet", "csv"):
-            options = HandOverOptions((form,))  # type: ignore[arg-type]
-            timed(f"hand over, {form}", lambda: print(hand_over(last, arguments.hand_over, FIRST, options)))  # noqa: B023
+        for form in FORMATS:
+            timed(f"hand over, {form}", partial(told_hand_over, last, arguments.hand_over, form))
             timed("  verify it", lambda: read_hand_over(arguments.hand_over))
     if arguments.thin:
         timed("thin to 5", lambda: store.thin(StoreSettings(keep_newest=5, keep_weeks=0, keep_months=0)))

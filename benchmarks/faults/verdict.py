@@ -5,6 +5,7 @@ from __future__ import annotations
 import json
 from dataclasses import dataclass, field
 from pathlib import Path
+from typing import Any
 
 from benchmarks.faults.ground import AT_REST, Ground, Step, essence, sha256
 from legworth.store import Store
@@ -62,10 +63,9 @@ class Paths:
         return [line for line in found if name not in self._spared or not line.startswith("changes.json")]
 
 
-def _mended(folder: Path, manifest: dict[str, object]) -> frozenset[str]:
+def _mended(folder: Path, manifest: dict[str, Any]) -> frozenset[str]:
     """Parts that the other solver priced this night."""
-    parts: list[dict[str, object]] = manifest["parts"]  # type: ignore[assignment]
-    solved = [str(part["name"]) for part in parts if part["taken_over_from"] is None]
+    solved = [str(part["name"]) for part in manifest["parts"] if part["taken_over_from"] is None]
     return frozenset(
         part
         for part in solved

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from datetime import UTC, datetime
 from pathlib import Path
 
@@ -115,7 +116,7 @@ def _conditions(table: TableData, network: Network, departures: Departures, faul
             np.flatnonzero(unknown),
             table.line_of,
             name,
-            lambda row, values=values, what=what: f"{values.iloc[row]!r} is not {what}",  # type: ignore[misc]
+            _none_known(values, what),
         )
     for name in ("first_departure", "last_departure"):
         found[name] = _dates(table, name, faults)
@@ -131,6 +132,10 @@ def _conditions(table: TableData, network: Network, departures: Departures, faul
         ),
     )
     return found
+
+
+def _none_known(values: pd.Series, what: str) -> Callable[[int], str]:
+    return lambda row: f"{values.iloc[row]!r} is not {what}"
 
 
 def _dates(table: TableData, name: str, faults: Faults) -> np.ndarray:

@@ -21,7 +21,7 @@ from legworth.estimation.detruncation import detruncate
 from legworth.estimation.increments import Increments
 from network.arrays import BoolArray, FloatArray, IntArray
 
-__all__ = ["METHODS", "ClassFits", "ClassSamples", "mean_by_class", "unconstrain"]
+__all__ = ["METHODS", "ClassFits", "ClassSamples", "unconstrain"]
 
 
 class Method(Protocol):
@@ -171,30 +171,6 @@ class ClassSamples:
             mean[k] = float(self.sample[k].size @ found.mean) / self.departures[k]
             rounds, unsettled = max(rounds, found.iterations), unsettled + int(np.sum(~found.converged))
         return ClassFits(mean, rounds, unsettled)
-
-
-def mean_by_class(
-    increments: Increments, fare_class: IntArray, n_classes: int, method: str, options: EmOptions | None = None
-) -> FloatArray:
-    """Mean demand of a departure of a product by class, interval by interval as if each were a sample of its own.
-
-    Parameters
-    ----------
-    increments
-        Intervals of S series.
-    fare_class, n_classes
-        (S,) class of every series, and their number.
-    method
-        One of `METHODS`.
-    options
-        Stopping rule; the defaults if left out.
-
-    Returns
-    -------
-    FloatArray
-        (K,) means; NaN of a class that history does not hold or that was never open.
-    """
-    return ClassSamples.of(increments, fare_class, n_classes).fit(method, options).mean
 
 
 def unconstrain(

@@ -10,7 +10,7 @@ from hypothesis import strategies as st
 from legworth.estimation.censored_sample import CensoredSample, EmOptions
 from legworth.estimation.detruncation import detruncate
 from legworth.estimation.increments import Increments
-from legworth.estimation.unconstraining import METHODS, mean_by_class, unconstrain
+from legworth.estimation.unconstraining import METHODS, ClassSamples, unconstrain
 from tests.legworth.estimation.drawn import draw_history
 
 NAIVE = ("ignore", "discard", "replace")
@@ -118,13 +118,14 @@ def test_samples_and_methods_out_of_range_are_refused() -> None:
 def test_methods_of_a_whole_history_rank_as_they_should() -> None:
     drawn = draw_history(1, n_itineraries=20, n_dates=120, seats=0.95)
     increments = Increments.of(drawn.history)
-    means = {method: mean_by_class(increments, drawn.history.series_class, 3, method) for method in METHODS}
+    samples = ClassSamples.of(increments, drawn.history.series_class, 3)
+    means = {method: samples.fit(method).mean for method in METHODS}
     asked = drawn.demand.mean(axis=(0, 2)).sum(axis=1)
     assert np.all(means["ignore"] < asked)
     assert np.all(means["negative_binomial"] >= means["ignore"])
     free = Increments.of(draw_history(1, n_itineraries=20, n_dates=120, seats=None).history)
     for method in METHODS:
-        assert mean_by_class(free, drawn.history.series_class, 3, method) == pytest.approx(asked, rel=1e-6)
+        assert ClassSamples.of(free, drawn.history.series_class, 3).fit(method).mean == pytest.approx(asked, rel=1e-6)
 
 
 @pytest.mark.parametrize("method", NAIVE)
